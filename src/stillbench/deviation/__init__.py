@@ -1,0 +1,1 @@
+"""The Allan deviation: estimator, the plain twin that judges it, intervals given a model."""

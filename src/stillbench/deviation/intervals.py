@@ -1,0 +1,72 @@
+"""Intervals of the curve, given a fitted model."""
+
+from collections.abc import Sequence
+from dataclasses import replace
+
+import numpy as np
+
+from stillbench.foundation.arrays import FloatArray
+from stillbench.terms.covariance import curve_edf, model_variance
+from stillbench.vocabulary.deviation_curve import DeviationCurve
+from stillbench.vocabulary.noise_model import NoiseModel
+from stillbench.vocabulary.quantity import TIME_POWERS, role_of
+
+
+def chi_square_limits(deviation: FloatArray, edf: FloatArray, coverage: float) -> tuple[FloatArray, FloatArray]:
+    """Return the ends of the chi-square interval of a deviation with ``edf`` degrees of freedom.
+
+    References
+    ----------
+    NIST SP 1065, eq. 45 (as quoted in public transcriptions): sigma_min^2 = s^2 edf/chi2(p_high).
+    """
+    from scipy.special import gammaincinv  # noqa: PLC0415  heavy imports stay inside functions
+
+    tail = (1.0 - coverage) / 2.0
+    low, high = (2.0 * gammaincinv(edf / 2.0, p) for p in (1.0 - tail, tail))
+    return deviation * np.sqrt(edf / low), deviation * np.sqrt(edf / high)
+
+
+def unit_sample_theta(model: NoiseModel, sample_interval: float) -> tuple[dict[str, float], float]:
+    """Return squared unit-sample coefficients by role, and the ramp per sample, of a model in SI."""
+    theta: dict[str, float] = {}
+    slope = 0.0
+    for name, term in model.terms.items():
+        role = role_of(name)
+        if role is None or term.coefficient is None:
+            continue
+        coefficient = term.coefficient / sample_interval ** TIME_POWERS[role]
+        if role == "ramp":
+            slope = coefficient if term.state == "resolved" else 0.0
+        else:
+            theta[role] = coefficient**2
+    return theta, slope
+
+
+def bound_deviation(
+    curve: DeviationCurve,
+    model: NoiseModel,
+    *,
+    sample_interval: float,
+    run_lengths: Sequence[int],
+    coverage: float = 0.95,
+) -> DeviationCurve:
+    """Add interval, degrees of freedom and model to a curve.
+
+    Parameters
+    ----------
+    curve : DeviationCurve
+    model : NoiseModel
+        Fitted to the same record.
+    sample_interval : float
+        s.
+    run_lengths : sequence of int
+        Samples in each run.
+    coverage : float
+        Two-sided.
+    """
+    theta, slope = unit_sample_theta(model, sample_interval)
+    factors = np.rint(curve.tau / sample_interval).astype(np.int64)
+    edf = curve_edf(theta, slope, factors, run_lengths)
+    lower, upper = chi_square_limits(curve.deviation, edf, coverage)
+    course = np.sqrt(model_variance(theta, slope, factors))
+    return replace(curve, lower=lower, upper=upper, edf=edf, model=course, coverage=coverage)

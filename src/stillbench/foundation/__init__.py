@@ -1,0 +1,1 @@
+"""Ground floor: errors, units, checks, progress, whole-file writing. Knows no sensor and no noise."""

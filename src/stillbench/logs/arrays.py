@@ -1,0 +1,122 @@
+"""NPY and NPZ files as a table (no pickled objects)."""
+
+import io
+import zipfile
+from collections.abc import Sequence
+
+import numpy as np
+
+from stillbench.foundation.arrays import FloatArray
+from stillbench.foundation.errors import LogError
+from stillbench.logs.contents import LARGEST_EXPANDED, LARGEST_RATIO, RATIO_COUNTS_FROM, Contents
+from stillbench.logs.table import Table
+
+NPY_MAGIC = b"\x93NUMPY"
+MOST_CHANNELS = 64
+"""A 2-D array with at most this many rows, and more columns than rows, holds one channel a row."""
+
+
+class ArrayTable(Table):
+    """Named columns already in memory or mapped."""
+
+    def __init__(self, columns: dict[str, np.ndarray], format_: str, *, has_heads: bool) -> None:  # type: ignore[type-arg]
+        super().__init__(list(columns), format_, has_heads=has_heads)
+        self._columns = list(columns.values())
+
+    def numbers(self, indices: Sequence[int]) -> list[FloatArray]:
+        arrays = []
+        for index in indices:
+            column = self._columns[index]
+            if column.dtype.kind not in "iufb":
+                raise LogError(
+                    f"column {self.heads[index]!r} holds {column.dtype}, not real numbers", "integers or floats"
+                )
+            arrays.append(np.ascontiguousarray(column, dtype=np.float64))
+        return arrays
+
+    def texts(self, index: int) -> Sequence[str]:
+        return [str(value) for value in self._columns[index]]
+
+    def first_text(self, index: int) -> str:
+        return str(self._columns[index][0])
+
+
+def columns_of(array: np.ndarray, name: str, prefix: str = "") -> dict[str, np.ndarray]:  # type: ignore[type-arg]
+    """Split an array into columns: structured fields, one dimension, or rows of samples.
+
+    Raises
+    ------
+    LogError
+        For more than two dimensions, none, or no rows.
+    """
+    if array.dtype.names:
+        return {f"{prefix}{field}": np.atleast_1d(array[field]) for field in array.dtype.names}
+    if array.ndim == 1:
+        return {prefix.rstrip(".") or "1": array}
+    if array.ndim == 2:  # noqa: PLR2004
+        if array.shape[0] < array.shape[1] and array.shape[0] <= MOST_CHANNELS:
+            array = array.T
+        return {f"{prefix}{i + 1}": array[:, i] for i in range(array.shape[1])}
+    raise LogError(f"{name!r} holds an array of shape {array.shape}", "one or two dimensions")
+
+
+def _load(contents: Contents) -> dict[str, np.ndarray]:  # type: ignore[type-arg]
+    try:
+        if bytes(contents.data[:6]) == NPY_MAGIC:
+            _check_declared(contents.data[:], contents.name)
+            return columns_of(np.load(io.BytesIO(contents.data), allow_pickle=False), contents.name)
+        with zipfile.ZipFile(io.BytesIO(contents.data)) as archive:
+            for member in archive.infolist():
+                ratio = member.file_size / max(1, member.compress_size)
+                if member.file_size > LARGEST_EXPANDED or (
+                    ratio > LARGEST_RATIO and member.file_size > RATIO_COUNTS_FROM
+                ):
+                    raise LogError(
+                        f"{member.filename!r} in {contents.name!r} expands {ratio:.0f} times",
+                        f"at most {LARGEST_RATIO} times",
+                    )
+        columns: dict[str, np.ndarray] = {}  # type: ignore[type-arg]
+        with np.load(io.BytesIO(contents.data), allow_pickle=False) as bundle:
+            for key in bundle.files:
+                columns |= columns_of(bundle[key], contents.name, prefix=f"{key}.")
+    except (ValueError, OSError, EOFError, zipfile.BadZipFile, KeyError, SyntaxError, MemoryError) as error:
+        reason = "it holds pickled objects" if "pickle" in str(error) else str(error).split("\n", maxsplit=1)[0]
+        raise LogError(
+            f"{contents.name!r} cannot be read: {reason}", "plain numeric arrays", "save it again with numpy.save"
+        ) from error
+    return columns
+
+
+def _check_declared(data: bytes, name: str) -> None:
+    """Refuse an NPY file whose head declares more samples than the file holds."""
+    stream = io.BytesIO(data[: 1 << 16])
+    version = np.lib.format.read_magic(stream)
+    reader = np.lib.format.read_array_header_1_0 if version == (1, 0) else np.lib.format.read_array_header_2_0
+    shape, _, dtype = reader(stream)
+    declared = int(np.prod(shape, dtype=object)) * dtype.itemsize
+    if declared + stream.tell() > len(data) and not dtype.hasobject:
+        raise LogError(
+            f"{name!r} declares {declared} bytes of samples and holds {len(data) - stream.tell()}",
+            "a whole file",
+            "copy it again",
+        )
+
+
+def read_arrays(contents: Contents) -> ArrayTable:
+    """Read an NPY or NPZ file.
+
+    Raises
+    ------
+    LogError
+        For pickled objects, damage, unequal lengths, or nothing inside.
+    """
+    columns = _load(contents)
+    lengths = {column.shape[0] for column in columns.values()}
+    if not columns or lengths == {0}:
+        raise LogError(f"{contents.name!r} holds no samples", "an array of numbers")
+    if len(lengths) > 1:
+        shown = ", ".join(f"{name} {column.shape[0]}" for name, column in columns.items())
+        raise LogError(f"the arrays of {contents.name!r} differ in length ({shown})", "equal lengths")
+    kind = "NPY" if bytes(contents.data[:6]) == NPY_MAGIC else "NPZ"
+    named = kind == "NPZ" or not all(name.isdecimal() for name in columns)
+    return ArrayTable(columns, f"{kind}, {len(columns)} columns", has_heads=named)

@@ -1,0 +1,313 @@
+"""Clock audit: from stamps to an even grid, with everything that is odd about them found and said.
+
+Where most steps are near whole multiples of one interval, each row gets its place on the grid and a missing row is seen.
+Where they are not (stamps in bursts, or coarser than the interval), the rows are taken as even and only long gaps show.
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from stillbench.foundation.arrays import BoolArray, FloatArray, IntArray
+from stillbench.foundation.errors import ClockError
+from stillbench.vocabulary.finding import Finding
+from stillbench.vocabulary.sensor_log import SensorLog, Stamps
+
+NEAR = 0.25
+"""A step counts as even when it lies within this share of an interval of a whole multiple."""
+EVEN_SHARE = 0.98
+COARSE_SHARE = 0.05
+"""Above this share of repeated stamps they are coarser than the sampling."""
+BACKWARD_SHARE = 0.2
+MISMATCH = 0.005
+BEND = 0.01
+SHIFT_UNIT = 1800.0
+LARGEST_SHIFT = 14 * 3600.0
+LISTED_STEPS = 20
+GAP_INTERVALS = 20
+FEWEST_STAMPS = 3
+
+
+@dataclass(frozen=True)
+class Grid:
+    """Where each row stands.
+
+    Attributes
+    ----------
+    sample_interval : float
+        s.
+    kept : (rows,) bool array
+        False for rows with a repeated stamp.
+    index : (rows,) int array
+        Place on the even grid within its segment's time; only differences inside a segment count.
+    segment : (rows,) int array
+        Rises by one where the time between two rows is not known.
+    seconds : (rows,) float array
+        Time of each row from the first, shifts of the clock taken out.
+    source : str
+    jitter : float
+        s.
+    findings : tuple of Finding
+    """
+
+    sample_interval: float
+    kept: BoolArray
+    index: IntArray
+    segment: IntArray
+    seconds: FloatArray
+    source: str
+    jitter: float
+    findings: tuple[Finding, ...]
+
+
+def audit_clock(log: SensorLog) -> Grid:
+    """Find the even grid of a log.
+
+    Raises
+    ------
+    ClockError
+        When the stamps run backwards or do not move.
+    """
+    rows = log.source.rows
+    if log.stamps is None:
+        if log.rate is None:
+            raise ClockError("the log has no stamps and no rate", "one of them", "give --rate HZ")
+        interval = 1.0 / log.rate
+        index = np.arange(rows)
+        zeros = np.zeros(rows, dtype=np.int64)
+        return Grid(
+            interval, np.ones(rows, dtype=bool), index, zeros, index * interval, "declared rate", 0.0, ()
+        )
+    return _audit_stamps(log.stamps, log.rate)
+
+
+def _audit_stamps(stamps: Stamps, rate: float | None) -> Grid:
+    findings: list[Finding] = []
+    steps = np.diff(stamps.seconds)
+    if steps.size < FEWEST_STAMPS or not (steps != 0).any():
+        raise ClockError(f"the stamps in {stamps.column!r} do not move", "stamps that rise", "use --time none --rate HZ")
+    if np.count_nonzero(steps < 0) > BACKWARD_SHARE * steps.size:
+        raise ClockError(
+            f"the stamps in {stamps.column!r} run backwards in {np.count_nonzero(steps < 0)} of {steps.size} steps",
+            "stamps that rise",
+            "sort the log, name the right column with --time, or use --time none --rate HZ",
+        )
+    seconds = stamps.seconds.copy()
+    if stamps.kind == "local":
+        findings += _take_out_shifts(seconds, stamps.origin or 0.0)
+    segment = np.zeros(seconds.size, dtype=np.int64)
+    findings += _split_backward(seconds, segment)
+    steps = np.diff(seconds)
+    kept = np.ones(seconds.size, dtype=bool)
+    repeated = np.append(False, steps == 0)
+    coarse = np.count_nonzero(repeated) > COARSE_SHARE * steps.size
+    if repeated.any() and not coarse:
+        kept = ~repeated
+        where = seconds[repeated]
+        findings.append(
+            Finding(
+                "duplicate_stamps",
+                float(where[0]),
+                float(where[-1]),
+                float(where.size),
+                "rows",
+                excluded=True,
+                because=f"{where.size} rows carry the stamp of the row before",
+                disposition="the later row of each pair is left out",
+            )
+        )
+    interval, index, even = _place(seconds, segment, kept)
+    jitter = _jitter(seconds, index, segment, kept, interval)
+    if not even:
+        findings.append(_uneven(stamps, interval, jitter, coarse=coarse, steps=steps))
+    findings += _rate_findings(seconds, index, segment, kept, interval, rate)
+    return Grid(interval, kept, index, segment, seconds, "stamps", jitter, tuple(findings))
+
+
+def _take_out_shifts(seconds: FloatArray, origin: float) -> list[Finding]:
+    """Undo jumps of a local clock by whole half hours (daylight saving, a changed zone), in place."""
+    steps = np.diff(seconds)
+    usual = float(np.median(steps[steps > 0]))
+    findings = []
+    for i in np.flatnonzero((steps < 0) | (np.abs(steps - 3600.0) <= usual + 2.0)):
+        step = float(steps[i])
+        shift = np.rint((step - usual) / SHIFT_UNIT) * SHIFT_UNIT
+        left = step - shift
+        if shift == 0 or abs(shift) > LARGEST_SHIFT or not 0 < left <= 3.0 * usual + 1.0:
+            continue
+        if shift > 0:
+            # An hour that is missing is a change to summer time only when it begins on a full hour.
+            past = (origin + seconds[i] + usual + 1.0) % 3600.0
+            if usual > 60.0 or past > 2.0 * usual + 2.0:  # noqa: PLR2004  a minute: slower logs cannot show the hour
+                continue
+        seconds[i + 1 :] -= shift
+        findings.append(
+            Finding(
+                "clock_shift",
+                float(seconds[i]),
+                float(seconds[i + 1]),
+                float(shift),
+                "s",
+                excluded=False,
+                because=f"the local clock jumps by {shift / 3600.0:+g} h between two rows, with no rows missing or doubled",
+                disposition="taken as a change of the clock, not as a gap",
+            )
+        )
+    return findings
+
+
+def _split_backward(seconds: FloatArray, segment: IntArray) -> list[Finding]:
+    """Start a new segment where the stamps fall back by an interval or more, in place."""
+    steps = np.diff(seconds)
+    usual = float(np.median(steps[steps > 0]))
+    findings = []
+    back = np.flatnonzero(steps <= -usual)
+    for i in back:
+        fall = float(steps[i])
+        seconds[i + 1 :] += usual - fall
+        segment[i + 1 :] += 1
+        if len(findings) < LISTED_STEPS:
+            findings.append(
+                Finding(
+                    "backward_stamps",
+                    float(seconds[i]),
+                    float(seconds[i + 1]),
+                    fall,
+                    "s",
+                    excluded=False,
+                    because=f"the stamps fall back by {-fall:.6g} s (a restart of the logger or of its clock)",
+                    disposition="the record is split there; how much time passed is not known",
+                )
+            )
+    if back.size > LISTED_STEPS:
+        findings.append(
+            Finding(
+                "backward_stamps", None, None, float(back.size), "steps", excluded=False,
+                because=f"{back.size} backward steps in all; the first {LISTED_STEPS} are listed",
+                disposition="the record is split at each",
+            )
+        )
+    return findings
+
+
+def _slope(seconds: FloatArray, index: IntArray, group: IntArray) -> float:
+    """Robust common slope of seconds on index within groups: least squares, stamps beyond 4 deviations left out, twice."""
+    use = np.ones(seconds.size, dtype=bool)
+    slope = 0.0
+    for _ in range(3):
+        x, y, g = index[use].astype(float), seconds[use], group[use]
+        starts = np.flatnonzero(np.append(True, np.diff(g) != 0))
+        counts = np.diff(np.append(starts, g.size))
+        x_mean = np.repeat(np.add.reduceat(x, starts) / counts, counts)
+        y_mean = np.repeat(np.add.reduceat(y, starts) / counts, counts)
+        spread = float(np.sum((x - x_mean) ** 2))
+        if spread == 0:
+            break
+        slope = float(np.sum((x - x_mean) * (y - y_mean)) / spread)
+        residual = np.full(seconds.size, np.inf)
+        residual[use] = y - y_mean - slope * (x - x_mean)
+        scale = 1.4826 * float(np.median(np.abs(residual[use])))
+        if scale == 0:
+            break
+        use &= np.abs(residual) <= 4.0 * scale
+    return slope
+
+
+def _place(seconds: FloatArray, segment: IntArray, kept: BoolArray) -> tuple[float, IntArray, bool]:
+    """Return the interval, the place of every row, and whether the stamps are even."""
+    t, s = seconds[kept], segment[kept]
+    steps = np.diff(t)
+    inside = np.diff(s) == 0
+    usual = float(np.median(steps[inside & (steps > 0)]))
+    for _ in range(2):
+        multiple = np.maximum(np.rint(steps / usual), 1.0)
+        near = (np.abs(steps / usual - multiple) < NEAR) & inside
+        short = multiple <= GAP_INTERVALS + 1
+        even = np.count_nonzero(near) >= EVEN_SHARE * np.count_nonzero(inside)
+        if not even:
+            return _place_by_row(seconds, segment, kept)
+        multiple = np.where(inside, multiple, 1.0)
+        place = np.append(0, np.cumsum(multiple)).astype(np.int64)
+        # Groups end at long gaps, over which an interval that is a little wrong counts too many or too few.
+        group = np.append(0, np.cumsum(~(inside & short)))
+        usual = _slope(t, place, group)
+    index = np.zeros(seconds.size, dtype=np.int64)
+    index[kept] = place
+    return usual, index, True
+
+
+def _place_by_row(seconds: FloatArray, segment: IntArray, kept: BoolArray) -> tuple[float, IntArray, bool]:
+    """Take rows as even; leave room on the grid only where a long gap shifts all that follows."""
+    t, s = seconds[kept], segment[kept]
+    steps = np.diff(t)
+    rows = np.arange(t.size)
+    group = s.copy()
+    interval = _slope(t, rows, group)
+    suspects = np.flatnonzero((steps > GAP_INTERVALS * interval) & (steps > 3.0 * np.quantile(steps, 0.999)))
+    jumps = np.zeros(t.size, dtype=np.int64)
+    for i in suspects:
+        window = 200
+        before = np.median((t - interval * rows)[max(0, i - window + 1) : i + 1])
+        after = np.median((t - interval * rows)[i + 1 : i + 1 + window])
+        if after - before > 0.5 * steps[i]:
+            jumps[i + 1] = max(1, round(float(after - before) / interval))
+            group[i + 1 :] += 1
+    interval = _slope(t, rows, group)
+    index = np.zeros(seconds.size, dtype=np.int64)
+    index[kept] = rows + np.cumsum(jumps)
+    return interval, index, False
+
+
+def _jitter(seconds: FloatArray, index: IntArray, segment: IntArray, kept: BoolArray, interval: float) -> float:
+    """Standard deviation of the stamps about the even grid, robust, s."""
+    t, k, s = seconds[kept], index[kept], segment[kept]
+    group = np.append(0, np.cumsum((np.diff(s) != 0) | (np.diff(k) > GAP_INTERVALS)))
+    starts = np.flatnonzero(np.append(True, np.diff(group) != 0))
+    counts = np.diff(np.append(starts, group.size))
+    residual = t - interval * k
+    residual = residual - np.repeat(np.add.reduceat(residual, starts) / counts, counts)
+    return float(np.sqrt(np.mean(residual**2)))
+
+
+def _uneven(stamps: Stamps, interval: float, jitter: float, *, coarse: bool, steps: FloatArray) -> Finding:
+    if coarse:
+        return Finding(
+            "stamp_resolution", None, None, stamps.resolution, "s", excluded=False,
+            because=f"the stamps are written to {stamps.resolution:g} s, coarser than the interval of {interval:.6g} s",
+            disposition="rows are taken as even; single missing rows cannot be seen",
+        )
+    usual = float(np.median(steps[steps > 0]))
+    return Finding(
+        "clock_jitter", None, None, jitter, "s", excluded=False,
+        because=f"the stamps are uneven: the usual step is {usual:.4g} s though rows come every {interval:.6g} s on the"
+        " average (bursts, or stamps of the host)",
+        disposition="the sensor's own clock is taken as even; single missing rows cannot be seen",
+    )
+
+
+def _rate_findings(
+    seconds: FloatArray, index: IntArray, segment: IntArray, kept: BoolArray, interval: float, rate: float | None
+) -> list[Finding]:
+    findings = []
+    if rate is not None and abs(rate * interval - 1.0) > MISMATCH:
+        findings.append(
+            Finding(
+                "rate_mismatch", None, None, 1.0 / interval, "Hz", excluded=False,
+                because=f"the stamps say {1.0 / interval:.6g} Hz, the declared rate is {rate:.6g} Hz",
+                disposition="the stamps are used",
+            )
+        )
+    t, k, s = seconds[kept], index[kept], segment[kept]
+    half = t.size // 2
+    group = np.append(0, np.cumsum((np.diff(s) != 0) | (np.diff(k) > GAP_INTERVALS)))
+    if half > 100:  # noqa: PLR2004  fewer stamps cannot show a change of one percent
+        first, second = _slope(t[:half], k[:half], group[:half]), _slope(t[half:], k[half:], group[half:])
+        if first > 0 and abs(second / first - 1.0) > BEND:
+            findings.append(
+                Finding(
+                    "clock_jitter", None, None, 100.0 * (second / first - 1.0), "%", excluded=False,
+                    because=f"the sampling interval changes from {first:.6g} s to {second:.6g} s between the halves",
+                    disposition="analysed at the mean interval; averaging times are wrong by up to half of that",
+                )
+            )
+    return findings

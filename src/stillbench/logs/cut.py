@@ -1,0 +1,215 @@
+"""cut_record: one channel of a log on its even grid, in SI, between the instants that are wanted."""
+
+from collections.abc import Sequence
+
+import numpy as np
+
+from stillbench.foundation.errors import NothingToMeasureError, RecordTooShortError, UsageError
+from stillbench.logs.clock import Grid, audit_clock
+from stillbench.logs.front_end import convert
+from stillbench.logs.runs import SHORTEST_RUN, build_runs
+from stillbench.logs.spans import Instants, within
+from stillbench.vocabulary.finding import Finding
+from stillbench.vocabulary.log_sheet import LogSheet
+from stillbench.vocabulary.record import Clock, Record
+from stillbench.vocabulary.sensor_log import SensorLog
+
+LISTED_GAPS = 20
+
+
+def cut_record(
+    log: SensorLog,
+    label: str,
+    *,
+    sheet: LogSheet | None = None,
+    start: str | None = None,
+    stop: str | None = None,
+    exclude: Sequence[str] = (),
+    grid: Grid | None = None,
+) -> Record:
+    """Cut one channel out of a log.
+
+    Parameters
+    ----------
+    log : SensorLog
+    label : str
+        Of the channel.
+    sheet : LogSheet, optional
+        For the front end.
+    start, stop : str, optional
+        Seconds from the start, clock time, or ``row:N``.
+    exclude : sequence of str
+        Spans ``T1:T2`` that the user leaves out.
+    grid : Grid, optional
+        Of an earlier ``audit_clock``, when several channels are cut from one log.
+
+    Returns
+    -------
+    Record
+        Short holes are NaN.
+
+    Raises
+    ------
+    ClockError, UnitError, UsageError
+    NothingToMeasureError
+        When no finite number is left.
+    RecordTooShortError
+        When fewer than 16 samples are left.
+    """
+    sheet = sheet or LogSheet()
+    channel = next(channel for channel in log.channels if channel.label == label)
+    grid = grid or audit_clock(log)
+    section = sheet.channel.get(label)
+    conversion = convert(channel, section.front_end if section else None, grid.sample_interval)
+    findings = [*conversion.findings, *grid.findings]
+    wanted = grid.kept & _chosen(log, grid, start, stop, exclude, findings)
+    finite = np.isfinite(channel.values)
+    lost = wanted & ~finite
+    if not (wanted & finite).any():
+        raise NothingToMeasureError(
+            f"channel {label!r} holds no finite number" + ("" if not finite.any() else " in the chosen span"),
+            "numbers",
+            "check the column, and --from and --to",
+        )
+    if lost.any():
+        where = grid.seconds[lost]
+        findings.append(
+            Finding(
+                "not_finite", float(where[0]), float(where[-1]), float(where.size), "samples", excluded=True,
+                because=f"{where.size} cells are empty, NaN or infinite",
+                disposition="treated as missing samples",
+            )
+        )
+    use = wanted & finite
+    values, missing, runs, dropped = build_runs(
+        conversion.apply(channel.values[use]),
+        grid.index[use],
+        grid.segment[use],
+        grid.seconds[use],
+        grid.sample_interval,
+    )
+    if not runs:
+        raise RecordTooShortError(int(np.count_nonzero(use)), SHORTEST_RUN, "any estimate")
+    findings += _gap_findings(grid, wanted, dropped)
+    spans = tuple((run.start, run.start + run.n_samples * grid.sample_interval) for run in runs)
+    gaps = [b[0] - a[1] for a, b in zip(spans[:-1], spans[1:], strict=True)]
+    absent = _absent(grid, wanted)
+    clock = Clock(grid.source, grid.jitter, max([0.0, *gaps]), absent, spans)
+    return Record(
+        label,
+        conversion.quantity.name,
+        conversion.unit.text,
+        values,
+        missing,
+        grid.sample_interval,
+        runs,
+        clock,
+        channel.kind == "increment",
+        conversion.front_end,
+        tuple(findings),
+        conversion.limits,
+    )
+
+
+def _chosen(
+    log: SensorLog, grid: Grid, start: str | None, stop: str | None, exclude: Sequence[str], findings: list[Finding]
+) -> np.ndarray:  # type: ignore[type-arg]
+    instants = Instants(grid.seconds, log.stamps)
+    first = instants.instant(start) if start is not None else None
+    last = instants.instant(stop) if stop is not None else None
+    if first is not None and last is not None and not last > first:
+        raise UsageError(f"--to {stop} is not after --from {start}", "a span that runs forwards")
+    wanted = within(grid.seconds, first, last)
+    if not wanted.any():
+        raise UsageError(
+            f"nothing of the log lies between --from {start} and --to {stop}",
+            f"instants between 0 and {grid.seconds[-1]:.6g} s",
+        )
+    end = float(grid.seconds[-1])
+    for name, said, lost in (("--from", start, (0.0, first)), ("--to", stop, (last, end))):
+        if said is not None:
+            left, right = lost[0] or 0.0, lost[1] or 0.0
+            count = int(np.count_nonzero(within(grid.seconds, left, right)))
+            findings.append(
+                Finding(
+                    "gap", left, right, float(count), "rows", excluded=True,
+                    because=f"left out on request ({name} {said})",
+                    disposition="chosen by the user",
+                )
+            )
+    for text in exclude:
+        left, right = instants.span(text)
+        inside = within(grid.seconds, left, right)
+        wanted &= ~inside
+        findings.append(
+            Finding(
+                "gap", left, right, float(np.count_nonzero(inside)), "rows", excluded=True,
+                because=f"left out on request (--exclude {text})",
+                disposition="chosen by the user",
+            )
+        )
+    return wanted
+
+
+def _absent(grid: Grid, wanted: np.ndarray) -> int:  # type: ignore[type-arg]
+    """Grid places without a row between the first and last row wanted, within segments."""
+    rows = np.flatnonzero(grid.kept)
+    rows = rows[(rows >= np.argmax(wanted)) & (rows <= wanted.size - 1 - np.argmax(wanted[::-1]))]
+    steps = np.diff(grid.index[rows])
+    inside = np.diff(grid.segment[rows]) == 0
+    return int(np.sum((steps - 1)[inside & (steps > 1)]))
+
+
+def _gap_findings(grid: Grid, wanted: np.ndarray, dropped: int) -> list[Finding]:  # type: ignore[type-arg]
+    """Gaps and holes that are in the log itself, not those that the user made."""
+    from stillbench.logs.runs import hole_limit  # noqa: PLC0415
+
+    rows = np.flatnonzero(grid.kept)
+    rows = rows[(rows >= np.argmax(wanted)) & (rows <= wanted.size - 1 - np.argmax(wanted[::-1]))]
+    steps = np.diff(grid.index[rows]) - 1
+    inside = np.diff(grid.segment[rows]) == 0
+    holes = np.where(inside & (steps > 0), steps, 0)
+    limit = hole_limit(holes[holes > 0], rows.size)
+    findings = []
+    short = np.flatnonzero((holes > 0) & (holes <= limit))
+    if short.size:
+        findings.append(
+            Finding(
+                "missing_samples",
+                float(grid.seconds[rows[short[0]]]),
+                float(grid.seconds[rows[short[-1] + 1]]),
+                float(holes[short].sum()),
+                "samples",
+                excluded=True,
+                because=f"{int(holes[short].sum())} rows are missing in {short.size} holes of at most {limit} samples",
+                disposition="carried as missing, filled by a conditional random draw so that the runs stay whole",
+            )
+        )
+    gaps = np.flatnonzero(holes > limit)
+    for i in gaps[np.argsort(-holes[gaps])][:LISTED_GAPS]:
+        left = float(grid.seconds[rows[i]]) + grid.sample_interval
+        right = float(grid.seconds[rows[i + 1]])
+        findings.append(
+            Finding(
+                "gap", left, right, right - left, "s", excluded=False,
+                because=f"no rows for {right - left:.6g} s ({int(holes[i])} samples)",
+                disposition="the record is split there; no average crosses the gap",
+            )
+        )
+    if gaps.size > LISTED_GAPS:
+        findings.append(
+            Finding(
+                "gap", None, None, float(gaps.size), "gaps", excluded=False,
+                because=f"{gaps.size} gaps in all; the {LISTED_GAPS} longest are listed",
+                disposition="the record is split at each",
+            )
+        )
+    if dropped:
+        findings.append(
+            Finding(
+                "gap", None, None, float(dropped), "samples", excluded=True,
+                because=f"{dropped} samples stand in stretches shorter than {SHORTEST_RUN} between gaps",
+                disposition="left out",
+            )
+        )
+    return findings

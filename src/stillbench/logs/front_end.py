@@ -1,0 +1,197 @@
+"""From what the file holds to SI: units, increments, and the analog front end."""
+
+import math
+from dataclasses import dataclass
+
+import numpy as np
+
+from stillbench.foundation.arrays import FloatArray
+from stillbench.foundation.errors import UnitError, UsageError
+from stillbench.foundation.units import (
+    ACCELERATION,
+    ANGLE,
+    COUNT,
+    DIMENSION_WORDS,
+    INDUCTION,
+    NONE,
+    RATE,
+    RATIO,
+    TIME,
+    VELOCITY,
+    VOLTAGE,
+    Dimension,
+    Unit,
+    parse_quantity,
+    parse_unit,
+)
+from stillbench.vocabulary import quantity as q
+from stillbench.vocabulary.finding import Finding
+from stillbench.vocabulary.log_sheet import FrontEnd
+from stillbench.vocabulary.quantity import Quantity
+from stillbench.vocabulary.record import FrontEndModel
+from stillbench.vocabulary.sensor_log import Channel
+
+BY_DIMENSION: dict[Dimension, Quantity] = {
+    RATE: q.ANGULAR_RATE,
+    ACCELERATION: q.ACCELERATION,
+    VOLTAGE: q.VOLTAGE,
+    COUNT: q.COUNT,
+    INDUCTION: q.INDUCTION,
+}
+
+
+@dataclass(frozen=True)
+class Conversion:
+    """How one channel becomes SI: ``value * gain + shift``, then over the interval for increments.
+
+    Attributes
+    ----------
+    quantity : Quantity
+    gain, shift : float
+    unit : Unit
+        In which the timeline is drawn.
+    front_end : FrontEndModel or None
+    limits : (float, float) or None
+        Of the converter, SI of the quantity.
+    findings : tuple of Finding
+    """
+
+    quantity: Quantity
+    gain: float
+    shift: float
+    unit: Unit
+    front_end: FrontEndModel | None
+    limits: tuple[float, float] | None
+    findings: tuple[Finding, ...]
+
+    def apply(self, values: FloatArray) -> FloatArray:
+        """Convert samples to SI; the offset is taken off before scaling, so that it costs no digits."""
+        with np.errstate(over="ignore", invalid="ignore"):
+            return (values + self.shift / self.gain) * self.gain if self.shift else values * self.gain
+
+
+def convert(channel: Channel, front_end: FrontEnd | None, interval: float) -> Conversion:
+    """Work out how a channel becomes SI.
+
+    Raises
+    ------
+    UnitError
+        When the unit is of a dimension that cannot be characterized, or front end and unit do not fit.
+    """
+    if channel.kind == "increment":
+        return _increments(channel, interval)
+    if front_end is not None and front_end.scale_factor is not None:
+        return _through_front_end(channel, front_end)
+    dimension = channel.unit.dimension
+    if dimension not in BY_DIMENSION:
+        way_out = (
+            'increments are declared with kind = "increment" under [channel.NAME] in a log sheet'
+            if dimension in (ANGLE, VELOCITY)
+            else "give a unit such as deg/s, m/s^2, V, T or count"
+        )
+        raise UnitError(
+            channel.unit.text,
+            f"channel {channel.label!r} is in {channel.unit.text}, {DIMENSION_WORDS.get(dimension, 'a compound unit')}",
+            "a rate, an acceleration, a voltage, a flux density or a count",
+            way_out,
+        )
+    quantity = BY_DIMENSION[dimension]
+    findings: tuple[Finding, ...] = ()
+    if quantity in (q.VOLTAGE, q.COUNT):
+        findings = (
+            Finding(
+                "scale_factor_unknown", None, None, None, "", excluded=False,
+                because=f"the log is in {channel.unit.text} and no scale factor is declared",
+                disposition=f"all results stay in {channel.unit.text}; they say nothing of a rate",
+            ),
+        )
+    limits = _limits(front_end, channel.unit, channel.unit.factor, 0.0)
+    return Conversion(quantity, channel.unit.factor, 0.0, channel.unit, None, limits, findings)
+
+
+def _increments(channel: Channel, interval: float) -> Conversion:
+    quantity = {ANGLE: q.ANGULAR_RATE, VELOCITY: q.ACCELERATION}.get(channel.unit.dimension)
+    if quantity is None:
+        raise UnitError(
+            channel.unit.text,
+            f"channel {channel.label!r} is declared as increments in {channel.unit.text}",
+            "an angle (deg, arcsec, rad, urad) or a velocity (m/s) per sample",
+            "correct kind or unit in the log sheet",
+        )
+    spoken = parse_unit("deg/s" if quantity is q.ANGULAR_RATE else "m/s^2")
+    return Conversion(quantity, channel.unit.factor / interval, 0.0, spoken, None, None, ())
+
+
+def _through_front_end(channel: Channel, front_end: FrontEnd) -> Conversion:
+    scale, scale_unit = parse_quantity(front_end.scale_factor or "", "the scale factor")
+    dimension = channel.unit.dimension * scale_unit.dimension**-1
+    quantity = {RATE: q.ANGULAR_RATE, ACCELERATION: q.ACCELERATION}.get(dimension)
+    if quantity is None or scale == 0:
+        raise UnitError(
+            scale_unit.text,
+            f"a reading in {channel.unit.text} over a scale factor of {front_end.scale_factor!r} is no rate",
+            "a scale factor such as 48.2 mV/(deg/s) or 1.2 V/g, not zero",
+        )
+    zero = 0.0
+    if front_end.zero is not None:
+        zero, zero_unit = parse_quantity(front_end.zero, "the zero")
+        if zero_unit.dimension != channel.unit.dimension:
+            raise UnitError(zero_unit.text, f"the zero is {front_end.zero!r}", f"a unit like {channel.unit.text}")
+        zero *= zero_unit.factor
+    factor = scale * scale_unit.factor
+    relative, findings = _uncertainty(front_end.scale_factor_uncertainty)
+    degrees = "deg" in (front_end.scale_factor or "") or "\N{DEGREE SIGN}" in (front_end.scale_factor or "")
+    if quantity is q.ANGULAR_RATE:
+        spoken = parse_unit("deg/s" if degrees or "dps" in (front_end.scale_factor or "") else "rad/s")
+    else:
+        spoken = parse_unit("m/s^2" if "m/s" in scale_unit.text or "m*" in scale_unit.text else "g")
+    text = f"zero {front_end.zero or 'not declared'}, scale factor {front_end.scale_factor}"
+    if front_end.scale_factor_uncertainty:
+        text += f", standard uncertainty {front_end.scale_factor_uncertainty}"
+    gain = channel.unit.factor / factor
+    model = FrontEndModel(zero, factor, relative, text)
+    limits = _limits(front_end, channel.unit, 1.0 / factor, -zero / factor)
+    return Conversion(quantity, gain, -zero / factor, spoken, model, limits, findings)
+
+
+def _uncertainty(text: str | None) -> tuple[float, tuple[Finding, ...]]:
+    if text is None:
+        finding = Finding(
+            "scale_factor_unknown", None, None, None, "", excluded=False,
+            because="the scale factor is declared without an uncertainty",
+            disposition="intervals and verdicts do not contain it; declare scale_factor_uncertainty",
+        )
+        return 0.0, (finding,)
+    value, unit = parse_quantity(text, "the scale factor uncertainty")
+    relative = value * unit.factor
+    if unit.dimension not in (RATIO, NONE) or not 0 <= relative < 1:
+        raise UsageError(
+            f"the scale factor uncertainty is {text!r}", "a standard uncertainty in percent, such as '0.4 %'"
+        )
+    return relative, ()
+
+
+def _limits(
+    front_end: FrontEnd | None, unit: Unit, gain: float, shift: float
+) -> tuple[float, float] | None:
+    """Lowest and highest reading of the converter, from ``'0 V to 5 V'`` or ``'+-10 V'``, in SI of the quantity."""
+    if front_end is None or front_end.range is None:
+        return None
+    text = front_end.range.replace("\N{PLUS-MINUS SIGN}", "+-")
+    if text.strip().startswith("+-"):
+        value, given = parse_quantity(text.strip()[2:], "the range")
+        ends = (-value * given.factor, value * given.factor)
+    elif " to " in text:
+        low, high = text.split(" to ", 1)
+        upper, given = parse_quantity(high, "the range")
+        low = low if any(c.isalpha() for c in low) else f"{low} {given.text}"
+        lower, low_unit = parse_quantity(low, "the range")
+        ends = (lower * low_unit.factor, upper * given.factor)
+    else:
+        raise UsageError(f"the converter range is {front_end.range!r}", "'0 V to 5 V' or '+-10 V'")
+    if given.dimension != unit.dimension or not ends[1] > ends[0]:
+        raise UsageError(f"the converter range is {front_end.range!r}", f"two readings in a unit like {unit.text}")
+    # ``gain`` takes a reading in SI to the quantity in SI.
+    scale = gain / unit.factor if math.isclose(gain, unit.factor) else gain
+    first, second = (end * scale + shift for end in ends)
+    return min(first, second), max(first, second)

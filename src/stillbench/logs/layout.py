@@ -1,0 +1,248 @@
+"""How a delimited text is laid out: encoding, delimiter, decimal mark, head."""
+
+import re
+from collections import Counter
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+from stillbench.foundation.errors import LogError, UsageError
+from stillbench.vocabulary.log_sheet import LogSection
+
+SAMPLE_BYTES = 1 << 18
+SAMPLE_LINES = 2_000
+DELIMITERS = ("\t", ";", ",", " ")
+DELIMITER_WORDS = {"\t": "tab", ";": "semicolon", ",": "comma", " ": "blanks"}
+COMMENTS = ("#", "%", "//", "!")
+DATE = r"\d{4}-\d{1,2}-\d{1,2}(?:[T ]\d{1,2}:\d{2}(?::\d{2}(?:[.,]\d+)?)?)?(?:Z|[+-]\d{2}:?\d{2})?"
+
+_NUMBER = {
+    ".": re.compile(r"[-+]?(?:\d+\.?\d*|\.\d+)(?:[eE][-+]?\d+)?|[-+]?(?:nan|inf|infinity)|", re.IGNORECASE),
+    ",": re.compile(r"[-+]?(?:\d+,?\d*|,\d+)(?:[eE][-+]?\d+)?|[-+]?(?:nan|inf|infinity)|", re.IGNORECASE),
+}
+_DATE = re.compile(DATE)
+_EMPTY_WORDS = frozenset({"", "na", "n/a", "null", "none", "-", "--", "#n/a"})
+CONTROL_SHARE = 0.01
+FITTING_SHARE = 0.9
+
+
+@dataclass(frozen=True)
+class Layout:
+    """How a text is laid out.
+
+    Attributes
+    ----------
+    encoding : str
+    delimiter : str
+        One of DELIMITERS; a blank stands for runs of blanks and tabs.
+    decimal : str
+    heads : list of str or None
+    body_line : int
+        Line number (from 0) of the first row of data.
+    columns : int
+        Columns of a row of data.
+    """
+
+    encoding: str
+    delimiter: str
+    decimal: str
+    heads: list[str] | None
+    body_line: int
+    columns: int
+
+    @property
+    def words(self) -> str:
+        """The layout in words."""
+        mark = "decimal comma" if self.decimal == "," else "decimal point"
+        head = "with head" if self.heads else "no head"
+        return f"text, {self.encoding}, {DELIMITER_WORDS[self.delimiter]}, {mark}, {head}, {self.columns} columns"
+
+
+def find_encoding(sample: bytes, name: str) -> str:
+    """Return the encoding of a text from its first bytes.
+
+    Raises
+    ------
+    LogError
+        When it is not text at all.
+    """
+    if sample.startswith(b"\xef\xbb\xbf"):
+        return "utf-8-sig"
+    if sample.startswith((b"\xff\xfe", b"\xfe\xff")):
+        return "utf-16"
+    zeros_odd, zeros_even = sample[1::2].count(0), sample[0::2].count(0)
+    half = max(1, len(sample) // 2)
+    if zeros_odd > 0.4 * half and zeros_even < 0.01 * half:  # noqa: PLR2004  ASCII in two bytes: every other is zero
+        return "utf-16-le"
+    if zeros_even > 0.4 * half and zeros_odd < 0.01 * half:  # noqa: PLR2004
+        return "utf-16-be"
+    control = sum(sample.count(byte) for byte in range(32) if byte not in (9, 10, 12, 13))
+    if b"\0" in sample or control > CONTROL_SHARE * len(sample):
+        raise LogError(
+            f"{name!r} is not a text: its first {len(sample)} bytes hold {control} control characters",
+            "delimited text, or NPY/NPZ",
+            "export the log as CSV",
+        )
+    try:
+        sample[: len(sample) - 4 if len(sample) == SAMPLE_BYTES else None].decode("utf-8")
+    except UnicodeDecodeError:
+        return "latin-1"
+    return "utf-8"
+
+
+def split_cells(line: str, delimiter: str) -> list[str]:
+    """Split one line; quotes around a cell are taken off."""
+    if delimiter == " ":
+        return line.split()
+    if '"' in line:
+        import csv  # noqa: PLC0415  quotes are rare in logs
+
+        return [cell.strip() for cell in next(csv.reader([line], delimiter=delimiter))]
+    return [cell.strip() for cell in line.split(delimiter)]
+
+
+def _is_value(cell: str, decimal: str) -> bool:
+    return (
+        _NUMBER[decimal].fullmatch(cell) is not None
+        or cell.lower() in _EMPTY_WORDS
+        or _DATE.fullmatch(cell) is not None
+    )
+
+
+def is_number(cell: str, decimal: str) -> bool:
+    """Whether a cell holds a number (not empty, not a date)."""
+    return bool(cell) and _NUMBER[decimal].fullmatch(cell) is not None
+
+
+def _is_row(cells: Sequence[str], decimal: str) -> bool:
+    return all(_is_value(cell, decimal) for cell in cells) and any(is_number(cell, decimal) for cell in cells)
+
+
+def is_comment(line: str) -> bool:
+    """Whether a line is a comment or empty."""
+    stripped = line.lstrip(" \t\"'")
+    return not stripped or stripped.startswith(COMMENTS)
+
+
+def _score(lines: Sequence[str], delimiter: str, decimal: str) -> tuple[float, int]:
+    """Share of lines that are rows of numbers of the commonest width, and that width."""
+    widths: Counter[int] = Counter()
+    for line in lines:
+        cells = split_cells(line, delimiter)
+        if _is_row(cells, decimal):
+            widths[len(cells)] += 1
+    if not widths:
+        return 0.0, 0
+    width, count = widths.most_common(1)[0]
+    return count / len(lines), width
+
+
+def _candidates(section: LogSection) -> list[tuple[str, str]]:
+    given = {"tab": "\t", "blank": " "}.get(section.delimiter or "", section.delimiter)
+    delimiters = (given,) if given else DELIMITERS
+    decimals = (section.decimal,) if section.decimal else (".", ",")
+    return [(d, m) for d in delimiters for m in decimals if not (d == "," and m == ",")]
+
+
+def find_layout(lines: Sequence[str], encoding: str, section: LogSection, name: str) -> Layout:
+    """Find the layout from the first lines of a text.
+
+    Parameters
+    ----------
+    lines : sequence of str
+        From the start of the file, without line ends.
+    encoding : str
+    section : LogSection
+        What the log sheet says; it rules.
+    name : str
+        Of the file, for messages.
+
+    Raises
+    ------
+    LogError
+        When no delimiter makes a table of numbers.
+    UsageError
+        When two readings fit equally well.
+    """
+    body = [line for line in lines if not is_comment(line)]
+    if section.head_lines is not None:
+        body = [line for line in lines[section.head_lines :] if not is_comment(line)]
+    # The last third of the sample is past any head.
+    tail = body[len(body) - max(1, (2 * len(body)) // 3) :] if len(body) > 2 else body  # noqa: PLR2004
+    scored = [(*_score(tail, delimiter, mark), delimiter, mark) for delimiter, mark in _candidates(section)]
+    best = max((share for share, *_ in scored), default=0.0)
+    if best < FITTING_SHARE:
+        raise _not_a_table(body, best, scored, name)
+    fitting = [entry for entry in scored if entry[0] >= best - 1e-9]
+    delimiter, decimal, width = _choose(fitting, body, lines, name)
+    heads, body_line = _find_head(lines, delimiter, decimal, width, section.head_lines)
+    return Layout(encoding, delimiter, decimal, heads, body_line, width)
+
+
+def _choose(
+    fitting: list[tuple[float, int, str, str]], body: Sequence[str], lines: Sequence[str], name: str
+) -> tuple[str, str, int]:
+    """Among readings that fit all lines, take the widest; refuse to guess where a comma may be either mark."""
+    _, width, delimiter, decimal = max(fitting, key=lambda entry: (entry[1], -DELIMITERS.index(entry[2])))
+    same = [mark for _, w, d, mark in fitting if d == delimiter and w == width]
+    if len(same) > 1:
+        decimal = "."  # no cell of the sample holds either mark
+    comma = next((entry for entry in fitting if entry[2] == ","), None)
+    decimal_comma = next((entry for entry in fitting if entry[3] == "," and entry[2] != ","), None)
+    if delimiter == "," and comma and decimal_comma and decimal_comma[1] < comma[1]:
+        head = _find_head(lines, ",", ".", comma[1], None)[0]
+        sample = body[-1][:40]
+        if head is None:
+            raise UsageError(
+                f"{name!r} may be read in two ways: {sample!r} is {comma[1]} cells split at commas,"
+                f" or {decimal_comma[1]} with decimal commas",
+                "one way",
+                'write delimiter = "," or decimal = "," under [log] in a log sheet and give it with --log-sheet',
+            )
+    return delimiter, decimal, width
+
+
+def _find_head(
+    lines: Sequence[str], delimiter: str, decimal: str, width: int, head_lines: int | None
+) -> tuple[list[str] | None, int]:
+    first = head_lines or 0
+    while first < len(lines):
+        line = lines[first]
+        if not is_comment(line):
+            cells = split_cells(line, delimiter)
+            if len(cells) == width and _is_row(cells, decimal):
+                break
+        first += 1
+    for line in reversed(lines[:first]):
+        stripped = line.strip().lstrip("#%!/").strip()
+        if not stripped:
+            continue
+        cells = split_cells(stripped, delimiter)
+        if len(cells) == width and not any(is_number(cell, decimal) for cell in cells) and any(cells):
+            return _distinct(cells), first
+        break
+    return None, first
+
+
+def _distinct(cells: Sequence[str]) -> list[str]:
+    """Give empty heads their number and repeated heads a suffix, so that each names one column."""
+    heads: list[str] = []
+    for number, cell in enumerate(cells, start=1):
+        head = cell or f"column {number}"
+        heads.append(head if head not in heads else f"{head} ({number})")
+    return heads
+
+
+def _not_a_table(
+    body: Sequence[str], best: float, scored: Sequence[tuple[float, int, str, str]], name: str
+) -> LogError:
+    _, _, delimiter, decimal = max(scored, default=(0.0, 0, ",", "."))
+    odd = next(
+        (line for line in body[len(body) // 3 :] if not _is_row(split_cells(line, delimiter), decimal)),
+        body[0] if body else "",
+    )
+    share = f"only {100 * best:.0f} % of its lines are alike" if best else "no line of it is a row of numbers"
+    return LogError(
+        f"{name!r} is not a table of numbers: {share}; one that does not fit reads {odd.strip()[:60]!r}",
+        "rows of numbers with the same columns",
+        "cut the lines of one device into a file of their own, or export the log as CSV",
+    )

@@ -1,0 +1,246 @@
+"""read_log: from a file, or an array, to a SensorLog."""
+
+import hashlib
+from collections.abc import Mapping, Sequence
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from stillbench.foundation.errors import ClockError, ColumnError, LogError, UnitError, UnitMissingError, UsageError
+from stillbench.foundation.progress import SILENT, Progress
+from stillbench.foundation.suggestions import did_you_mean, listed
+from stillbench.foundation.units import Unit, parse_unit
+from stillbench.logs.arrays import NPY_MAGIC, ArrayTable, columns_of, read_arrays
+from stillbench.logs.contents import ZIP_MAGIC, open_contents
+from stillbench.logs.stamps import find_time_column, read_stamps, split_head
+from stillbench.logs.table import Table
+from stillbench.logs.text import TextTable
+from stillbench.vocabulary.log_sheet import LogSheet
+from stillbench.vocabulary.sensor_log import Channel, SensorLog, Source
+
+FEWEST_ROWS = 16
+SPREADSHEET_SUFFIXES = (".xlsx", ".xls", ".ods", ".xlsm")
+
+
+def _open_table(path: Path, sheet: LogSheet) -> tuple[Table, Source]:
+    contents = open_contents(path)
+    head = bytes(contents.data[:8])
+    binary = head.startswith((NPY_MAGIC, ZIP_MAGIC))
+    table: Table = read_arrays(contents) if binary else TextTable(contents, sheet.log)
+    return table, Source(path.name, contents.file_bytes, contents.sha256, 0, table.format)
+
+
+def _wrap_array(data: Any, name: str) -> tuple[Table, Source]:  # noqa: ANN401  arrays, series, frames, mappings
+    if isinstance(data, Mapping):
+        columns = {str(key): np.asarray(value) for key, value in data.items()}
+    elif hasattr(data, "columns") and hasattr(data, "to_numpy"):
+        columns = {str(key): data[key].to_numpy() for key in data.columns}
+    elif hasattr(data, "to_numpy"):
+        columns = {str(getattr(data, "name", None) or "1"): data.to_numpy()}
+    else:
+        columns = columns_of(np.asarray(data), name)
+    lengths = {np.shape(column)[0] if np.ndim(column) else 0 for column in columns.values()}
+    if len(lengths) != 1 or lengths == {0}:
+        raise LogError("the data are empty or differ in length", "equal columns of numbers")
+    digest = hashlib.sha256()
+    for column in columns.values():
+        digest.update(np.ascontiguousarray(column).data if column.dtype.kind in "iufb" else str(list(column)).encode())
+    size = sum(int(np.asarray(column).nbytes) for column in columns.values())
+    named = not all(key.isdecimal() for key in columns)
+    table = ArrayTable(columns, "array in memory", has_heads=named)
+    return table, Source(name, size, digest.hexdigest(), 0, table.format)
+
+
+def _chosen(
+    table: Table, sheet: LogSheet, channels: Sequence[str], units: Mapping[str, str], time_index: int | None
+) -> list[tuple[str, int]]:
+    """Labels and columns of the channels that are wanted."""
+    declared = {name: table.index_of(section.column or name) for name, section in sheet.channel.items()}
+    data = [index for index in range(len(table.heads)) if index != time_index]
+    if "all" in channels:
+        named = {table.index_of(name): name for name in units if name}
+        by_sheet = {index: name for name, index in declared.items() if sheet.channel[name].unit}
+        wanted = {**{index: table.heads[index] for index in named}, **by_sheet}
+        if not wanted and "" in units:
+            wanted = {index: table.heads[index] for index in data}
+        if not wanted:
+            raise UsageError(
+                "--channel all takes every column that has a unit, and none has one",
+                "units",
+                "give --unit NAME=UNIT for each, or --unit UNIT if all columns share it",
+            )
+        return [(label, index) for index, label in sorted(wanted.items())]
+    if channels:
+        return [(name, declared[name]) if name in declared else _named(table, name) for name in channels]
+    if declared:
+        return list(declared.items())
+    if len(data) == 1:
+        return [(table.heads[data[0]], data[0])]
+    raise ColumnError(
+        "",
+        table.heads,
+        f"the log has {len(data)} data columns: {listed([table.heads[i] for i in data])}",
+        "choose with --channel NAME (or --channel all, for all that have a unit)",
+    )
+
+
+def _named(table: Table, name: str) -> tuple[str, int]:
+    index = table.index_of(name)
+    return table.heads[index], index
+
+
+def _unit_for(label: str, head: str, sheet: LogSheet, units: Mapping[str, str]) -> Unit:
+    section = sheet.channel.get(label)
+    text = units.get(label) or units.get(head) or (section.unit if section else None) or units.get("")
+    if text is None:
+        offered = split_head(head)[1]
+        try:
+            offered = parse_unit(offered).text if offered else None
+        except UnitError:
+            offered = None
+        raise UnitMissingError(label, offered)
+    return parse_unit(text)
+
+
+def _refuse_interleaved(table: Table) -> None:
+    found = table.interleaved() if isinstance(table, TextTable) else None
+    if found is not None:
+        column, devices = found
+        raise LogError(
+            f"column {table.heads[column]!r} takes {devices} values in turn from row to row, and the readings differ"
+            f" between them: {devices} devices are interleaved in one file",
+            "the rows of one device",
+            "cut the lines of one device into a file of their own",
+        )
+
+
+def check_rate(rate: float | None) -> None:
+    """Refuse a rate that is not a positive number.
+
+    Raises
+    ------
+    ClockError
+    """
+    if rate is not None and not (np.isfinite(rate) and rate > 0):
+        raise ClockError(f"the rate is {rate:g} Hz", "a number above zero", "give --rate in samples per second")
+
+
+def read_log(
+    log: Any,  # noqa: ANN401  a path, an array, a series, a frame or a mapping of columns
+    *,
+    sheet: LogSheet | None = None,
+    channels: Sequence[str] = (),
+    units: Mapping[str, str] | None = None,
+    rate: float | None = None,
+    time: str | int | None = None,
+    time_unit: str | None = None,
+    name: str = "array",
+    progress: Progress = SILENT,
+) -> SensorLog:
+    """Read one log.
+
+    Parameters
+    ----------
+    log : path, array, pandas Series or DataFrame, or mapping of column name to array
+        A file of delimited text (plain, .gz, or one file in a .zip), .npy or .npz; or the data themselves, rows of samples.
+    sheet : LogSheet, optional
+        What is declared; the arguments below override it.
+    channels : sequence of str
+        Heads or numbers of the columns wanted, or ``all``.
+    units : mapping of channel to unit
+        The empty key stands for all channels.
+    rate : float, optional
+        Hz, where there are no stamps.
+    time : str or int, optional
+        Time column; ``none`` ignores stamps.
+    time_unit : str, optional
+        s, ms, us, ns, iso or unix.
+    name : str
+        Of data that are not a file.
+    progress : Progress
+
+    Returns
+    -------
+    SensorLog
+
+    Raises
+    ------
+    StillbenchError
+        One line that says what was found, what was wanted, and the way out.
+    """
+    progress.stage("reading")
+    sheet = sheet or LogSheet()
+    units = dict(units or {})
+    rate = rate if rate is not None else sheet.clock.rate
+    check_rate(rate)
+    if isinstance(log, str | Path):
+        path = Path(log)
+        if path.suffix.lower() in SPREADSHEET_SUFFIXES and path.is_file():
+            raise LogError(
+                f"{path.name!r} is a spreadsheet file",
+                "a text file of numbers",
+                "open it where it was made, save the sheet as CSV (UTF-8), and give that; check that no digits were cut",
+            )
+        table, source = _open_table(path, sheet)
+    else:
+        table, source = _wrap_array(log, name)
+    understood = [table.format]
+    column = time if time is not None else sheet.clock.column
+    time_index: int | None
+    if column is not None and str(column).lower() == "none":
+        time_index = None
+    elif column is not None:
+        time_index = table.index_of(column)
+    else:
+        time_index = find_time_column(table)
+    for key in units:
+        if key and key not in sheet.channel:
+            table.index_of(key)
+    chosen = _chosen(table, sheet, channels, units, time_index)
+    spoken = {label: _unit_for(label, table.heads[index], sheet, units) for label, index in chosen}
+    stamps = None
+    if time_index is not None:
+        stamps, sentence = read_stamps(table, time_index, time_unit or sheet.clock.unit)
+        understood.append(sentence)
+    elif rate is None:
+        hint = "" if table.has_heads else " (the columns have no heads)"
+        raise ClockError(
+            f"the log has no time column that is known by its head{hint} and no rate is given",
+            "stamps or a rate",
+            "name the column with --time NAME (and --time-unit), or give --rate HZ",
+        )
+    _refuse_interleaved(table)
+    columns = table.numbers([index for _, index in chosen])
+    rows = columns[0].size
+    if rows < FEWEST_ROWS:
+        raise LogError(f"the log has {rows} rows", f"at least {FEWEST_ROWS}", "log for longer")
+    kinds = {label: sheet.channel[label].kind if label in sheet.channel else "rate" for label, _ in chosen}
+    made = tuple(
+        Channel(label, values, spoken[label], kinds[label])
+        for (label, _), values in zip(chosen, columns, strict=True)
+    )
+    source = Source(source.name, source.bytes, source.sha256, rows, source.format)
+    understood += table.remarks
+    return SensorLog(source, made, stamps, rate, tuple(understood))
+
+
+def unit_flags(flags: Sequence[str], columns: Sequence[str] = ()) -> dict[str, str]:
+    """Turn ``UNIT`` and ``NAME=UNIT`` flags into a mapping; the empty key stands for all channels.
+
+    Raises
+    ------
+    UsageError
+        When two flags speak of the same channel.
+    """
+    units: dict[str, str] = {}
+    for flag in flags:
+        name, sign, unit = flag.rpartition("=")
+        if sign and not unit:
+            hint = did_you_mean(name, columns)
+            raise UsageError(f"--unit {flag!r} names no unit", "--unit NAME=UNIT", hint)
+        if name in units:
+            who = f"channel {name!r}" if name else "all channels"
+            raise UsageError(f"two --unit flags speak of {who}", "one", "")
+        units[name] = unit
+    return units

@@ -1,0 +1,112 @@
+"""Runs of a record: broken at long gaps, short holes carried as missing samples."""
+
+from collections.abc import Sequence
+from dataclasses import replace
+
+import numpy as np
+
+from stillbench.foundation.arrays import BoolArray, FloatArray, IntArray
+from stillbench.vocabulary.record import Clock, Record, Run
+
+LONGEST_HOLE = 20
+"""Samples; a longer gap splits the run."""
+CARRIED_SHARE = 0.02
+"""Of the record that holes may make up in all; beyond, the longest of them split."""
+SHORTEST_RUN = 16
+"""Samples; shorter stretches between gaps are left out."""
+
+
+def hole_limit(holes: IntArray, n_samples: int) -> int:
+    """Return the longest hole that is carried, so that carried holes stay below the share."""
+    candidates = np.sort(holes[holes <= LONGEST_HOLE])
+    if not candidates.size:
+        return LONGEST_HOLE
+    total = np.cumsum(candidates)
+    within = total <= CARRIED_SHARE * n_samples
+    if within.all():
+        return LONGEST_HOLE
+    return int(candidates[within][-1]) if within.any() else 0
+
+
+def build_runs(
+    values: FloatArray, index: IntArray, segment: IntArray, seconds: FloatArray, interval: float
+) -> tuple[FloatArray, BoolArray, tuple[Run, ...], int]:
+    """Lay rows out on the grid.
+
+    Parameters
+    ----------
+    values, index, segment, seconds : (rows,) arrays
+        Finite values, their places, segments and times; only usable rows.
+    interval : float
+        s.
+
+    Returns
+    -------
+    values, missing : (n,) arrays
+        Runs one after the other, NaN and True in holes.
+    runs : tuple of Run
+    dropped : int
+        Rows in stretches that are too short.
+    """
+    if not values.size:
+        return np.empty(0), np.empty(0, dtype=bool), (), 0
+    steps = np.diff(index)
+    apart = np.diff(segment) != 0
+    limit = hole_limit((steps - 1)[(steps > 1) & ~apart], values.size)
+    breaks = np.flatnonzero(apart | (steps - 1 > limit)) + 1
+    bounds = np.concatenate([[0], breaks, [values.size]])
+    parts, masks, runs = [], [], []
+    position = dropped = 0
+    for first, last in zip(bounds[:-1], bounds[1:], strict=True):
+        if last - first < SHORTEST_RUN:
+            dropped += int(last - first)
+            continue
+        places = index[first:last] - index[first]
+        length = int(places[-1]) + 1
+        part = np.full(length, np.nan)
+        part[places] = values[first:last]
+        parts.append(part)
+        masks.append(np.isnan(part))
+        runs.append(Run(position, position + length, float(seconds[first])))
+        position += length
+    if not runs:
+        return np.empty(0), np.empty(0, dtype=bool), (), dropped
+    return np.concatenate(parts), np.concatenate(masks), tuple(runs), dropped
+
+
+def regroup(record: Record, missing: BoolArray) -> Record:
+    """Return a record without the samples marked ``missing``: runs are broken or holes carried as the rule says.
+
+    Parameters
+    ----------
+    record : Record
+    missing : (n,) bool array
+        On the samples of the record; those already missing included.
+    """
+    index = np.empty(record.values.size, dtype=np.int64)
+    segment = np.empty(record.values.size, dtype=np.int64)
+    seconds = np.empty(record.values.size)
+    for number, run in enumerate(record.runs):
+        places = np.arange(run.n_samples)
+        index[run.first : run.last] = places
+        segment[run.first : run.last] = number
+        seconds[run.first : run.last] = run.start + places * record.sample_interval
+    use = ~missing
+    values, mask, runs, _ = build_runs(
+        record.values[use], index[use], segment[use], seconds[use], record.sample_interval
+    )
+    return replace(record, values=values, missing=mask, runs=runs, clock=clock_of(record.clock, runs, record.sample_interval))
+
+
+def clock_of(clock: Clock, runs: Sequence[Run], interval: float) -> Clock:
+    """Return a clock summary with the spans of other runs."""
+    spans = tuple((run.start, run.start + run.n_samples * interval) for run in runs)
+    return replace(clock, runs=spans)
+
+
+def sample_times(record: Record) -> FloatArray:
+    """Seconds from the first sample of the log to each sample of the record; shape (n,)."""
+    times = np.empty(record.values.size)
+    for run in record.runs:
+        times[run.first : run.last] = run.start + np.arange(run.n_samples) * record.sample_interval
+    return times

@@ -1,0 +1,66 @@
+"""What a reader gives: columns by name, read only when asked for."""
+
+from abc import ABC, abstractmethod
+from collections.abc import Sequence
+
+from stillbench.foundation.arrays import FloatArray
+from stillbench.foundation.errors import ColumnError
+from stillbench.foundation.suggestions import did_you_mean, listed
+
+
+class Table(ABC):
+    """Columns of equal length.
+
+    Attributes
+    ----------
+    heads : list of str
+        Names; ``'1'``, ``'2'``, ... where the file has no head.
+    has_heads : bool
+        Whether the names come from the file.
+    format : str
+        What the file was understood to be.
+    remarks : list of str
+        What the reader passed over or concluded.
+    """
+
+    def __init__(self, heads: Sequence[str], format_: str, *, has_heads: bool) -> None:
+        self.heads = list(heads)
+        self.has_heads = has_heads
+        self.format = format_
+        self.remarks: list[str] = []
+
+    @abstractmethod
+    def numbers(self, indices: Sequence[int]) -> list[FloatArray]:
+        """Return columns as float64, empty cells as NaN."""
+
+    @abstractmethod
+    def texts(self, index: int) -> Sequence[str]:
+        """Return a column as text."""
+
+    @abstractmethod
+    def first_text(self, index: int) -> str:
+        """Return the first cell of a column as text."""
+
+    def index_of(self, column: str | int) -> int:
+        """Return the position of a column given by its head, or by its number from 1.
+
+        Raises
+        ------
+        ColumnError
+            When there is none, with the nearest name.
+        """
+        name = str(column).strip()
+        if name in self.heads:
+            return self.heads.index(name)
+        folded = [head.strip().casefold() for head in self.heads]
+        if folded.count(name.casefold()) == 1:
+            return folded.index(name.casefold())
+        if name.isdecimal() and 1 <= int(name) <= len(self.heads):
+            return int(name) - 1
+        if name.isdecimal():
+            raise ColumnError(
+                name, self.heads, f"there is no column number {name}; the log has {len(self.heads)} columns", ""
+            )
+        hint = did_you_mean(name, self.heads)
+        way_out = hint or f"the columns are {listed(self.heads)}"
+        raise ColumnError(name, self.heads, f"there is no column {name!r}", way_out)

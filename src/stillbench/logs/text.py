@@ -1,0 +1,253 @@
+"""Delimited text as a table. Only the columns that are asked for are converted; types are never inferred."""
+
+import io
+import itertools
+import mmap
+import re
+from collections.abc import Iterator, Sequence
+
+import numpy as np
+
+from stillbench.foundation.arrays import FloatArray
+from stillbench.foundation.errors import CellError, LogError
+from stillbench.logs.contents import Contents
+from stillbench.logs.layout import (
+    SAMPLE_BYTES,
+    SAMPLE_LINES,
+    Layout,
+    find_encoding,
+    find_layout,
+    is_comment,
+    is_number,
+    split_cells,
+)
+from stillbench.logs.table import Table
+from stillbench.vocabulary.log_sheet import LogSection
+
+NULLS = ("", "nan", "NaN", "NAN", "-nan", "-NaN", "null", "NULL", "None", "NA", "N/A", "n/a", "#N/A", "-", "--")
+_BLANKS = re.compile(rb"[ \t]+")
+_EDGE_BLANKS = re.compile(rb"(?m)^[ \t]+|[ \t]+(?=\r?$)")
+_COMMENT_LINES = re.compile(rb"(?m)^[ \t]*(?:#|%|!|//).*(?:\r?\n|\r|$)")
+MISFITS = 3
+MISFIT_SHARE = 1e-3
+"""Torn lines that are taken as missing samples; with more than these it is not a table."""
+MOST_DEVICES = 16
+INTERLEAVE_SAMPLE = 500
+FEWEST_TURNS = 8
+INTERLEAVE_RATIO = 5.0
+
+
+def _float(cell: str, decimal: str) -> float:
+    try:
+        return float(cell.replace(decimal, "."))
+    except ValueError:
+        return float("nan")
+
+
+class TextTable(Table):
+    """A delimited text file, laid out as found or as declared."""
+
+    def __init__(self, contents: Contents, section: LogSection) -> None:
+        self.name = contents.name
+        raw = contents.data
+        sample = raw[:SAMPLE_BYTES]
+        encoding = section.encoding or find_encoding(sample, contents.name)
+        self._bytes: bytes | mmap.mmap = raw
+        if encoding.lower().replace("_", "-") in ("utf-8", "utf8", "ascii", "us-ascii"):
+            encoding = "utf-8"
+        elif encoding == "utf-8-sig":
+            self._bytes = raw[3:]
+        else:
+            self._bytes = self._transcode(raw[:], encoding, contents.name)
+        if b"\r" in self._bytes[:SAMPLE_BYTES] and b"\n" not in self._bytes[:SAMPLE_BYTES]:
+            self._bytes = self._bytes[:].replace(b"\r", b"\n")  # lines ended in the old way
+        lines = self._bytes[:SAMPLE_BYTES].decode("utf-8", "replace").splitlines()
+        if len(self._bytes) > SAMPLE_BYTES:
+            lines = lines[:-1]  # the last one is cut
+        self.layout: Layout = find_layout(lines[:SAMPLE_LINES], encoding, section, contents.name)
+        heads = self.layout.heads or [str(i + 1) for i in range(self.layout.columns)]
+        wrapping = f", {contents.wrapping}" if contents.wrapping else ""
+        super().__init__(heads, self.layout.words + wrapping, has_heads=self.layout.heads is not None)
+        self._missing = (*NULLS, *section.missing)
+        self._body = self._find_body()
+        self._clean = False
+        self._numbered = False
+        self._sample = lines[self.layout.body_line : SAMPLE_LINES]
+
+    @staticmethod
+    def _transcode(raw: bytes, encoding: str, name: str) -> bytes:
+        try:
+            return raw.decode(encoding).lstrip("\N{ZERO WIDTH NO-BREAK SPACE}").encode("utf-8")
+        except (UnicodeDecodeError, LookupError) as error:
+            raise LogError(
+                f"{name!r} does not decode as {encoding}: {error}", "text in one encoding", "name it in the log sheet"
+            ) from error
+
+    def _find_body(self) -> memoryview:
+        """The bytes from the first row of data on."""
+        offset = 0
+        for _ in range(self.layout.body_line):
+            end = self._bytes.find(b"\n", offset)
+            if end < 0:
+                break
+            offset = end + 1
+        body = memoryview(self._bytes)[offset:]
+        if self.layout.delimiter == " ":
+            body = memoryview(_BLANKS.sub(b"\t", _EDGE_BLANKS.sub(b"", bytes(body))))
+        return body
+
+    def _convert(self, indices: Sequence[int], *, as_text: bool) -> list[object]:
+        """Convert columns by the library reader; rows that do not fit are refused, but for a torn last line."""
+        import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
+        from pyarrow import csv  # noqa: PLC0415
+
+        misfits: list[tuple[int, str]] = []
+
+        def misfit(row: csv.InvalidRow) -> str:
+            misfits.append((row.number or 0, row.text))
+            return "skip"
+
+        numbered = as_text or self._numbered
+
+        names = [str(i) for i in range(self.layout.columns)]
+        kind = pa.string() if as_text else pa.float64()
+        delimiter = "\t" if self.layout.delimiter == " " else self.layout.delimiter
+        try:
+            table = csv.read_csv(
+                pa.BufferReader(pa.py_buffer(self._body)),
+                read_options=csv.ReadOptions(column_names=names, use_threads=not numbered),
+                parse_options=csv.ParseOptions(delimiter=delimiter, invalid_row_handler=misfit),
+                convert_options=csv.ConvertOptions(
+                    include_columns=[str(i) for i in indices],
+                    column_types={str(i): kind for i in indices},
+                    null_values=list(self._missing),
+                    strings_can_be_null=False,
+                    decimal_point=self.layout.decimal,
+                    check_utf8=False,
+                ),
+            )
+        except pa.ArrowInvalid as error:
+            if not self._clean and _COMMENT_LINES.search(self._body):
+                return self._without_comments(indices, as_text=as_text)
+            self._explain(indices, error)
+        true_misfits = [(number, text) for number, text in misfits if not is_comment(text)]
+        if true_misfits and not self._clean and _COMMENT_LINES.search(self._body):
+            return self._without_comments(indices, as_text=as_text)
+        if true_misfits and not numbered:
+            self._numbered = True  # once more, so that the place of each is known
+            return self._convert(indices, as_text=as_text)
+        columns = [table.column(str(i)) for i in indices]
+        return self._with_holes(columns, true_misfits, kind) if true_misfits else columns
+
+    def _without_comments(self, indices: Sequence[int], *, as_text: bool) -> list[object]:
+        self._body = memoryview(_COMMENT_LINES.sub(b"", bytes(self._body)))
+        self._clean = True
+        self.remarks.append("comment lines within the data were passed over")
+        return self._convert(indices, as_text=as_text)
+
+    def _with_holes(self, columns: list[object], misfits: Sequence[tuple[int, str]], kind: object) -> list[object]:
+        """Give rows that do not fit an empty cell in their place, so that no time is lost; refuse when they are many."""
+        import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
+
+        rows = len(columns[0]) if isinstance(columns[0], pa.ChunkedArray) else 0
+        text = misfits[0][1].strip()
+        line = next((number for number, found in self._lines() if found.strip() == text), misfits[0][0])
+        if len(misfits) > max(MISFITS, MISFIT_SHARE * rows):
+            raise LogError(
+                f"{len(misfits)} lines of {self.name!r} do not have {self.layout.columns} columns;"
+                f" the first is line {line}: {text[:60]!r}",
+                "rows with the same columns all through",
+                "cut the lines of one device into a file of their own, or remove the lines that are no data",
+            )
+        remark = f"{len(misfits)} torn lines are taken as missing samples; the first is line {line}: {text[:40]!r}"
+        if remark not in self.remarks:
+            self.remarks.append(remark)
+        filled = []
+        for column in columns:
+            if not isinstance(column, pa.ChunkedArray):
+                raise TypeError(type(column))
+            pieces, done = [], 0
+            for before, (number, _) in enumerate(sorted(misfits)):
+                place = number - 1 - before  # rows that fit, above this one
+                pieces += [column.slice(done, place - done), pa.chunked_array([pa.nulls(1, column.type)])]
+                done = place
+            pieces.append(column.slice(done))
+            filled.append(pa.chunked_array([chunk for piece in pieces for chunk in piece.chunks], type=column.type))
+        return filled
+
+    def interleaved(self) -> tuple[int, int] | None:
+        """Return a column whose few values take turns from row to row and part the readings of another one.
+
+        Several devices in one file look like this: a number of the device, then its readings.
+
+        Returns
+        -------
+        (column, values) or None
+        """
+        rows = [split_cells(line, self.layout.delimiter) for line in self._sample if not is_comment(line)]
+        rows = [row for row in rows if len(row) == self.layout.columns][-INTERLEAVE_SAMPLE:]
+        cells = np.array([[_float(cell, self.layout.decimal) for cell in row] for row in rows])
+        for column in range(self.layout.columns):
+            values = [row[column] for row in rows]
+            kinds = sorted(set(values))
+            if not 2 <= len(kinds) <= MOST_DEVICES or not all(value.isdecimal() for value in kinds):  # noqa: PLR2004
+                continue
+            if sum(a != b for a, b in itertools.pairwise(values)) < len(values) / 2:
+                continue
+            members = [cells[[value == kind for value in values]] for kind in kinds]
+            if min(len(member) for member in members) < FEWEST_TURNS:
+                continue
+            inner = np.median([member.std(axis=0) for member in members], axis=0)
+            outer = np.std([member.mean(axis=0) for member in members], axis=0)
+            parted = outer > INTERLEAVE_RATIO * inner
+            parted[column] = False
+            if parted.any():
+                return column, len(kinds)
+        return None
+
+    def _lines(self) -> Iterator[tuple[int, str]]:
+        """Lines of the body with their numbers in the file, from 1."""
+        stream = io.BytesIO(self._bytes[:])
+        for number, line in enumerate(stream, start=1):
+            if number > self.layout.body_line:
+                yield number, line.decode("utf-8", "replace")
+
+    def _explain(self, indices: Sequence[int], error: Exception) -> None:
+        """Find the first cell that is no number and raise CellError; otherwise say what the reader said."""
+        for number, line in self._lines():
+            if is_comment(line):
+                continue
+            cells = split_cells(line, self.layout.delimiter)
+            for index in indices:
+                if index < len(cells) and cells[index] not in self._missing:
+                    cell = cells[index]
+                    if not is_number(cell, self.layout.decimal):
+                        raise CellError(self.heads[index], number, cell, decimal=self.layout.decimal) from error
+        raise LogError(f"{self.name!r} cannot be read as a table ({error})", "rows of numbers") from error
+
+    def numbers(self, indices: Sequence[int]) -> list[FloatArray]:
+        import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
+
+        arrays = []
+        for column in self._convert(indices, as_text=False):
+            if not isinstance(column, pa.ChunkedArray):
+                raise TypeError(type(column))
+            arrays.append(np.asarray(column.to_numpy(), dtype=np.float64))
+        return arrays
+
+    def texts(self, index: int) -> Sequence[str]:
+        import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
+
+        (column,) = self._convert([index], as_text=True)
+        if not isinstance(column, pa.ChunkedArray):
+            raise TypeError(type(column))
+        return [str(value) for value in column.to_pylist()]
+
+    def first_text(self, index: int) -> str:
+        first = bytes(self._body[:SAMPLE_BYTES]).decode("utf-8", "replace").splitlines()
+        delimiter = "\t" if self.layout.delimiter == " " else self.layout.delimiter
+        for line in first:
+            if not is_comment(line):
+                cells = split_cells(line, delimiter)
+                return cells[index] if index < len(cells) else ""
+        return ""

@@ -1,0 +1,120 @@
+"""What a channel measures: SI unit, names of its noise terms, and the units the trade prints them in.
+
+References
+----------
+Names of the terms: IEEE Std 952 (rate gyros) and IEEE Std 1293 (accelerometers).
+"""
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+ROLES = ("quantization", "white", "flicker", "walk", "ramp")
+"""Roles of the noise terms, in the order in which they rule from short to long averaging times."""
+
+TIME_POWERS: Mapping[str, float] = {"quantization": 1.0, "white": 0.5, "flicker": 0.0, "walk": -0.5, "ramp": -1.0}
+"""Unit of a coefficient = unit of the quantity times seconds to this power."""
+
+SI_SUFFIX: Mapping[str, str] = {
+    "quantization": "*s",
+    "white": "*sqrt(s)",
+    "flicker": "",
+    "walk": "/sqrt(s)",
+    "ramp": "/s",
+}
+
+
+@dataclass(frozen=True)
+class Quantity:
+    """One kind of channel.
+
+    Attributes
+    ----------
+    name : str
+        As printed.
+    unit : str
+        SI unit of a sample.
+    terms : mapping of role to name
+        As used in result.json.
+    spoken : mapping of role to unit
+        What reports print by default; empty where the log's own unit is used.
+    curve_unit : str
+        Unit of deviations and bias in reports; empty where the log's own unit is used.
+    """
+
+    name: str
+    unit: str
+    terms: Mapping[str, str]
+    spoken: Mapping[str, str]
+    curve_unit: str = ""
+
+    def term_unit(self, role: str) -> str:
+        """SI unit of the coefficient of one term."""
+        special = {("angular rate", "white"): "rad/sqrt(s)", ("angular rate", "quantization"): "rad"}
+        special |= {("angular rate", "ramp"): "rad/s^2", ("acceleration", "white"): "m/s/sqrt(s)"}
+        special |= {("acceleration", "quantization"): "m/s", ("acceleration", "walk"): "m/s^2/sqrt(s)"}
+        special |= {("acceleration", "ramp"): "m/s^3"}
+        return special.get((self.name, role), self.unit + SI_SUFFIX[role])
+
+
+_PLAIN = {"white": "white_noise", "flicker": "flicker_noise", "walk": "random_walk", "ramp": "ramp"}
+
+ANGULAR_RATE = Quantity(
+    "angular rate",
+    "rad/s",
+    {
+        "quantization": "quantization_noise",
+        "white": "angle_random_walk",
+        "flicker": "bias_instability",
+        "walk": "rate_random_walk",
+        "ramp": "rate_ramp",
+    },
+    {
+        "quantization": "arcsec",
+        "white": "deg/sqrt(h)",
+        "flicker": "deg/h",
+        "walk": "deg/h/sqrt(h)",
+        "ramp": "deg/h/h",
+    },
+    "deg/h",
+)
+ACCELERATION = Quantity(
+    "acceleration",
+    "m/s^2",
+    {
+        "quantization": "quantization_noise",
+        "white": "velocity_random_walk",
+        "flicker": "bias_instability",
+        "walk": "acceleration_random_walk",
+        "ramp": "acceleration_ramp",
+    },
+    {
+        "quantization": "m/s",
+        "white": "m/s/sqrt(h)",
+        "flicker": "ug",
+        "walk": "ug/sqrt(h)",
+        "ramp": "ug/h",
+    },
+    "ug",
+)
+VOLTAGE = Quantity("voltage", "V", _PLAIN, {})
+COUNT = Quantity("count", "count", _PLAIN, {})
+INDUCTION = Quantity("magnetic flux density", "T", _PLAIN, {})
+
+QUANTITIES: Mapping[str, Quantity] = {
+    quantity.name: quantity for quantity in (ANGULAR_RATE, ACCELERATION, VOLTAGE, COUNT, INDUCTION)
+}
+
+
+def role_of(term: str) -> str | None:
+    """Return the role of a term name (underscores or spaces), or None when it is not one."""
+    name = term.replace(" ", "_")
+    for quantity in QUANTITIES.values():
+        for role, known in quantity.terms.items():
+            if known == name:
+                return role
+    return None
+
+
+def term_names() -> list[str]:
+    """All term names, as written in a specification (with spaces)."""
+    return sorted({name.replace("_", " ") for quantity in QUANTITIES.values() for name in quantity.terms.values()})

@@ -1,0 +1,137 @@
+"""One channel, evenly clocked, in SI units, in runs between gaps."""
+
+from dataclasses import dataclass
+
+from stillbench.foundation.arrays import BoolArray, FloatArray
+from stillbench.vocabulary.finding import Finding
+
+
+@dataclass(frozen=True)
+class Run:
+    """A stretch of evenly spaced samples.
+
+    Attributes
+    ----------
+    first, last : int
+        ``values[first:last]`` of the record.
+    start : float
+        Seconds from the first sample of the log to the first sample of the run.
+    """
+
+    first: int
+    last: int
+    start: float
+
+    @property
+    def n_samples(self) -> int:
+        """Number of samples."""
+        return self.last - self.first
+
+
+@dataclass(frozen=True)
+class Clock:
+    """How the time axis was found.
+
+    Attributes
+    ----------
+    source : str
+        ``stamps``, ``declared rate`` or ``array``.
+    jitter : float
+        Standard deviation of the stamps about an even grid, s.
+    longest_gap : float
+        s; 0 when there is none.
+    missing : int
+        Samples of the even grid that have no row, gaps included.
+    runs : (n, 2) tuple of pairs
+        Start and stop of each run, seconds from the first sample.
+    """
+
+    source: str
+    jitter: float
+    longest_gap: float
+    missing: int
+    runs: tuple[tuple[float, float], ...]
+
+    __json_names__ = {"jitter": "jitter_s", "longest_gap": "longest_gap_s"}
+
+
+@dataclass(frozen=True)
+class FrontEndModel:
+    """How readings become a rate: ``rate = (reading - zero) / scale_factor``.
+
+    Attributes
+    ----------
+    zero : float
+        In the unit of the reading, SI.
+    scale_factor : float
+        SI reading per SI rate.
+    relative_uncertainty : float
+        Standard, of the scale factor: a factor common to every term and verdict.
+    text : str
+        As declared.
+    """
+
+    zero: float
+    scale_factor: float
+    relative_uncertainty: float
+    text: str
+
+
+@dataclass(frozen=True)
+class Record:
+    """One channel on an even grid.
+
+    Attributes
+    ----------
+    label : str
+    quantity : str
+        Name of a Quantity.
+    unit_text : str
+        The unit the log was declared in (or that the front end gives).
+    values : (n,) float array
+        SI, runs one after the other; short holes are NaN until screening fills them.
+    missing : (n,) bool array
+        True where the log has no usable row.
+    sample_interval : float
+        s.
+    runs : tuple of Run
+    clock : Clock
+    increments : bool
+        True when the log holds angle or velocity increments (only then is there quantization noise in the sense of
+        IEEE Std 952).
+    front_end : FrontEndModel or None
+    findings : tuple of Finding
+        Of the clock and the reader.
+    limits : (float, float) or None
+        Lowest and highest value the converter can give, SI.
+    """
+
+    label: str
+    quantity: str
+    unit_text: str
+    values: FloatArray
+    missing: BoolArray
+    sample_interval: float
+    runs: tuple[Run, ...]
+    clock: Clock
+    increments: bool = False
+    front_end: FrontEndModel | None = None
+    findings: tuple[Finding, ...] = ()
+    limits: tuple[float, float] | None = None
+
+    @property
+    def n_samples(self) -> int:
+        """Samples on the grid, filled ones included."""
+        return sum(run.n_samples for run in self.runs)
+
+    @property
+    def duration(self) -> float:
+        """Seconds from the first sample to the end of the last."""
+        if not self.runs:
+            return 0.0
+        last = self.runs[-1]
+        return last.start + last.n_samples * self.sample_interval - self.runs[0].start
+
+    def pieces(self) -> list[FloatArray]:
+        """The values of each run, as views."""
+        return [self.values[run.first : run.last] for run in self.runs]
