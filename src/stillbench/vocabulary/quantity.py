@@ -56,6 +56,29 @@ class Quantity:
         return special.get((self.name, role), self.unit + SI_SUFFIX[role])
 
 
+    def spoken_unit(self, role: str, report_unit: str) -> str:
+        """Unit in which a report prints a term, given the unit in which it prints deviations.
+
+        The trade's own units go with the default; SI with SI; otherwise the report unit times a power of the second.
+        """
+        if report_unit == self.curve_unit and role in self.spoken:
+            return self.spoken[role]
+        if report_unit == self.unit:
+            return self.term_unit(role)
+        known = _SPOKEN_WITH.get(report_unit, {})
+        return known.get(role, report_unit + SI_SUFFIX[role])
+
+
+_SPOKEN_WITH: Mapping[str, Mapping[str, str]] = {
+    "deg/s": {"quantization": "deg", "white": "deg/sqrt(s)", "ramp": "deg/s^2"},
+    "mg": {"quantization": "m/s", "white": "m/s/sqrt(h)", "walk": "mg/sqrt(h)", "ramp": "mg/h"},
+    "g": {"quantization": "m/s", "white": "m/s/sqrt(h)", "walk": "g/sqrt(h)", "ramp": "g/h"},
+    "V": {"ramp": "V/h"},
+    "mV": {"ramp": "mV/h"},
+    "uV": {"ramp": "uV/h"},
+    "count": {"ramp": "count/h"},
+}
+
 _PLAIN = {"white": "white_noise", "flicker": "flicker_noise", "walk": "random_walk", "ramp": "ramp"}
 
 ANGULAR_RATE = Quantity(

@@ -29,8 +29,9 @@ class Verdict:
     decision : str
         One of DECISIONS.
     conformance_probability : float or None
-    deciding_length : (float, float) or None
-        Length of a log that would decide with 90 % probability, as a range, s; None when not asked or not reachable.
+    deciding_length : (float, float or None) or None
+        Length of a log that would decide with 90 % probability, as a range, s; its upper end
+        is None beyond 32 such logs; None as a whole when not asked or not reachable.
     because : str
     """
 
@@ -46,7 +47,7 @@ class Verdict:
     spoken_unit: str
     decision: str
     conformance_probability: float | None
-    deciding_length: tuple[float, float] | None
+    deciding_length: tuple[float, float | None] | None
     because: str
 
     __json_names__ = {"deciding_length": "deciding_length_s"}

@@ -1,0 +1,1 @@
+"""Results to JSON and back: versioned schema, read for ever."""

@@ -1,0 +1,256 @@
+"""Each quantity a requirement can limit, estimated for a decision.
+
+References
+----------
+Resolution: decision threshold 1.96 sqrt(2) sigma(tau) for the difference of two adjacent averages, whose variance is
+twice the Allan variance by definition; a step seen with 90 % needs (1.96 + 1.28) sqrt(2) sigma.
+Choice of threshold by the relative uncertainty and choice of prior: by simulation, see reference/formulas.md.
+"""
+
+from collections.abc import Callable
+
+import numpy as np
+
+from stillbench.assessment.evidence import Estimate, Evidence
+from stillbench.assessment.uncertainty import normal_quantile
+from stillbench.deviation.averaging import averaging_factors
+from stillbench.deviation.intervals import chi_square_limits, unit_sample_theta
+from stillbench.deviation.overlapping import pooled_deviation
+from stillbench.foundation.arrays import FloatArray
+from stillbench.likelihood.profile import likelihood_threshold
+from stillbench.terms.catalogue import BY_ROLE
+from stillbench.terms.covariance import curve_edf, model_variance
+from stillbench.vocabulary.quantity import TIME_POWERS, role_of
+from stillbench.vocabulary.specification import Requirement
+
+LIKELY = 0.6827
+PRECISE = 0.10
+"""Up to this relative uncertainty the chi-square threshold of one-sided bounds holds its level; above, the two-sided one."""
+SEEN_90 = 0.90
+DRAWS = 20_000
+SEED = 40_961
+USABLE_SHARE = 10
+
+
+class NotMeasurableError(Exception):
+    """The log cannot give an estimate; the message says why."""
+
+
+def _thresholds(value: float, lower: float, upper: float, coverage: float) -> float:
+    """Return the likelihood threshold of the one-sided bounds."""
+    z_two, z_one = normal_quantile(0.5 + coverage / 2.0), normal_quantile(coverage)
+    relative = (upper - lower) / (2.0 * z_two * value) if value > 0 else np.inf
+    return z_one**2 if relative <= PRECISE else z_two**2
+
+
+def _functional(
+    evidence: Evidence, weights: FloatArray, factor: float, limit: float, coverage: float, prior: str, because: str
+) -> Estimate:
+    """Estimate factor * sqrt(weights @ theta)."""
+    fitted = evidence.fitted
+    value = fitted.amplitude(weights)
+    lower, upper = fitted.limits(weights, likelihood_threshold(coverage))
+    one_sided = fitted.limits(weights, _thresholds(value, lower, upper, coverage))
+    likely = fitted.limits(weights, likelihood_threshold(LIKELY))
+    draws = np.sqrt(fitted.draw(("flicker",) if prior == "variance" else ()) ** 2 @ weights)
+    errors = (fitted.relative_error(weights, limit / factor), fitted.relative_error(weights))
+    return Estimate(
+        factor * value,
+        factor * lower,
+        factor * upper,
+        (factor * one_sided[0], factor * one_sided[1]),
+        (factor * likely[0], factor * likely[1]),
+        tuple((factor * draws).tolist()),
+        errors,
+        because,
+    )
+
+
+def _normal(value: float, sd: float, coverage: float, because: str, *, grows: bool) -> Estimate:
+    """Estimate the size of a value with a normal statistical error."""
+    z_two, z_one = normal_quantile(0.5 + coverage / 2.0), normal_quantile(coverage)
+    size = abs(value)
+    draws = np.abs(size + sd * np.random.default_rng(SEED).standard_normal(DRAWS))
+
+    def around(z: float) -> tuple[float, float]:
+        return max(0.0, size - z * sd), size + z * sd
+
+    errors = (sd / size, sd / size) if grows and size > 0 else None
+    return Estimate(size, *around(z_two), around(z_one), around(1.0), tuple(draws.tolist()), errors, because)
+
+
+def estimate_term(evidence: Evidence, requirement: Requirement, limit: float) -> Estimate:
+    """Estimate a noise term."""
+    role = role_of(requirement.quantity) or ""
+    fitted = evidence.fitted
+    factor = fitted.sample_interval ** TIME_POWERS[role]
+    _require_trust(evidence)
+    name = requirement.quantity.replace(" ", "_")
+    term = evidence.model.terms.get(name)
+    if term is not None and term.coefficient is None:
+        raise NotMeasurableError(term.because)
+    if role == "ramp":
+        return _ramp(evidence, factor, requirement.coverage)
+    if role not in fitted.bins.roles:
+        raise NotMeasurableError("this log cannot show it: quantization noise is seen in angle or velocity increments only")
+    prior = "variance" if role == "flicker" else "amplitude"
+    because = term.because if term is not None else "the log is explained without it"
+    return _functional(evidence, fitted.weights({role: 1.0}), factor, limit, requirement.coverage, prior, because)
+
+
+def _ramp(evidence: Evidence, factor: float, coverage: float) -> Estimate:
+    fitted = evidence.fitted
+    estimate, lower, upper = fitted.shape_limits("ramp", likelihood_threshold(coverage))
+    z_one = normal_quantile(coverage)
+    _, one_lower, one_upper = fitted.shape_limits("ramp", z_one**2)
+
+    def size(low: float, high: float) -> tuple[float, float]:
+        inside = low <= 0 <= high
+        return (0.0 if inside else min(abs(low), abs(high))), max(abs(low), abs(high))
+
+    sd = (upper - lower) / (2.0 * normal_quantile(0.5 + coverage / 2.0))
+    draws = np.abs(estimate + sd * np.random.default_rng(SEED).standard_normal(DRAWS)) * factor
+    two, one = size(lower, upper), size(one_lower, one_upper)
+    likely = size(estimate - sd, estimate + sd)
+    return Estimate(
+        abs(estimate) * factor,
+        two[0] * factor,
+        two[1] * factor,
+        (one[0] * factor, one[1] * factor),
+        (likely[0] * factor, likely[1] * factor),
+        tuple(draws.tolist()),
+        None,
+        "size of the straight trend of this log; one log cannot show that it repeats",
+    )
+
+
+def _require_trust(evidence: Evidence) -> None:
+    if not evidence.trusted:
+        raise NotMeasurableError(
+            "the model does not explain the spectrum of this log, so its intervals are not to be relied on"
+        )
+
+
+def deviation_at(evidence: Evidence, tau: float, limit: float, coverage: float, factor: float) -> Estimate:
+    """Estimate factor * sigma(tau): by the model where it holds, else from the curve itself."""
+    interval = evidence.fitted.sample_interval
+    samples = round(tau / interval)
+    longest = max(run.n_samples for run in evidence.record.runs)
+    if samples < 1:
+        raise NotMeasurableError(f"an average of {tau:g} s is shorter than one sample ({interval:.4g} s)")
+    if 2 * samples > longest:
+        raise NotMeasurableError(f"the log has no two averages of {tau:g} s in one run")
+    if evidence.trusted and samples * interval * evidence.model.band[1] >= 0.5 - 1e-9:  # noqa: PLR2004  Nyquist
+        weights = evidence.fitted.weights(
+            {role: float(term.allan_variance(np.array(float(samples)))) for role, term in BY_ROLE.items()}
+        )
+        return _functional(evidence, weights, factor, limit, coverage, "amplitude", "from the fitted model")
+    return _from_curve(evidence, samples, coverage, factor)
+
+
+def _from_curve(evidence: Evidence, samples: int, coverage: float, factor: float) -> Estimate:
+    factors = np.array([samples])
+    sigma, _ = pooled_deviation(evidence.record.pieces(), factors)
+    theta, slope = unit_sample_theta(evidence.model, evidence.fitted.sample_interval)
+    if not any(theta.values()):
+        theta = {"white": 1.0}
+    edf = curve_edf(theta, slope, factors, [run.n_samples for run in evidence.record.runs])
+    value = factor * float(sigma[0])
+
+    def around(level: float) -> tuple[float, float]:
+        low, high = chi_square_limits(factor * sigma, edf, level)
+        return float(low[0]), float(high[0])
+
+    chi_square = np.random.default_rng(SEED).chisquare(float(edf[0]), DRAWS)
+    draws = value * np.sqrt(float(edf[0]) / chi_square)
+    error = float(1.0 / np.sqrt(2.0 * edf[0]))
+    return Estimate(
+        value,
+        *around(coverage),
+        around(2.0 * coverage - 1.0),
+        around(LIKELY),
+        tuple(draws.tolist()),
+        (error, error),
+        "from the curve itself, since the model does not hold there",
+    )
+
+
+def estimate_resolution(evidence: Evidence, requirement: Requirement, limit: float) -> Estimate:
+    """Estimate the noise-limited resolution at the averaging time of the requirement."""
+    z = normal_quantile(0.975)
+    if requirement.meaning == "seen 90 %":
+        z += normal_quantile(SEEN_90)
+    tau = requirement.seconds("averaging_time") or 0.0
+    return deviation_at(evidence, tau, limit, requirement.coverage, z * np.sqrt(2.0))
+
+
+def estimate_lowest(evidence: Evidence, requirement: Requirement, limit: float) -> Estimate:
+    """Estimate the lowest deviation of the fitted model between one sample and a tenth of the longest run."""
+    _require_trust(evidence)
+    longest = max(run.n_samples for run in evidence.record.runs)
+    factors = averaging_factors(max(3, 3 * longest // USABLE_SHARE))
+    theta, _ = unit_sample_theta(evidence.model, evidence.fitted.sample_interval)
+    samples = int(factors[np.argmin(model_variance(theta, 0.0, factors))])
+    tau = samples * evidence.fitted.sample_interval
+    found = deviation_at(evidence, tau, limit, requirement.coverage, 1.0)
+    at_end = " (the end of the usable range: no minimum)" if samples == factors[-1] else ""
+    return Estimate(**{**found.__dict__, "because": f"at an averaging time of {tau:.3g} s{at_end}"})
+
+
+def estimate_bias(evidence: Evidence, requirement: Requirement, limit: float) -> Estimate:  # noqa: ARG001  same signature for all
+    """Estimate the size of the mean of the log."""
+    if not evidence.same_level:
+        raise NotMeasurableError("the sensor was turned during the log, so its mean is no bias")
+    z = normal_quantile(0.5 + requirement.coverage / 2.0)
+    sd = (evidence.bias.upper - evidence.bias.lower) / (2.0 * z)
+    because = "mean of this log; it does not tell the bias at the next turn-on"
+    return _normal(evidence.bias.value, sd, requirement.coverage, because, grows=True)
+
+
+def estimate_drift(evidence: Evidence, requirement: Requirement, limit: float) -> Estimate:  # noqa: ARG001  same signature for all
+    """Find the largest departure of consecutive averages from the null over the log: an observed value."""
+    record = evidence.record
+    if not evidence.same_level:
+        raise NotMeasurableError("the sensor was turned during the log, so there is no common null")
+    interval = record.sample_interval
+    null = round((requirement.seconds("null") or 0.0) / interval)
+    samples = round((requirement.seconds("averaging_time") or 0.0) / interval)
+    first = record.runs[0]
+    if samples < 1 or null < 1:
+        raise NotMeasurableError("null or averaging time is shorter than one sample")
+    if null + samples > first.n_samples:
+        raise NotMeasurableError("the first run of the log is too short for the null and one average")
+    # Deviations from the first sample, so that a large offset costs no digits.
+    origin = record.values[first.first]
+    reference = float(np.mean(record.values[first.first : first.first + null] - origin))
+    over = requirement.seconds("over")
+    stop = first.start + over if over is not None else np.inf
+    largest, when = 0.0, first.start
+    for number, run in enumerate(record.runs):
+        begin = run.first + (null if number == 0 else 0)
+        start = run.start + (null * interval if number == 0 else 0.0)
+        count = (run.last - begin) // samples
+        usable = np.clip(np.floor((stop - start) / (samples * interval) + 1e-9), 0, count)
+        blocks = (record.values[begin : begin + int(usable) * samples] - origin).reshape(-1, samples).mean(axis=1)
+        if blocks.size:
+            away = np.abs(blocks - reference)
+            if away.max() > abs(largest):
+                at = int(np.argmax(away))
+                largest, when = float(blocks[at] - reference), start + at * samples * interval
+    white = evidence.fitted.fit.theta[evidence.fitted.bins.roles.index("white")]
+    covered = record.duration >= (over or 0.0) - samples * interval
+    because = f"observed {when / 3600.0:.2f} h after the start; a bound for this log only, the next may go further (1 in 2)"
+    if not covered:
+        because = f"{SHORT_OF_HORIZON}: {record.duration / 3600.0:.2f} h of {(over or 0.0) / 3600.0:.2f} h; {because}"
+    return _normal(largest, float(np.sqrt(white / null)), requirement.coverage, because, grows=False)
+
+
+SHORT_OF_HORIZON = "the log is shorter than the time the requirement speaks of"
+
+ESTIMATORS: dict[str, Callable[[Evidence, Requirement, float], Estimate]] = {
+    "resolution": estimate_resolution,
+    "drift": estimate_drift,
+    "bias": estimate_bias,
+    "lowest deviation": estimate_lowest,
+}
+"""By the quantity of the requirement; noise terms are the rest."""

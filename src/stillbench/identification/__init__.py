@@ -1,0 +1,1 @@
+"""From a screened record to its noise terms: which, how large, how sure."""

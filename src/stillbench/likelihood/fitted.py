@@ -1,0 +1,127 @@
+"""A fitted model with its data: intervals and posterior draws of any linear function of the squared coefficients."""
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from stillbench.foundation.arrays import BoolArray, FloatArray
+from stillbench.likelihood.bins import BinnedPowers
+from stillbench.likelihood.fit import Fit
+from stillbench.likelihood.profile import profile_limits, shape_limits
+
+WALKERS = 32
+STEPS = 400
+SETTLING = 100
+STRETCH = 2.0
+SEED = 90_173
+
+
+@dataclass(frozen=True)
+class FittedModel:
+    """The full model of one record, unit samples (amplitudes in SI of the rate).
+
+    Attributes
+    ----------
+    bins : BinnedPowers
+        Of the band that was used.
+    fit : Fit
+    shapes : (r,) bool array
+        Mean shapes in the model.
+    sample_interval : float
+        s.
+    """
+
+    bins: BinnedPowers
+    fit: Fit
+    shapes: BoolArray
+    sample_interval: float
+
+    def weights(self, by_role: Mapping[str, float]) -> FloatArray:
+        """Return weights in the order of the terms; roles not in the model count nothing."""
+        return np.array([by_role.get(role, 0.0) for role in self.bins.roles])
+
+    def amplitude(self, weights: FloatArray) -> float:
+        """Return sqrt(weights @ theta) at the maximum."""
+        return float(np.sqrt(max(0.0, weights @ self.fit.theta)))
+
+    def limits(self, weights: FloatArray, threshold: float) -> tuple[float, float]:
+        """Return the profile-likelihood interval of sqrt(weights @ theta)."""
+        return profile_limits(self.bins, self.fit, weights, threshold, shapes=self.shapes)
+
+    def shape_limits(self, role: str, threshold: float) -> tuple[float, float, float]:
+        """Return estimate and interval of a mean shape, per sample."""
+        estimate, lower, upper, _ = shape_limits(self.bins, self.bins.shapes.index(role), threshold)
+        return estimate, lower, upper
+
+    def relative_error(self, weights: FloatArray, amplitude: float | None = None) -> float:
+        """Return the relative standard error of sqrt(weights @ theta) from the Fisher information.
+
+        Parameters
+        ----------
+        weights : (a,) float array
+        amplitude : float, optional
+            Where to evaluate, if not at the maximum: a single term is put there, the others stay; a function of several
+            terms is scaled as a whole, which does not change its relative error.
+        """
+        theta = self.fit.theta.copy()
+        single = np.count_nonzero(weights) == 1
+        if amplitude is not None and single:
+            index = int(np.argmax(weights))
+            theta[index] = amplitude**2 / weights[index]
+        spectrum = np.maximum(self.bins.basis @ theta, np.finfo(float).tiny)
+        weighted = self.bins.basis / spectrum[:, None]
+        information = 0.5 * (weighted * self.bins.dof[:, None]).T @ weighted
+        scale = 1.0 / np.sqrt(np.diag(information))
+        covariance = np.linalg.pinv(information * np.outer(scale, scale), hermitian=True) * np.outer(scale, scale)
+        value = float(weights @ theta)
+        return float(np.sqrt(weights @ covariance @ weights) / (2.0 * value)) if value > 0 else np.inf
+
+    def draw(self, flat_in_variance: Sequence[str] = (), seed: int = SEED) -> FloatArray:
+        """Draw amplitudes from the posterior with a flat prior on them, or on the variance of the roles named.
+
+        Returns
+        -------
+        (draws, a) float array
+            Square roots of theta.
+
+        References
+        ----------
+        J. Goodman and J. Weare, Comm. App. Math. Comp. Sci. 5 (2010) 65: stretch move.
+        """
+        generator = np.random.default_rng(seed)
+        bins, fit = self.bins, self.fit
+        beta = np.where(self.shapes, fit.beta, 0.0)
+        power = bins.power - 2.0 * bins.cross @ beta + np.einsum("r,jrs,s->j", beta, bins.gram, beta)
+        lift = np.array([role in flat_in_variance for role in bins.roles], dtype=float)
+
+        def log_density(amplitudes: FloatArray) -> FloatArray:
+            spectrum = amplitudes**2 @ bins.basis.T
+            inside = (amplitudes >= 0).all(axis=1) & (spectrum > 0).all(axis=1)
+            safe = np.where(inside[:, None], spectrum, 1.0)
+            value = -0.5 * (np.log(safe) + power / safe) @ bins.dof
+            value += np.log(np.where(amplitudes > 0, amplitudes, np.finfo(float).tiny)) @ lift
+            return np.where(inside, value, -np.inf)
+
+        best = np.sqrt(fit.theta)
+        spread = np.sqrt(np.abs(np.diag(np.linalg.pinv(fit.information, hermitian=True))))
+        # On the boundary the information is about the square; its fourth root of variance is the scale of the amplitude.
+        scale = np.where(best**2 > spread, spread / (2.0 * np.maximum(best, np.finfo(float).tiny)), np.sqrt(spread))
+        walkers = np.abs(best + scale * generator.standard_normal((WALKERS, best.size)))
+        density = log_density(walkers)
+        kept = []
+        half = WALKERS // 2
+        for step in range(STEPS):
+            for first in (0, half):
+                own, others = slice(first, first + half), slice(half - first, WALKERS - first)
+                stretch = (1.0 + (STRETCH - 1.0) * generator.random(half)) ** 2 / STRETCH
+                partners = walkers[others][generator.integers(half, size=half)]
+                proposal = partners + stretch[:, None] * (walkers[own] - partners)
+                new = log_density(proposal)
+                chance = (best.size - 1) * np.log(stretch) + new - density[own]
+                taken = np.log(generator.random(half)) < chance
+                walkers[own] = np.where(taken[:, None], proposal, walkers[own])
+                density[own] = np.where(taken, new, density[own])
+            if step >= SETTLING:
+                kept.append(walkers.copy())
+        return np.concatenate(kept)

@@ -1,0 +1,354 @@
+"""The main job from a log to a result: the only file that knows every stage."""
+
+import os
+from collections.abc import Mapping, Sequence
+from dataclasses import replace
+from datetime import UTC, datetime
+from importlib import metadata
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from stillbench.assessment.evidence import Evidence
+from stillbench.assessment.judge import judge, load_specification, require_applicable, spoken_unit
+from stillbench.assessment.uncertainty import normal_quantile, with_common_factor
+from stillbench.deviation.averaging import PER_DECADE
+from stillbench.deviation.intervals import bound_deviation
+from stillbench.deviation.overlapping import estimate_deviation
+from stillbench.foundation.arrays import FloatArray
+from stillbench.foundation.errors import UsageError
+from stillbench.foundation.progress import SILENT, Progress
+from stillbench.foundation.toml_source import load_toml
+from stillbench.foundation.units import parse_unit
+from stillbench.identification.identify import POOR_FIT, Identification, identify_noise
+from stillbench.logs.clock import Grid, audit_clock
+from stillbench.logs.cut import cut_record
+from stillbench.logs.front_end import convert
+from stillbench.logs.read import read_log
+from stillbench.logs.runs import sample_times
+from stillbench.screening.screen import levels_differ, screen
+from stillbench.version import __version__
+from stillbench.vocabulary.characterization import (
+    Bias,
+    ChannelResult,
+    Characterization,
+    Provenance,
+    Setting,
+    Timeline,
+)
+from stillbench.vocabulary.log_sheet import LogSheet
+from stillbench.vocabulary.noise_model import NoiseModel, NoiseTerm
+from stillbench.vocabulary.quantity import QUANTITIES, Quantity
+from stillbench.vocabulary.record import Record
+from stillbench.vocabulary.screened_record import ScreenedRecord
+from stillbench.vocabulary.sensor_log import SensorLog
+from stillbench.vocabulary.specification import Specification
+
+LIBRARIES = ("numpy", "scipy", "pandas", "pyarrow")
+"""Those whose version can move a number."""
+TIMELINE_SPANS = 900
+COVERAGES = (0.5, 0.999)
+
+
+def load_log_sheet(path: Path) -> LogSheet:
+    """Read a log sheet (TOML).
+
+    Raises
+    ------
+    TextFileError
+        With all faults, their lines and nearest names.
+    """
+    return load_toml(path, LogSheet, "log sheet")
+
+
+def characterize(
+    log: Any,  # noqa: ANN401  a path, an array, a series, a frame or a mapping of columns
+    *,
+    channels: Sequence[str] = (),
+    unit: str | Mapping[str, str] | None = None,
+    rate: float | None = None,
+    time: str | int | None = None,
+    time_unit: str | None = None,
+    log_sheet: LogSheet | Path | str | None = None,
+    specification: Specification | Path | str | None = None,
+    start: str | float | None = None,
+    stop: str | float | None = None,
+    exclude: Sequence[str] = (),
+    coverage: float = 0.95,
+    report_unit: str | None = None,
+    made_at: str | None = None,
+    exclusions: bool = True,
+    keep: Mapping[str, str] | None = None,
+    name: str = "array",
+    progress: Progress = SILENT,
+) -> Characterization:
+    """Characterize the noise of a log taken at rest, and judge it where a specification is given.
+
+    Parameters
+    ----------
+    log : path, array, pandas Series or DataFrame, or mapping of column name to array
+        A file (delimited text, plain, .gz or one file in a .zip; .npy; .npz) or the samples themselves.
+    channels : sequence of str
+        Columns by head or number; ``all`` for every one that has a unit. May be left out when there is one only.
+    unit : str or mapping of channel to str
+        Unit of the samples, such as ``deg/s``; required unless the log sheet declares it.
+    rate : float, optional
+        Hz, where there are no stamps.
+    time, time_unit : str, optional
+        Time column and its unit (s, ms, us, ns, iso, unix); ``time="none"`` ignores stamps.
+    log_sheet : LogSheet or path, optional
+    specification : Specification or path, optional
+    start, stop : str or float, optional
+        Seconds from the start, clock time, or ``row:N``.
+    exclude : sequence of str
+        Spans ``T1:T2`` to leave out.
+    coverage : float
+        Of two-sided intervals, 0.5 to 0.999.
+    report_unit : str, optional
+        Unit of deviations and bias in reports.
+    made_at : str, optional
+        ISO 8601; otherwise SOURCE_DATE_EPOCH, otherwise the clock.
+    exclusions : bool
+        Whether screening may leave samples out.
+    keep : mapping of finding kind to reason
+        Findings overruled.
+    name : str
+        Of data that are not a file.
+    progress : Progress
+
+    Returns
+    -------
+    Characterization
+        SI throughout; ``channels`` holds one result for each channel.
+
+    Raises
+    ------
+    StillbenchError
+        One line that says what was found, what was wanted, and the way out.
+    """
+    if not COVERAGES[0] < coverage <= COVERAGES[1]:
+        raise UsageError(f"the coverage is {coverage:g}", f"a probability above {COVERAGES[0]} and up to {COVERAGES[1]}")
+    sheet = log_sheet if isinstance(log_sheet, LogSheet) else load_log_sheet(Path(log_sheet)) if log_sheet else LogSheet()
+    spec = (
+        specification
+        if isinstance(specification, Specification)
+        else load_specification(Path(specification))
+        if specification
+        else Specification()
+    )
+    stamp = made_at_text(made_at)
+    units = {"": unit} if isinstance(unit, str) else dict(unit or {})
+    first, last = (None if instant is None else str(instant) for instant in (start, stop))
+    exclusions = exclusions and sheet.screening.exclusions
+    sensor_log = read_log(
+        log,
+        sheet=sheet,
+        channels=channels,
+        units=units,
+        rate=rate,
+        time=time,
+        time_unit=time_unit,
+        name=name,
+        progress=progress,
+    )
+    grid = audit_clock(sensor_log)
+    quantities = [_quantity_of(sensor_log, channel.label, sheet, grid) for channel in sensor_log.channels]
+    require_applicable(spec, quantities)
+    if report_unit is not None:
+        for quantity in quantities:
+            report_unit = spoken_unit(report_unit, quantity)
+    results = []
+    for channel in sensor_log.channels:
+        record = cut_record(
+            sensor_log, channel.label, sheet=sheet, start=first, stop=last, exclude=exclude, grid=grid
+        )
+        screened = screen(record, exclusions=exclusions, keep=keep, progress=progress)
+        results.append(
+            _characterize_record(
+                record, screened, spec, coverage=coverage, report_unit=report_unit, progress=progress
+            )
+        )
+    settings: dict[str, Setting] = {
+        "channels": tuple(channel.label for channel in sensor_log.channels),
+        "units": tuple(channel.unit.text for channel in sensor_log.channels),
+        "understood": sensor_log.understood,
+        "from": first,
+        "to": last,
+        "exclude": tuple(exclude),
+        "exclusions": exclusions,
+        "keep": tuple(f"{kind}: {reason}" for kind, reason in (keep or {}).items()),
+        "coverage": coverage,
+        "points_per_decade": PER_DECADE,
+        "specification": spec.specification.title,
+        "specification_issue": spec.specification.issue,
+    }
+    libraries = {library: metadata.version(library) for library in LIBRARIES}
+    return Characterization(
+        stamp,
+        Provenance(__version__, libraries, settings, "not run"),
+        sensor_log.source,
+        _identification(sheet),
+        tuple(results),
+    )
+
+
+def made_at_text(given: str | None) -> str:
+    """Return the time of making as ISO 8601 in UTC: as given, from SOURCE_DATE_EPOCH, or now.
+
+    Raises
+    ------
+    UsageError
+        When what is given is no date-time.
+    """
+    epoch = os.environ.get("SOURCE_DATE_EPOCH")
+    try:
+        if given is not None:
+            moment = datetime.fromisoformat(given)
+            moment = moment if moment.tzinfo else moment.replace(tzinfo=UTC)
+        elif epoch:
+            moment = datetime.fromtimestamp(int(epoch), UTC)
+        else:
+            moment = datetime.now(UTC)
+    except (ValueError, OverflowError) as error:
+        raise UsageError(
+            f"the time of making is {given or epoch!r}", "an ISO date-time such as 2026-03-01T06:30:00+00:00"
+        ) from error
+    return moment.astimezone(UTC).isoformat(timespec="seconds")
+
+
+def _quantity_of(log: SensorLog, label: str, sheet: LogSheet, grid: Grid) -> Quantity:
+    channel = next(channel for channel in log.channels if channel.label == label)
+    section = sheet.channel.get(label)
+    return convert(channel, section.front_end if section else None, grid.sample_interval).quantity
+
+
+def _characterize_record(
+    record: Record,
+    screened: ScreenedRecord,
+    specification: Specification,
+    *,
+    coverage: float,
+    report_unit: str | None,
+    progress: Progress,
+) -> ChannelResult:
+    used = screened.record
+    quantity = QUANTITIES[record.quantity]
+    progress.stage(f"curve of {record.label}")
+    curve = estimate_deviation(used, progress=progress)
+    progress.stage(f"fit of {record.label}")
+    found = identify_noise(used, curve, coverage=coverage, findings=screened.findings, progress=progress)
+    findings = (*screened.findings, *found.findings)
+    relative = record.front_end.relative_uncertainty if record.front_end else 0.0
+    z = normal_quantile(0.5 + coverage / 2.0)
+    unscreened: Mapping[str, NoiseTerm] = {}
+    if screened.unscreened is not None:
+        plain = identify_noise(screened.unscreened, curve, coverage=coverage, findings=screened.findings)
+        unscreened = _widened(plain.model, relative, z).terms
+    bounded = bound_deviation(
+        curve,
+        found.model,
+        sample_interval=used.sample_interval,
+        run_lengths=[run.n_samples for run in used.runs],
+        coverage=coverage,
+    )
+    same_level = not levels_differ(screened.findings)
+    bias = _bias(used, found, z, same_level=same_level)
+    evidence = Evidence(
+        used,
+        found.model,
+        found.fitted,
+        bias,
+        relative,
+        trusted=not _poor(found),
+        same_level=same_level,
+    )
+    verdicts = judge(specification, evidence)
+    low, high = with_common_factor(bias.value, bias.lower, bias.upper, relative, z)
+    return ChannelResult(
+        record.label,
+        record.quantity,
+        quantity.unit,
+        report_unit or quantity.curve_unit or record.unit_text,
+        record.unit_text,
+        used.sample_interval,
+        screened.n_offered,
+        screened.n_used,
+        record.duration,
+        Bias(bias.value, low, high),
+        used.clock,
+        _timeline(record),
+        findings,
+        bounded,
+        _widened(found.model, relative, z),
+        verdicts,
+        relative,
+        record.front_end.text if record.front_end else "",
+        unscreened,
+    )
+
+
+def _poor(found: Identification) -> bool:
+    return found.model.goodness > POOR_FIT
+
+
+def _bias(record: Record, found: Identification, z: float, *, same_level: bool) -> Bias:
+    """Mean of the log (of its longest run where the sensor was turned); the error is that of the white noise.
+
+    Slower terms are part of what the mean of this log is; they limit what it says of another time.
+    """
+    runs = record.runs if same_level else (max(record.runs, key=lambda run: run.n_samples),)
+    parts = [record.values[run.first : run.last][~record.missing[run.first : run.last]] for run in runs]
+    values = np.concatenate(parts)
+    origin = values[0]
+    mean = float(origin + np.mean(values - origin))
+    white = float(found.fitted.fit.theta[found.fitted.bins.roles.index("white")])
+    error = z * float(np.sqrt(white / values.size))
+    return Bias(mean, mean - error, mean + error)
+
+
+def _widened(model: NoiseModel, relative: float, z: float) -> NoiseModel:
+    """Join the uncertainty of the scale factor, common to all terms, to their intervals."""
+    if relative == 0:
+        return model
+    terms = {}
+    for name, term in model.terms.items():
+        if term.coefficient is None or term.lower is None or term.upper is None:
+            terms[name] = term
+            continue
+        lower, upper = with_common_factor(term.coefficient, term.lower, term.upper, relative, z)
+        terms[name] = replace(term, lower=lower, upper=upper)
+    return replace(model, terms=terms)
+
+
+def _timeline(record: Record) -> Timeline:
+    """Extremes and mean of 900 equal spans of all samples of the record, those left out later included."""
+    times = sample_times(record)
+    use = ~record.missing
+    times, values = times[use], record.values[use]
+    count = min(TIMELINE_SPANS, values.size)
+    edges = np.linspace(times[0], times[-1] + record.sample_interval, count + 1)
+    starts = np.searchsorted(times, edges[:-1])
+    filled = np.append(starts[1:], values.size) > starts
+    starts = starts[filled]
+    middle = ((edges[:-1] + edges[1:]) / 2.0)[filled]
+    sizes = np.diff(np.append(starts, values.size))
+    origin = values[0]
+    mean: FloatArray = origin + np.add.reduceat(values - origin, starts) / sizes
+    return Timeline(middle, np.minimum.reduceat(values, starts), mean, np.maximum.reduceat(values, starts))
+
+
+def _identification(sheet: LogSheet) -> dict[str, dict[str, Setting]]:
+    """What the log sheet says of unit, conditions and report; empty parts left out."""
+    parts: dict[str, dict[str, Setting]] = {}
+    for name in ("report", "sensor", "conditions"):
+        section = getattr(sheet, name)
+        said = {key: value for key, value in section.model_dump().items() if value not in (None, ())}
+        if said:
+            parts[name] = said
+    return parts
+
+
+def display_unit(channel: ChannelResult) -> tuple[str, float]:
+    """Return the log's own unit and its factor to SI."""
+    return channel.log_unit, parse_unit(channel.log_unit).factor

@@ -1,0 +1,1 @@
+"""Screening: one check a file. A check chooses, marks and explains; it never edits a sample silently."""

@@ -1,0 +1,64 @@
+"""Readings at the end of the converter's range, or piled up at the extreme of the log."""
+
+import numpy as np
+
+from stillbench.foundation.arrays import FloatArray
+from stillbench.logs.runs import sample_times
+from stillbench.screening.outcome import Outcome, nothing
+from stillbench.vocabulary.finding import Finding
+from stillbench.vocabulary.record import Record
+
+CONTINUOUS_SHARE = 8
+"""With more distinct values than an eighth of the samples the readings count as continuous."""
+FEWEST_EQUAL = 3
+
+
+def _piled_up(levels: FloatArray, counts: FloatArray, n_samples: int, sigma: float) -> bool:
+    """Whether the last of the sorted ``levels`` holds more samples than the tail before it explains."""
+    if levels.size > n_samples / CONTINUOUS_SHARE:
+        return bool(counts[-1] >= FEWEST_EQUAL)
+    if levels.size < 4:  # noqa: PLR2004  too few levels to know a tail
+        return False
+    step = float(np.median(np.diff(levels)))
+    if sigma < step:
+        return False  # below one step the tail of the counts is not known well enough
+    second, third = float(counts[-2]), float(counts[-3])
+    expected = second**2 / third * np.exp(-((step / sigma) ** 2))
+    spread = expected * np.sqrt(4.0 / second + 1.0 / third + 0.03**2)
+    return bool(counts[-1] > expected + 5.0 * np.sqrt(expected) + 5.0 * spread + 5.0)
+
+
+def find_saturation(record: Record) -> Outcome:
+    """Find readings at the declared limits, or an extreme value that is taken too often.
+
+    Saturated samples stay in: leaving out one side would bias the rest. The finding says that the noise is clipped.
+    """
+    use = ~record.missing
+    values = record.values[use]
+    times = sample_times(record)[use]
+    findings = []
+    if record.limits is not None:
+        low, high = record.limits
+        at = (values <= low) | (values >= high)
+        if at.any():
+            findings.append(
+                _finding(times[at], int(np.count_nonzero(at)), values.size, "at the end of the declared range")
+            )
+    levels, counts = np.unique(values, return_counts=True)
+    sigma = float(np.std(values))
+    for side, sign in (("highest", 1), ("lowest", -1)):
+        ordered, how_often = (levels, counts) if sign > 0 else (-levels[::-1], counts[::-1])
+        if _piled_up(ordered, how_often.astype(float), values.size, sigma):
+            at = values == sign * ordered[-1]
+            findings.append(
+                _finding(times[at], int(how_often[-1]), values.size, f"at the {side} value, more than its tail explains")
+            )
+    return Outcome(tuple(findings), nothing(record).marked) if findings else nothing(record)
+
+
+def _finding(times: FloatArray, count: int, n_samples: int, where: str) -> Finding:
+    return Finding(
+        "saturation", float(times[0]), float(times[-1]), 100.0 * count / n_samples, "%", excluded=False,
+        because=f"{count} samples lie {where}",
+        disposition="left in: the noise is clipped there, white noise reads low and the mean is drawn inwards",
+    )

@@ -1,0 +1,133 @@
+"""Isolated gross spikes: single samples far outside the noise."""
+
+import numpy as np
+
+from stillbench.foundation.arrays import FloatArray, IntArray
+from stillbench.logs.runs import sample_times
+from stillbench.screening.outcome import Outcome, nothing
+from stillbench.vocabulary.finding import Finding
+from stillbench.vocabulary.record import Record
+
+BLOCK = 64
+FALSE_ALARM = 1e-3
+MARGIN = 0.5
+SHOULDER = 0.75
+LARGEST_SHARE = 0.01
+LISTED = 20
+NEIGHBOURS = 16
+FEWEST_NEIGHBOURS = 3
+SCALE_SAMPLE = 4_000
+LONGEST_SPIKE = 2
+"""Samples; longer ones are bursts."""
+
+
+def level_of(values: FloatArray) -> FloatArray:
+    """Return the slow course of one run: medians of 64 samples, joined by straight lines; shape (n,)."""
+    block = min(BLOCK, max(8, values.size // 8))
+    count = max(1, values.size // block)
+    edges = np.linspace(0, values.size, count + 1).astype(int)
+    if (np.diff(edges) == block).all():
+        medians = np.nanmedian(values.reshape(count, block), axis=1)
+    else:
+        medians = np.array([np.nanmedian(values[a:b]) for a, b in zip(edges[:-1], edges[1:], strict=True)])
+    return np.interp(np.arange(values.size), (edges[:-1] + edges[1:] - 1) / 2.0, medians)
+
+
+def threshold_of(n_samples: int) -> float:
+    """Return how many standard deviations chance reaches once in a thousand logs, and half a one more."""
+    from scipy.special import ndtri  # noqa: PLC0415  heavy imports stay inside functions
+
+    return float(-ndtri(FALSE_ALARM / (2.0 * n_samples))) + MARGIN
+
+
+def _contrast(values: FloatArray, places: IntArray) -> FloatArray:
+    """Return each sample at ``places`` less the median of its neighbours, 16 on each side; slow courses drop out."""
+    contrast = np.empty(places.size)
+    for i, place in enumerate(places):
+        half = min(NEIGHBOURS, int(place), values.size - 1 - int(place))
+        if half >= FEWEST_NEIGHBOURS:
+            around = np.concatenate([values[place - half : place], values[place + 1 : place + half + 1]])
+        else:  # at an end of the run there is one side only
+            around = values[1 : 2 * FEWEST_NEIGHBOURS] if place < half + 1 else values[-2 * FEWEST_NEIGHBOURS : -1]
+        contrast[i] = values[place] - np.nanmedian(around)
+    return contrast
+
+
+def _local_scale(record: Record) -> float:
+    """Robust standard deviation of the contrast over the record, from some thousand samples spread evenly."""
+    sizes = []
+    for piece in record.pieces():
+        count = max(1, round(SCALE_SAMPLE * piece.size / record.values.size))
+        places = np.unique(np.linspace(0, piece.size - 1, count).astype(np.int64))
+        sizes.append(np.abs(_contrast(piece, places)))
+    return _robust(np.concatenate(sizes))
+
+
+def _robust(sizes: FloatArray) -> float:
+    scale = 1.4826 * float(np.nanmedian(sizes))
+    return scale if scale > 0 else 1.2533 * float(np.nanmean(sizes))
+
+
+def find_spikes(record: Record) -> Outcome:
+    """Mark samples far from the slow course and from their neighbours, unless the noise as a whole has heavy tails."""
+    residual = np.concatenate([piece - level_of(piece) for piece in record.pieces()])
+    size = np.abs(residual)
+    scale = _robust(size)
+    if scale == 0:
+        return nothing(record)
+    threshold = threshold_of(record.values.size)
+    off = np.nan_to_num(size, nan=0.0) > SHOULDER * threshold * scale
+    if not off.any():
+        return nothing(record)
+    local = _local_scale(record)
+    contrast = np.zeros(record.values.size)
+    for run in record.runs:
+        places = np.flatnonzero(off[run.first : run.last])
+        contrast[run.first + places] = _contrast(record.values[run.first : run.last], places)
+    marked = (np.abs(contrast) > threshold * local) & (size > threshold * scale)
+    count = int(np.count_nonzero(marked))
+    if not count:
+        return nothing(record)
+    groups = _groups(marked)
+    shoulder = int(np.count_nonzero(np.abs(contrast) > SHOULDER * threshold * local)) - count
+    if count > LARGEST_SHARE * record.values.size or shoulder > max(3, count):
+        finding = Finding(
+            "heavy_tails", None, None, float(count), "samples", excluded=False,
+            because=f"{count} samples lie beyond {threshold:.1f} standard deviations and {shoulder} just below: the noise"
+            " itself has heavy tails",
+            disposition="nothing is left out; the interval of the white noise is widened by the kurtosis",
+        )
+        return Outcome((finding,), nothing(record).marked)
+    times = sample_times(record)
+    peaks = [first + int(np.argmax(np.abs(contrast[first:last]))) for first, last in groups]
+    order = sorted(range(len(groups)), key=lambda i: -abs(contrast[peaks[i]]))
+    findings = []
+    for i in sorted(order[:LISTED]):
+        first, last = groups[i]
+        deviations = contrast[peaks[i]] / local
+        many = f"{last - first} samples in a row, the largest" if last - first > 1 else "one sample"
+        findings.append(
+            Finding(
+                "spike" if last - first <= LONGEST_SPIKE else "burst",
+                float(times[first]), float(times[last - 1]), float(deviations), "standard deviations", excluded=True,
+                because=f"{many} {deviations:+.1f} standard deviations off; chance reaches {threshold - MARGIN:.1f}"
+                " once in a thousand logs",
+                disposition="left out, treated as missing",
+            )
+        )
+    if len(groups) > LISTED:
+        findings.append(
+            Finding(
+                "spike", float(times[groups[0][0]]), float(times[groups[-1][1] - 1]), float(count), "samples", excluded=True,
+                because=f"{len(groups)} spikes and bursts in all, {count} samples; the {LISTED} largest are listed",
+                disposition="left out, treated as missing",
+            )
+        )
+    return Outcome(tuple(findings), marked)
+
+
+def _groups(marked: np.ndarray) -> list[tuple[int, int]]:  # type: ignore[type-arg]
+    """Stretches of marked samples, those next to each other taken together."""
+    padded = np.concatenate([[False], marked, [False]])
+    edges = np.flatnonzero(padded[1:] != padded[:-1])
+    return list(zip(edges[::2].tolist(), edges[1::2].tolist(), strict=True))
