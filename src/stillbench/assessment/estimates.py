@@ -94,8 +94,8 @@ def estimate_term(evidence: Evidence, requirement: Requirement, limit: float) ->
     if role not in fitted.bins.roles:
         raise NotMeasurableError("this log cannot show it: quantization noise is seen in angle or velocity increments only")
     prior = "variance" if role == "flicker" else "amplitude"
-    because = term.because if term is not None else "the log is explained without it"
-    return _functional(evidence, fitted.weights({role: 1.0}), factor, limit, requirement.coverage, prior, because)
+    because = f"{term.state}: {term.because}" if term is not None else "the log is explained without it"
+    return _functional(evidence, fitted.weights({role: 1.0}), float(factor), limit, requirement.coverage, prior, because)
 
 
 def _ramp(evidence: Evidence, factor: float, coverage: float) -> Estimate:
@@ -181,7 +181,7 @@ def estimate_resolution(evidence: Evidence, requirement: Requirement, limit: flo
     if requirement.meaning == "seen 90 %":
         z += normal_quantile(SEEN_90)
     tau = requirement.seconds("averaging_time") or 0.0
-    return deviation_at(evidence, tau, limit, requirement.coverage, z * np.sqrt(2.0))
+    return deviation_at(evidence, tau, limit, requirement.coverage, z * 2.0**0.5)
 
 
 def estimate_lowest(evidence: Evidence, requirement: Requirement, limit: float) -> Estimate:

@@ -204,19 +204,23 @@ def deciding_length(
     Returns None when even the lower end asks for more than 32 such logs, or the scale factor alone forbids a decision.
     """
     at_limit, at_estimate = estimate.errors or (np.inf, np.inf)
-    need = normal_quantile(coverage) * at_limit + normal_quantile(POWER) * at_estimate
-    lengths = []
-    for value in estimate.likely:
-        distance = abs(math.log(value / limit)) if value > 0 else np.inf
-        # What the scale factor takes of the distance no log can win back.
-        left = distance - normal_quantile(coverage) * relative
-        lengths.append(duration * (need / left) ** 2 if left > 0 else np.inf)
-    shortest = min(lengths)
-    inside = estimate.likely[0] <= limit <= estimate.likely[1]
-    longest = np.inf if inside else max(lengths)
+    if not np.isfinite(at_estimate) or estimate.value == 0:
+        # Nothing is seen: the bound falls as 1/T to 1/sqrt(T), whatever the term.
+        over = estimate.one_sided[1] / limit
+        shortest, longest = duration * over, duration * over**2
+    else:
+        need = normal_quantile(coverage) * at_limit + normal_quantile(POWER) * at_estimate
+        lengths = []
+        for value in estimate.likely:
+            distance = abs(math.log(value / limit)) if value > 0 else np.inf
+            # What the scale factor takes of the distance no log can win back.
+            left = distance - normal_quantile(coverage) * relative
+            lengths.append(duration * (need / left) ** 2 if left > 0 else np.inf)
+        shortest = min(lengths)
+        longest = np.inf if estimate.likely[0] <= limit <= estimate.likely[1] else max(lengths)
     if not shortest <= MOST_LOGS * duration:
         return None
-    return max(shortest, duration), (float(longest) if longest <= MOST_LOGS * duration else None)
+    return float(max(shortest, duration)), (float(longest) if longest <= MOST_LOGS * duration else None)
 
 
 def spoken_unit(text: str, quantity: Quantity) -> str:

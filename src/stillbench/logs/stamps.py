@@ -95,7 +95,7 @@ def read_stamps(table: Table, index: int, declared: str | None) -> tuple[Stamps,
             "a stamp in every row",
             "use --time none --rate HZ if the rows are evenly spaced",
         )
-    said = f"--time-unit {declared}" if declared else f"its head says {unit}"
+    said = "declared" if declared else f"its head says {unit}"
     if unit is None:
         unit, said = _guess_unit(numbers, head)
     scale = UNIT_SECONDS[unit]
@@ -124,7 +124,7 @@ def _guess_unit(numbers: FloatArray, head: str) -> tuple[str, str]:
         else "s, ms, us or ns"
     )
     raise ClockError(
-        f"the unit of the time column {head!r} is not known", "--time-unit s, ms, us, ns, iso or unix", options
+        f"the unit of the time column {head!r} is not known", "--time-unit s, ms, us, ns, iso or unix", f"for comparison, {options}"
     )
 
 

@@ -1,0 +1,1 @@
+"""The result as a page to be signed: one HTML file, readable from its JSON alone."""
