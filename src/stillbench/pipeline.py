@@ -16,7 +16,6 @@ from stillbench.assessment.uncertainty import normal_quantile, with_common_facto
 from stillbench.deviation.averaging import PER_DECADE
 from stillbench.deviation.intervals import bound_deviation
 from stillbench.deviation.overlapping import estimate_deviation
-from stillbench.foundation.arrays import FloatArray
 from stillbench.foundation.errors import UsageError
 from stillbench.foundation.progress import SILENT, Progress
 from stillbench.foundation.toml_source import load_toml
@@ -128,8 +127,12 @@ def characterize(
         One line that says what was found, what was wanted, and the way out.
     """
     if not COVERAGES[0] < coverage <= COVERAGES[1]:
-        raise UsageError(f"the coverage is {coverage:g}", f"a probability above {COVERAGES[0]} and up to {COVERAGES[1]}")
-    sheet = log_sheet if isinstance(log_sheet, LogSheet) else load_log_sheet(Path(log_sheet)) if log_sheet else LogSheet()
+        raise UsageError(
+            f"the coverage is {coverage:g}", f"a probability above {COVERAGES[0]} and up to {COVERAGES[1]}"
+        )
+    sheet = (
+        log_sheet if isinstance(log_sheet, LogSheet) else load_log_sheet(Path(log_sheet)) if log_sheet else LogSheet()
+    )
     spec = (
         specification
         if isinstance(specification, Specification)
@@ -160,14 +163,10 @@ def characterize(
             report_unit = spoken_unit(report_unit, quantity)
     results = []
     for channel in sensor_log.channels:
-        record = cut_record(
-            sensor_log, channel.label, sheet=sheet, start=first, stop=last, exclude=exclude, grid=grid
-        )
+        record = cut_record(sensor_log, channel.label, sheet=sheet, start=first, stop=last, exclude=exclude, grid=grid)
         screened = screen(record, exclusions=exclusions, keep=keep, progress=progress)
         results.append(
-            _characterize_record(
-                record, screened, spec, coverage=coverage, report_unit=report_unit, progress=progress
-            )
+            _characterize_record(record, screened, spec, coverage=coverage, report_unit=report_unit, progress=progress)
         )
     settings: dict[str, Setting] = {
         "channels": tuple(channel.label for channel in sensor_log.channels),
@@ -334,12 +333,12 @@ def _timeline(record: Record) -> Timeline:
     middle = ((edges[:-1] + edges[1:]) / 2.0)[filled]
     sizes = np.diff(np.append(starts, values.size))
     origin = values[0]
-    mean: FloatArray = origin + np.add.reduceat(values - origin, starts) / sizes
+    mean = origin + np.add.reduceat(values - origin, starts) / sizes
     return Timeline(middle, np.minimum.reduceat(values, starts), mean, np.maximum.reduceat(values, starts))
 
 
 def _identification(sheet: LogSheet) -> dict[str, dict[str, Setting]]:
-    """What the log sheet says of unit, conditions and report; empty parts left out."""
+    """Return what the log sheet says of unit, conditions and report; empty parts left out."""
     parts: dict[str, dict[str, Setting]] = {}
     for name in ("report", "sensor", "conditions"):
         section = getattr(sheet, name)

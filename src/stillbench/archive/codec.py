@@ -28,7 +28,7 @@ def _json_names(kind: type) -> Mapping[str, str]:
     return names
 
 
-def _plain(value: Any) -> Any:  # noqa: ANN401  any field of any noun
+def _plain(value: Any) -> Any:  # noqa: ANN401, PLR0911  any field of any noun; one return a kind
     if dataclasses.is_dataclass(value) and not isinstance(value, type):
         names = _json_names(type(value))
         return {names.get(f.name, f.name): _plain(getattr(value, f.name)) for f in dataclasses.fields(value)}
@@ -61,7 +61,7 @@ def _hints(kind: type) -> dict[str, Any]:
     return typing.get_type_hints(kind)
 
 
-def _rebuild(value: Any, hint: Any, where: str) -> Any:  # noqa: ANN401, PLR0911  one return a kind of hint
+def _rebuild(value: Any, hint: Any, where: str) -> Any:  # noqa: ANN401, C901, PLR0911  one branch a kind of hint
     origin = typing.get_origin(hint)
     if origin in (typing.Union, types.UnionType):
         options = typing.get_args(hint)

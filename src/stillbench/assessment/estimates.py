@@ -61,6 +61,7 @@ def _functional(
         (factor * one_sided[0], factor * one_sided[1]),
         (factor * likely[0], factor * likely[1]),
         tuple((factor * draws).tolist()),
+        None,
         errors,
         because,
     )
@@ -70,13 +71,12 @@ def _normal(value: float, sd: float, coverage: float, because: str, *, grows: bo
     """Estimate the size of a value with a normal statistical error."""
     z_two, z_one = normal_quantile(0.5 + coverage / 2.0), normal_quantile(coverage)
     size = abs(value)
-    draws = np.abs(size + sd * np.random.default_rng(SEED).standard_normal(DRAWS))
 
     def around(z: float) -> tuple[float, float]:
         return max(0.0, size - z * sd), size + z * sd
 
     errors = (sd / size, sd / size) if grows and size > 0 else None
-    return Estimate(size, *around(z_two), around(z_one), around(1.0), tuple(draws.tolist()), errors, because)
+    return Estimate(size, *around(z_two), around(z_one), around(1.0), (), (value, sd), errors, because)
 
 
 def estimate_term(evidence: Evidence, requirement: Requirement, limit: float) -> Estimate:
@@ -92,10 +92,14 @@ def estimate_term(evidence: Evidence, requirement: Requirement, limit: float) ->
     if role == "ramp":
         return _ramp(evidence, factor, requirement.coverage)
     if role not in fitted.bins.roles:
-        raise NotMeasurableError("this log cannot show it: quantization noise is seen in angle or velocity increments only")
+        raise NotMeasurableError(
+            "this log cannot show it: quantization noise is seen in angle or velocity increments only"
+        )
     prior = "variance" if role == "flicker" else "amplitude"
     because = f"{term.state}: {term.because}" if term is not None else "the log is explained without it"
-    return _functional(evidence, fitted.weights({role: 1.0}), float(factor), limit, requirement.coverage, prior, because)
+    return _functional(
+        evidence, fitted.weights({role: 1.0}), float(factor), limit, requirement.coverage, prior, because
+    )
 
 
 def _ramp(evidence: Evidence, factor: float, coverage: float) -> Estimate:
@@ -109,7 +113,6 @@ def _ramp(evidence: Evidence, factor: float, coverage: float) -> Estimate:
         return (0.0 if inside else min(abs(low), abs(high))), max(abs(low), abs(high))
 
     sd = (upper - lower) / (2.0 * normal_quantile(0.5 + coverage / 2.0))
-    draws = np.abs(estimate + sd * np.random.default_rng(SEED).standard_normal(DRAWS)) * factor
     two, one = size(lower, upper), size(one_lower, one_upper)
     likely = size(estimate - sd, estimate + sd)
     return Estimate(
@@ -118,7 +121,8 @@ def _ramp(evidence: Evidence, factor: float, coverage: float) -> Estimate:
         two[1] * factor,
         (one[0] * factor, one[1] * factor),
         (likely[0] * factor, likely[1] * factor),
-        tuple(draws.tolist()),
+        (),
+        (estimate * factor, sd * factor),
         None,
         "size of the straight trend of this log; one log cannot show that it repeats",
     )
@@ -140,7 +144,7 @@ def deviation_at(evidence: Evidence, tau: float, limit: float, coverage: float, 
         raise NotMeasurableError(f"an average of {tau:g} s is shorter than one sample ({interval:.4g} s)")
     if 2 * samples > longest:
         raise NotMeasurableError(f"the log has no two averages of {tau:g} s in one run")
-    if evidence.trusted and samples * interval * evidence.model.band[1] >= 0.5 - 1e-9:  # noqa: PLR2004  Nyquist
+    if evidence.trusted and samples * interval * evidence.model.band[1] >= 0.5 - 1e-9:
         weights = evidence.fitted.weights(
             {role: float(term.allan_variance(np.array(float(samples)))) for role, term in BY_ROLE.items()}
         )
@@ -170,6 +174,7 @@ def _from_curve(evidence: Evidence, samples: int, coverage: float, factor: float
         around(2.0 * coverage - 1.0),
         around(LIKELY),
         tuple(draws.tolist()),
+        None,
         (error, error),
         "from the curve itself, since the model does not hold there",
     )
@@ -239,7 +244,9 @@ def estimate_drift(evidence: Evidence, requirement: Requirement, limit: float) -
                 largest, when = float(blocks[at] - reference), start + at * samples * interval
     white = evidence.fitted.fit.theta[evidence.fitted.bins.roles.index("white")]
     covered = record.duration >= (over or 0.0) - samples * interval
-    because = f"observed {when / 3600.0:.2f} h after the start; a bound for this log only, the next may go further (1 in 2)"
+    because = (
+        f"observed {when / 3600.0:.2f} h after the start; a bound for this log only, the next may go further (1 in 2)"
+    )
     if not covered:
         because = f"{SHORT_OF_HORIZON}: {record.duration / 3600.0:.2f} h of {(over or 0.0) / 3600.0:.2f} h; {because}"
     return _normal(largest, float(np.sqrt(white / null)), requirement.coverage, because, grows=False)

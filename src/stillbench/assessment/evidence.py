@@ -51,8 +51,10 @@ class Estimate:
         Lower and upper one-sided bounds, statistical.
     likely : (float, float)
         68 % interval, statistical.
-    probability_draws : tuple of float
-        Draws of the value given the data, for the conformance probability.
+    draws : tuple of float
+        Draws of the value given the data, for the conformance probability; empty for a normal one.
+    normal : (float, float) or None
+        Signed value and standard uncertainty where the estimate is normal.
     errors : (float, float) or None
         Relative standard errors at the limit and at the estimate, for the length of a deciding log; None for values to
         which a longer log adds nothing.
@@ -65,6 +67,7 @@ class Estimate:
     upper: float
     one_sided: tuple[float, float]
     likely: tuple[float, float]
-    probability_draws: tuple[float, ...]
+    draws: tuple[float, ...]
+    normal: tuple[float, float] | None
     errors: tuple[float, float] | None
     because: str

@@ -11,6 +11,7 @@ from pathlib import Path
 
 import numpy as np
 
+from stillbench.assessment.conformance import conformance_probability
 from stillbench.assessment.estimates import ESTIMATORS, SHORT_OF_HORIZON, NotMeasurableError, estimate_term
 from stillbench.assessment.evidence import Estimate, Evidence
 from stillbench.assessment.uncertainty import normal_quantile, with_common_factor
@@ -121,8 +122,20 @@ def judge(specification: Specification, evidence: Evidence) -> tuple[Verdict, ..
 def _undecided(requirement: Requirement, limit: float, unit: str, because: str) -> Verdict:
     _, spoken = parse_quantity(requirement.limit, "the limit")
     return Verdict(
-        requirement.id, requirement.clause, described(requirement), None, None, None, None, limit, unit, spoken.text,
-        UNDECIDED, None, None, because,
+        requirement.id,
+        requirement.clause,
+        described(requirement),
+        None,
+        None,
+        None,
+        None,
+        limit,
+        unit,
+        spoken.text,
+        UNDECIDED,
+        None,
+        None,
+        because,
     )
 
 
@@ -166,29 +179,32 @@ def _judged(requirement: Requirement, evidence: Evidence, limit: float, unit: st
     )
 
 
-def _decide(
-    requirement: Requirement, estimate: Estimate, low: float, high: float, limit: float
-) -> tuple[str, str]:
+def _decide(requirement: Requirement, estimate: Estimate, low: float, high: float, limit: float) -> tuple[str, str]:
     level = f"{100 * requirement.coverage:g} %"
-    if requirement.kind == "typical":
-        return UNDECIDED, f"a typical figure is no limit: no decision is possible; {estimate.because}"
     short = estimate.because.startswith(SHORT_OF_HORIZON)
-    if requirement.rule == "simple":
-        if estimate.value > limit:
-            return FAILS, f"the estimate is beyond the limit (simple acceptance); {estimate.because}"
-        return (UNDECIDED if short else CONFORMS), f"the estimate is within the limit (simple acceptance); {estimate.because}"
-    if low > limit:
-        return FAILS, f"the lower {level} bound is beyond the limit; {estimate.because}"
-    if short:
-        return UNDECIDED, estimate.because
-    if high <= limit:
-        return CONFORMS, f"the upper {level} bound is within the limit; {estimate.because}"
-    return UNDECIDED, f"the limit lies between the {level} bounds; {estimate.because}"
+    if requirement.kind == "typical":
+        decision, reason = UNDECIDED, "a typical figure is no limit: no decision is possible"
+    elif requirement.rule == "simple":
+        within = estimate.value <= limit
+        decision = FAILS if not within else UNDECIDED if short else CONFORMS
+        reason = f"the estimate is {'within' if within else 'beyond'} the limit (simple acceptance)"
+    elif low > limit:
+        decision, reason = FAILS, f"the lower {level} bound is beyond the limit"
+    elif high > limit:
+        decision, reason = UNDECIDED, f"the limit lies between the {level} bounds"
+    else:
+        decision = UNDECIDED if short else CONFORMS
+        reason = f"the upper {level} bound is within the limit"
+    return decision, f"{reason}; {estimate.because}"
 
 
 def _conformance_probability(estimate: Estimate, relative: float, limit: float) -> float:
-    """Share of draws within the limit: it speaks of a population spread evenly around the limit (JCGM 106, 7.2)."""
-    draws = np.array(estimate.probability_draws)
+    """Probability that the value is within the limit: it speaks of a population spread evenly around the limit."""
+    if estimate.normal is not None:
+        value, uncertainty = estimate.normal
+        both = math.hypot(uncertainty, relative * value)
+        return conformance_probability(value, both, lower_limit=-limit, upper_limit=limit)
+    draws = np.array(estimate.draws)
     factors = 1.0 + relative * np.random.default_rng(SEED).standard_normal(draws.size)
     return float(np.mean(draws <= limit * factors))
 
@@ -232,5 +248,7 @@ def spoken_unit(text: str, quantity: Quantity) -> str:
     """
     unit = parse_unit(text)
     if unit.dimension != parse_unit(quantity.unit).dimension:
-        raise UnitError(unit.text, f"the report unit is {unit.text!r}", f"a unit of {quantity.name}, like {quantity.unit}")
+        raise UnitError(
+            unit.text, f"the report unit is {unit.text!r}", f"a unit of {quantity.name}, like {quantity.unit}"
+        )
     return unit.text

@@ -16,14 +16,30 @@ missed but one is undecided.
 
 @click.command(name="characterize", help=HELP)
 @click.argument("log", type=click.Path(path_type=Path))
-@click.option("--channel", "channels", multiple=True, metavar="NAME", help="Column by head or number; repeatable; 'all' for every one that has a unit.")
-@click.option("--unit", "units", multiple=True, metavar="UNIT|NAME=UNIT", help="Unit of the samples, such as deg/s; there is no default.")
+@click.option(
+    "--channel",
+    "channels",
+    multiple=True,
+    metavar="NAME",
+    help="Column by head or number; repeatable; 'all' for every one that has a unit.",
+)
+@click.option(
+    "--unit",
+    "units",
+    multiple=True,
+    metavar="UNIT|NAME=UNIT",
+    help="Unit of the samples, such as deg/s; there is no default.",
+)
 @click.option("--rate", type=float, metavar="HZ", help="Sampling rate, where there are no stamps.")
 @click.option("--time", metavar="COLUMN", help="Time column; 'none' ignores stamps.")
 @click.option("--time-unit", type=click.Choice(["s", "ms", "us", "ns", "iso", "unix"]), help="Unit of the stamps.")
-@click.option("--log-sheet", type=click.Path(path_type=Path), metavar="FILE", help="What is known of the log and the unit (TOML).")
+@click.option(
+    "--log-sheet", type=click.Path(path_type=Path), metavar="FILE", help="What is known of the log and the unit (TOML)."
+)
 @click.option("--spec", type=click.Path(path_type=Path), metavar="FILE", help="Requirements to judge (TOML).")
-@click.option("--out", type=click.Path(path_type=Path), metavar="DIR", help="Write report.html, result.json and curve.csv there.")
+@click.option(
+    "--out", type=click.Path(path_type=Path), metavar="DIR", help="Write report.html, result.json and curve.csv there."
+)
 @click.option("--json", "json_file", metavar="FILE", help="Write the result as JSON; '-' for stdout, JSON alone.")
 @click.option("--from", "start", metavar="T", help="Begin there: seconds from the start, clock time, or row:N.")
 @click.option("--to", "stop", metavar="T", help="End there.")
@@ -32,8 +48,12 @@ missed but one is undecided.
 @click.option("--report-unit", metavar="UNIT", help="Unit of deviations and bias in the report.")
 @click.option("--made-at", metavar="ISO", help="Date-time to stand in the result, in place of the clock.")
 @click.option("--no-exclusions", is_flag=True, help="Screening reports, and leaves nothing out.")
-@click.option("--keep", multiple=True, metavar="FINDING", help="Overrule a kind of finding (such as spike); needs --because.")
-@click.option("--because", "reasons", multiple=True, metavar="TEXT", help="Why; one for each --keep, it stands in the report.")
+@click.option(
+    "--keep", multiple=True, metavar="FINDING", help="Overrule a kind of finding (such as spike); needs --because."
+)
+@click.option(
+    "--because", "reasons", multiple=True, metavar="TEXT", help="Why; one for each --keep, it stands in the report."
+)
 @click.option("--quiet", is_flag=True, help="No progress, and no word on what was written.")
 def command(
     log: Path,
@@ -68,7 +88,9 @@ def command(
 
     if len(keep) != len(reasons) or not all(reason.strip() for reason in reasons):
         raise UsageError(
-            f"{len(keep)} --keep and {len(reasons)} --because", "one reason for each finding overruled", "add --because TEXT"
+            f"{len(keep)} --keep and {len(reasons)} --because",
+            "one reason for each finding overruled",
+            "add --because TEXT",
         )
     if out is not None and out.exists() and not out.is_dir():
         raise OutputError(f"{str(out)!r} is a file", "a folder for --out", "choose another name")

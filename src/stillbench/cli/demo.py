@@ -7,7 +7,13 @@ import click
 
 
 @click.command(name="demo")
-@click.option("--out", type=click.Path(path_type=Path), default=Path("reports/demo"), show_default=True, help="Folder to write to.")
+@click.option(
+    "--out",
+    type=click.Path(path_type=Path),
+    default=Path("reports/demo"),
+    show_default=True,
+    help="Folder to write to.",
+)
 @click.option("--quiet", is_flag=True, help="No progress.")
 def command(out: Path, *, quiet: bool) -> int:
     """Make two night logs (8 h, 100 Hz) and qualify both sensors against one specification.
@@ -35,9 +41,7 @@ def command(out: Path, *, quiet: bool) -> int:
             log, sheet = write_bench(bench, logs)
             if not quiet:
                 click.echo(f"characterizing {log} ...", err=True)
-            result = characterize(
-                log, log_sheet=sheet, specification=specification, made_at=MADE_AT, progress=progress
-            )
+            result = characterize(log, log_sheet=sheet, specification=specification, made_at=MADE_AT, progress=progress)
             folder = out / bench.name
             write_result(result, folder, None)
             lines.append(f"{bench.words}: open {folder / REPORT}")
@@ -45,8 +49,12 @@ def command(out: Path, *, quiet: bool) -> int:
                 for verdict in channel.verdicts:
                     row = verdict_row(verdict)
                     found = f"{row.found} {row.unit}" if row.value is not None else row.found
-                    lines.append(f"  {ASCII_MARKS[row.decision]} {row.decision:<17} {row.clause} {row.quantity}: {found}, limit {row.limit}")
-            lines.append(f"  by hand: stillbench characterize {log} --log-sheet {sheet} --spec {specification} --out {folder}")
+                    lines.append(
+                        f"  {ASCII_MARKS[row.decision]} {row.decision:<17} {row.clause} {row.quantity}: {found}, limit {row.limit}"
+                    )
+            lines.append(
+                f"  by hand: stillbench characterize {log} --log-sheet {sheet} --spec {specification} --out {folder}"
+            )
     click.echo("\n".join(lines))
     click.echo(f"done in {time.monotonic() - began:.0f} s; logs and sheets in {logs}", err=True)
     return 0

@@ -21,9 +21,11 @@ class LazyGroup(click.Group):
     """A group that imports a command only when it is called."""
 
     def list_commands(self, ctx: click.Context) -> list[str]:  # noqa: ARG002  signature of the library
+        """Return the names of the commands, without loading any."""
         return sorted(COMMANDS)
 
     def get_command(self, ctx: click.Context, cmd_name: str) -> click.Command | None:  # noqa: ARG002
+        """Load and return one command."""
         if cmd_name not in COMMANDS:
             return None
         command = importlib.import_module(f"stillbench.cli.{cmd_name}").command
@@ -32,6 +34,7 @@ class LazyGroup(click.Group):
         return command
 
     def format_commands(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:  # noqa: ARG002
+        """Write the list of commands from their one-line descriptions, without loading any."""
         with formatter.section("Commands"):
             formatter.write_dl(sorted(COMMANDS.items()))
 
@@ -51,7 +54,7 @@ def main(arguments: Sequence[str] | None = None) -> None:
     sys.exit(_run(arguments))
 
 
-def _run(arguments: Sequence[str] | None) -> int:
+def _run(arguments: Sequence[str] | None) -> int:  # noqa: PLR0911  one return a way to end
     try:
         code = group.main(args=arguments, prog_name="stillbench", standalone_mode=False)
     except click.exceptions.NoArgsIsHelpError as error:

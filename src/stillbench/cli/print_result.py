@@ -14,7 +14,13 @@ from stillbench.report.words import (
 )
 from stillbench.vocabulary.characterization import ChannelResult, Characterization
 
-SIGNS = {"\N{DEGREE SIGN}": "deg", "\N{SQUARE ROOT}": "sqrt ", "\N{MICRO SIGN}": "u", "\N{SUPERSCRIPT TWO}": "^2", "\N{DOT OPERATOR}": "*"}
+SIGNS = {
+    "\N{DEGREE SIGN}": "deg",
+    "\N{SQUARE ROOT}": "sqrt ",
+    "\N{MICRO SIGN}": "u",
+    "\N{SUPERSCRIPT TWO}": "^2",
+    "\N{DOT OPERATOR}": "*",
+}
 WRAP = 100
 LISTED = 12
 
@@ -32,7 +38,10 @@ def table(head: Sequence[str], rows: Sequence[Sequence[str]], right: Sequence[in
     widths = [max(len(row[i]) for row in cells) for i in range(len(head))]
     lines = []
     for number, row in enumerate(cells):
-        parts = [cell.rjust(width) if i in right else cell.ljust(width) for i, (cell, width) in enumerate(zip(row, widths, strict=True))]
+        parts = [
+            cell.rjust(width) if i in right else cell.ljust(width)
+            for i, (cell, width) in enumerate(zip(row, widths, strict=True))
+        ]
         lines.append("  ".join(parts).rstrip())
         if number == 0:
             lines.append("  ".join("-" * width for width in widths))
@@ -56,32 +65,47 @@ def result_text(result: Characterization) -> str:
 
 
 def _channel_text(channel: ChannelResult) -> str:
-    blocks = [
-        f"{channel.label} ({channel.quantity}): {duration_text(channel.duration)} at {1.0 / channel.sample_interval:.6g} Hz,"
-        f" {share_text(channel.n_used, channel.n_samples)} samples used",
-    ]
+    length = f"{duration_text(channel.duration)} at {1.0 / channel.sample_interval:.6g} Hz"
+    used = share_text(channel.n_used, channel.n_samples)
+    blocks = [f"{channel.label} ({channel.quantity}): {length}, {used} samples used"]
     rows = [[row.name, row.symbol, row.value, row.interval, row.unit, row.state] for row in term_rows(channel)]
     rows.append(["bias", "", bias_text(channel), "", "", "mean of this log"])
     percent = f"{100 * channel.curve.coverage:g} % interval"
     bias = rows.pop()
-    blocks.append(table(["noise term", "", "coefficient", percent, "unit", "state"], rows, right=(2,)) + f"\nbias  {ascii_text(bias[2])}")
+    blocks.append(
+        table(["noise term", "", "coefficient", percent, "unit", "state"], rows, right=(2,))
+        + f"\nbias  {ascii_text(bias[2])}"
+    )
     if channel.verdicts:
         verdicts = [verdict_row(verdict) for verdict in channel.verdicts]
         lines = []
         for row in verdicts:
             found = f"{row.found} {row.unit}" if row.value is not None else row.found
-            lines.append([f"{ASCII_MARKS[row.decision]} {row.decision}", row.clause or row.id, row.quantity, f"{row.limit} {row.unit}", found])
+            lines.append(
+                [
+                    f"{ASCII_MARKS[row.decision]} {row.decision}",
+                    row.clause or row.id,
+                    row.quantity,
+                    f"{row.limit} {row.unit}",
+                    found,
+                ]
+            )
         text = table(["decision", "clause", "requirement", "limit", "found"], lines)
-        notes = [wrapped(f"{row.clause or row.id}: {row.because}{'; ' + row.remark if row.remark else ''}") for row in verdicts]
+        notes = [
+            wrapped(f"{row.clause or row.id}: {row.because}{'; ' + row.remark if row.remark else ''}")
+            for row in verdicts
+        ]
         blocks.append("\n".join([text, *notes]))
     blocks.append("\n".join(wrapped(f"{lead} {text}", "") for lead, text in deviation_notes(channel)))
     if channel.findings:
-        lines = ["findings"]
+        told = ["findings"]
         for finding in channel.findings[:LISTED]:
             when = f" at {instant_text(finding.start)}" if finding.start is not None else ""
             mark = "left out" if finding.excluded else "kept"
-            lines.append(wrapped(f"{finding.kind.replace('_', ' ')}{when} ({mark}): {finding.because}; {finding.disposition}"))
+            told.append(
+                wrapped(f"{finding.kind.replace('_', ' ')}{when} ({mark}): {finding.because}; {finding.disposition}")
+            )
         if len(channel.findings) > LISTED:
-            lines.append(f"  and {len(channel.findings) - LISTED} more, all in the report")
-        blocks.append("\n".join(lines))
+            told.append(f"  and {len(channel.findings) - LISTED} more, all in the report")
+        blocks.append("\n".join(told))
     return "\n\n".join(blocks)

@@ -16,7 +16,7 @@ BLOCK = 8_192
 
 
 def _angle(rate: FloatArray) -> FloatArray:
-    """Running sum of the mean-free rate, both ends of every sample, shape (n+1,), float64 whatever came in."""
+    """Return the running sum of the mean-free rate, both ends of every sample, shape (n+1,), float64 whatever came in."""
     rate = np.asarray(rate)
     angle = np.empty(rate.size + 1)
     angle[0] = 0.0
@@ -126,7 +126,7 @@ def estimate_deviation(record: Record, factors: IntArray | None = None, progress
     factors = averaging_factors(longest) if factors is None else factors
     factors = factors[2 * factors <= longest]
     deviation, pairs = pooled_deviation(record.pieces(), factors, progress)
-    tau = factors * record.sample_interval
+    tau = factors.astype(np.float64) * record.sample_interval
     total = record.n_samples
     classical = 1.0 / np.sqrt(2.0 * np.maximum(total / factors - 1.0, 0.5))
     return DeviationCurve(tau, deviation, pairs, classical)

@@ -64,10 +64,19 @@ def draw_deviation(
     if tau[-1] > few:
         axes.axvspan(few, tau[-1] * 1.25, color=SHADE, linewidth=0, zorder=0.2)
     if curve.lower is not None and curve.upper is not None:
-        axes.fill_between(tau, curve.lower / unit.factor, curve.upper / unit.factor, color=PETROL, alpha=0.16, linewidth=0)
+        axes.fill_between(
+            tau, curve.lower / unit.factor, curve.upper / unit.factor, color=PETROL, alpha=0.16, linewidth=0
+        )
     axes.plot(
-        tau[positive], deviation[positive], linestyle="none", marker="o", markersize=3.0, markerfacecolor="none",
-        markeredgecolor=PETROL, markeredgewidth=0.9, zorder=3,
+        tau[positive],
+        deviation[positive],
+        linestyle="none",
+        marker="o",
+        markersize=3.0,
+        markerfacecolor="none",
+        markeredgecolor=PETROL,
+        markeredgewidth=0.9,
+        zorder=3,
     )
     low, high = _range(deviation[positive], None if curve.upper is None else curve.upper / unit.factor)
     axes.set_xlim(tau[0] / 1.25, tau[-1] * 1.25)
@@ -78,11 +87,24 @@ def draw_deviation(
     _draw_terms(axes, channel, labels, unit.factor, places)
     for number, (at, value, text) in enumerate(marks, start=20):
         if tau[0] <= at <= tau[-1] and low < value / unit.factor < high:
-            axes.plot([at / 1.35, at * 1.35], [value / unit.factor] * 2, color=INK, linewidth=2.4, solid_capstyle="butt", zorder=5)
+            axes.plot(
+                [at / 1.35, at * 1.35],
+                [value / unit.factor] * 2,
+                color=INK,
+                linewidth=2.4,
+                solid_capstyle="butt",
+                zorder=5,
+            )
             places.put(text, (at, value / unit.factor), MARK_PLACES, 7.5, number)
     if tau[-1] > few:
         axes.text(
-            np.sqrt(few * tau[-1] * 1.25), high / 1.15, "fewer than\n10 averages", color=GREY, fontsize=7, ha="center", va="top"
+            np.sqrt(few * tau[-1] * 1.25),
+            high / 1.15,
+            "fewer than\n10 averages",
+            color=GREY,
+            fontsize=7,
+            ha="center",
+            va="top",
         )
     axes.set_xlabel("averaging time \N{GREEK SMALL LETTER TAU} / s")
     axes.set_ylabel(f"Allan deviation / ({unit.printed})")
@@ -150,7 +172,9 @@ class Places:
         self._points = np.array([axes.transData.transform(point) for point in points])
         self._boxes: list[tuple[float, float, float, float]] = []
 
-    def put(self, text: str, anchor: tuple[float, float], candidates: tuple[Place, ...], size: float, number: int) -> None:
+    def put(
+        self, text: str, anchor: tuple[float, float], candidates: tuple[Place, ...], size: float, number: int
+    ) -> None:
         """Write ``text`` near ``anchor`` (data coordinates), at the candidate that covers least."""
         best, least = candidates[0], float("inf")
         for place in candidates:
@@ -169,14 +193,26 @@ class Places:
     def _annotate(self, text: str, anchor: tuple[float, float], place: Place, size: float) -> "Annotation":
         dx, dy, horizontal, vertical = place
         return self._axes.annotate(
-            text, anchor, xytext=(dx, dy), textcoords="offset points", fontsize=size, ha=horizontal, va=vertical,
-            linespacing=1.25, zorder=6,
+            text,
+            anchor,
+            xytext=(dx, dy),
+            textcoords="offset points",
+            fontsize=size,
+            ha=horizontal,
+            va=vertical,
+            linespacing=1.25,
+            zorder=6,
         )
 
-    def _cost(self, box: FloatArray) -> float:
+    def _cost(self, box: tuple[float, float, float, float]) -> float:
         left, bottom, right, top = (float(edge) for edge in box)
         frame = self._axes.get_window_extent(self._renderer).extents
-        outside = max(0.0, frame[0] - left) + max(0.0, right - frame[2]) + max(0.0, frame[1] - bottom) + max(0.0, top - frame[3])
+        outside = (
+            max(0.0, frame[0] - left)
+            + max(0.0, right - frame[2])
+            + max(0.0, frame[1] - bottom)
+            + max(0.0, top - frame[3])
+        )
         margin = 3.0
         covered = (
             (self._points[:, 0] > left - margin)

@@ -27,11 +27,19 @@ def draw_spectrum(axes: "Axes", channel: "ChannelResult") -> None:
     seen = bins.power > 0
     density = np.sqrt(bins.power) / unit.factor
     single = seen & (bins.dof < 2)  # noqa: PLR2004  single coefficients scatter widely
-    axes.plot(bins.frequency[single], density[single], linestyle="none", marker=".", markersize=3, color=PETROL, alpha=0.55)
+    axes.plot(
+        bins.frequency[single], density[single], linestyle="none", marker=".", markersize=3, color=PETROL, alpha=0.55
+    )
     many = seen & ~single
     axes.plot(
-        bins.frequency[many], density[many], linestyle="none", marker="o", markersize=2.8, markerfacecolor="none",
-        markeredgecolor=PETROL, markeredgewidth=0.8,
+        bins.frequency[many],
+        density[many],
+        linestyle="none",
+        marker="o",
+        markersize=2.8,
+        markerfacecolor="none",
+        markeredgecolor=PETROL,
+        markeredgewidth=0.8,
     )
     model = np.sqrt(bins.model) / unit.factor
     axes.plot(bins.frequency, model, color=INK)
@@ -67,13 +75,24 @@ def draw_residuals(axes: "Axes", channel: "ChannelResult") -> None:
     limit = float(np.clip(np.max(np.abs(scores)) * 1.1, 4.0, 12.0))
     inside = np.abs(scores) <= limit
     axes.plot(
-        frequency[inside], scores[inside], linestyle="none", marker="o", markersize=2.8, markerfacecolor="none",
-        markeredgecolor=PETROL, markeredgewidth=0.8,
+        frequency[inside],
+        scores[inside],
+        linestyle="none",
+        marker="o",
+        markersize=2.8,
+        markerfacecolor="none",
+        markeredgecolor=PETROL,
+        markeredgewidth=0.8,
     )
     for sign, marker in ((1, "^"), (-1, "v")):
         off = ~inside & (np.sign(scores) == sign)
         axes.plot(
-            frequency[off], np.full(int(off.sum()), sign * limit * 0.97), linestyle="none", marker=marker, color=INK, markersize=3.5
+            frequency[off],
+            np.full(int(off.sum()), sign * limit * 0.97),
+            linestyle="none",
+            marker=marker,
+            color=INK,
+            markersize=3.5,
         )
     axes.set_ylim(-limit, limit)
     axes.set_xlim(bins.frequency[0] / 1.3, bins.frequency[-1] * 1.15)
@@ -88,5 +107,12 @@ def _shade_unused(axes: "Axes", channel: "ChannelResult") -> None:
     if top < last * 0.99:
         axes.axvspan(top, last * 1.15, color=SHADE, linewidth=0, zorder=0.2)
         axes.text(
-            top, 0.98, " not used in the fit", transform=axes.get_xaxis_transform(), color=GREY, fontsize=7, ha="left", va="top"
+            top,
+            0.98,
+            " not used in the fit",
+            transform=axes.get_xaxis_transform(),
+            color=GREY,
+            fontsize=7,
+            ha="left",
+            va="top",
         )

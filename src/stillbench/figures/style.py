@@ -1,10 +1,11 @@
 """Ink, hues, type and axes of every figure."""
 
-from collections.abc import Iterator
 from contextlib import contextmanager
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
+    from collections.abc import Iterator
+
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
     from matplotlib.text import Text
@@ -22,13 +23,16 @@ MILLIMETRE = 1 / 25.4
 WIDTH = 178.0
 """mm, of the wide column on A4 and Letter."""
 
-_SUPERSCRIPTS = str.maketrans("-0123456789", "\N{SUPERSCRIPT MINUS}\N{SUPERSCRIPT ZERO}\N{SUPERSCRIPT ONE}\N{SUPERSCRIPT TWO}"
-                              "\N{SUPERSCRIPT THREE}\N{SUPERSCRIPT FOUR}\N{SUPERSCRIPT FIVE}\N{SUPERSCRIPT SIX}"
-                              "\N{SUPERSCRIPT SEVEN}\N{SUPERSCRIPT EIGHT}\N{SUPERSCRIPT NINE}")
+_SUPERSCRIPTS = str.maketrans(
+    "-0123456789",
+    "\N{SUPERSCRIPT MINUS}\N{SUPERSCRIPT ZERO}\N{SUPERSCRIPT ONE}\N{SUPERSCRIPT TWO}"
+    "\N{SUPERSCRIPT THREE}\N{SUPERSCRIPT FOUR}\N{SUPERSCRIPT FIVE}\N{SUPERSCRIPT SIX}"
+    "\N{SUPERSCRIPT SEVEN}\N{SUPERSCRIPT EIGHT}\N{SUPERSCRIPT NINE}",
+)
 PLAIN_DECADES = (-2, 3)
 MOST_DECADES = 9
 
-SETTINGS = {
+SETTINGS: dict[str, Any] = {
     "axes.edgecolor": GREY,
     "axes.labelcolor": INK,
     "axes.labelsize": 8.5,
@@ -67,7 +71,7 @@ def sheet(height: float, width: float = WIDTH) -> "Iterator[tuple[Figure, Axes]]
     from matplotlib.backends.backend_agg import FigureCanvasAgg  # noqa: PLC0415
     from matplotlib.figure import Figure  # noqa: PLC0415
 
-    with mpl.rc_context(SETTINGS):
+    with mpl.rc_context(SETTINGS):  # type: ignore[arg-type]  # it wants the keys spelled as literals
         figure = Figure(figsize=(width * MILLIMETRE, height * MILLIMETRE), layout="constrained")
         FigureCanvasAgg(figure)  # knows the size of texts
         yield figure, figure.subplots()

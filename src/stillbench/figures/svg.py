@@ -37,7 +37,12 @@ def to_svg(figure: "Figure", name: str, title: str) -> str:
 
     buffer = io.StringIO()
     with mpl.rc_context({"svg.hashsalt": name, "svg.fonttype": "none"}):
-        figure.savefig(buffer, format="svg", metadata={"Date": None, "Creator": None, "Format": None, "Type": None}, transparent=True)
+        figure.savefig(
+            buffer,
+            format="svg",
+            metadata={"Date": None, "Creator": None, "Format": None, "Type": None},
+            transparent=True,
+        )
     text = buffer.getvalue()
     text = text[text.index("<svg") :]
     text = _COMMENT.sub("", text)
@@ -53,7 +58,7 @@ def to_svg(figure: "Figure", name: str, title: str) -> str:
     text = _gathered(text)
     escaped = title.replace("&", "&amp;").replace("<", "&lt;").replace('"', "&quot;")
     text = text.replace("<svg ", f'<svg role="img" aria-label="{escaped}" ', 1)
-    text = text.replace("<style type=\"text/css\">*{stroke-linejoin: round; stroke-linecap: butt}</style>", "")
+    text = text.replace('<style type="text/css">*{stroke-linejoin: round; stroke-linecap: butt}</style>', "")
     return re.sub(r"\n\s*", "\n", text).strip()
 
 

@@ -5,6 +5,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from stillbench.figures.style import GREY, INK, PETROL, SHADE, time_unit, with_halo
+from stillbench.foundation.arrays import FloatArray
 from stillbench.foundation.units import parse_unit
 
 if TYPE_CHECKING:
@@ -38,7 +39,8 @@ def draw_timeline(axes: "Axes", channel: "ChannelResult") -> None:
     if abs(middle) > 200.0 * spread:
         offset = float(f"{middle:.6g}")
     low, mean, high = low - offset, mean - offset, high - offset
-    gap = np.flatnonzero(np.diff(timeline.time) > 3.0 * np.median(np.diff(timeline.time))) if time.size > 2 else []  # noqa: PLR2004
+    steps = np.diff(timeline.time)
+    gap = np.flatnonzero(steps > 3.0 * np.median(steps))
     for part in np.split(np.arange(time.size), np.asarray(gap, dtype=int) + 1):
         axes.fill_between(time[part], low[part], high[part], color=PETROL, alpha=0.22, linewidth=0, rasterized=False)
         axes.plot(time[part], mean[part], color=PETROL, linewidth=0.9)
@@ -55,7 +57,13 @@ def draw_timeline(axes: "Axes", channel: "ChannelResult") -> None:
         if right - left > WIDE_SHARE * span:
             axes.axvspan(left, right, color=SHADE, linewidth=0, zorder=0)
             axes.text(
-                (left + right) / 2, top, finding.kind.replace("_", " "), color=GREY, fontsize=7, ha="center", va="bottom"
+                (left + right) / 2,
+                top,
+                finding.kind.replace("_", " "),
+                color=GREY,
+                fontsize=7,
+                ha="center",
+                va="bottom",
             )
         else:
             axes.plot([left], [top], marker="v", color=INK, markersize=4, clip_on=False, linestyle="none")
@@ -66,16 +74,26 @@ def draw_timeline(axes: "Axes", channel: "ChannelResult") -> None:
     axes.set_xlabel(f"time / {name}")
     if (np.max(high) > top) or (np.min(low) < bottom):
         told = axes.text(
-            0.995, 0.03, "extremes reach beyond the figure", transform=axes.transAxes, ha="right", color=GREY, fontsize=7
+            0.995,
+            0.03,
+            "extremes reach beyond the figure",
+            transform=axes.transAxes,
+            ha="right",
+            color=GREY,
+            fontsize=7,
         )
         with_halo(told, 1)
     axes.margins(x=0)
 
 
-def _limits(low: np.ndarray, mean: np.ndarray, high: np.ndarray) -> tuple[float, float]:  # type: ignore[type-arg]
+def _limits(low: FloatArray, mean: FloatArray, high: FloatArray) -> tuple[float, float]:
     """Limits that hold all of the log but for a few extremes."""
     spread = float(np.quantile(high - low, 0.5))
-    bottom = max(float(low.min()), float(np.quantile(low, 0.02)) - OUTLIER_ROOM / 2 * spread, float(mean.min()) - 3 * spread)
-    top = min(float(high.max()), float(np.quantile(high, 0.98)) + OUTLIER_ROOM / 2 * spread, float(mean.max()) + 3 * spread)
+    bottom = max(
+        float(low.min()), float(np.quantile(low, 0.02)) - OUTLIER_ROOM / 2 * spread, float(mean.min()) - 3 * spread
+    )
+    top = min(
+        float(high.max()), float(np.quantile(high, 0.98)) + OUTLIER_ROOM / 2 * spread, float(mean.max()) + 3 * spread
+    )
     room = 0.06 * (top - bottom) or 1.0
     return bottom - room, top + room

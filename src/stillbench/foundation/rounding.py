@@ -2,6 +2,10 @@
 
 import math
 
+MOST_DECIMALS = 7
+MOST_ZEROS = 5
+"""Beyond, a number is written with an exponent."""
+
 
 def decimals_for(uncertainty: float, digits: int = 2) -> int:
     """Return the number of decimals (negative left of the point) that keeps ``digits`` digits of ``uncertainty``."""
@@ -17,7 +21,7 @@ def fixed(value: float, decimals: int) -> str:
     rounded = round(value, decimals)
     if rounded == 0:
         rounded = 0.0  # no minus sign on a zero
-    if decimals > 7 or (decimals < -5 and rounded != 0):
+    if decimals > MOST_DECIMALS or (decimals < -MOST_ZEROS and rounded != 0):
         magnitude = math.floor(math.log10(abs(rounded))) if rounded else 0
         return f"{rounded:.{max(0, decimals + magnitude)}e}"
     return f"{rounded:.{max(0, decimals)}f}"

@@ -316,10 +316,12 @@ def _write(factors: Factors) -> str:
             word = f"sqrt({name})"
         else:
             word = f"{name}^{float(size):g}"
-        if power > 0:
-            text = f"{text}*{word}" if text else word
-        else:
+        if power < 0:
             text = f"{text or '1'}/{word}"
+        elif text:
+            text += f"*{word}"
+        else:
+            text = word
     return text or "1"
 
 

@@ -217,9 +217,7 @@ def _ramp_term(
     )
 
 
-def _observable(
-    terms: Mapping[str, NoiseTerm], record: Record, findings: Sequence[Finding]
-) -> dict[str, NoiseTerm]:
+def _observable(terms: Mapping[str, NoiseTerm], record: Record, findings: Sequence[Finding]) -> dict[str, NoiseTerm]:
     """Take the figures off terms that this log cannot show."""
     checked = dict(terms)
 
@@ -293,7 +291,12 @@ def _findings(band: Band, goodness: float, record: Record, quantity: Quantity) -
         corner = CORNER_OVER_TOP * top
         findings.append(
             Finding(
-                "low_pass" if drooping else "poor_fit", None, None, top, "Hz", excluded=True,
+                "low_pass" if drooping else "poor_fit",
+                None,
+                None,
+                top,
+                "Hz",
+                excluded=True,
                 because=(
                     f"the spectrum falls towards the top of the band (score {band.droop:.1f}): a low-pass in the sensor,"
                     f" corner about {corner:.2g} Hz, shape not fitted"
@@ -307,7 +310,12 @@ def _findings(band: Band, goodness: float, record: Record, quantity: Quantity) -
     if goodness > POOR_FIT or not band.fits:
         findings.append(
             Finding(
-                "poor_fit", None, None, goodness, "standard deviations", excluded=False,
+                "poor_fit",
+                None,
+                None,
+                goodness,
+                "standard deviations",
+                excluded=False,
                 because=f"the sum of the terms does not explain the spectrum (goodness of fit {goodness:.1f})",
                 disposition="the terms are the best of their kind, their intervals are not to be relied on; look at the"
                 " residuals for a line, a bump or a drift",
@@ -318,7 +326,12 @@ def _findings(band: Band, goodness: float, record: Record, quantity: Quantity) -
         name = quantity.terms["flicker"].replace("_", " ")
         findings.append(
             Finding(
-                "short_record", None, None, float(longest), "samples", excluded=False,
+                "short_record",
+                None,
+                None,
+                float(longest),
+                "samples",
+                excluded=False,
                 because=f"the longest run has {longest} samples",
                 disposition=f"only the white noise is given; {name} and slower terms are not observable",
             )

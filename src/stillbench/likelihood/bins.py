@@ -10,7 +10,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from stillbench.foundation.arrays import FloatArray, IntArray
+from stillbench.foundation.arrays import BoolArray, FloatArray, IntArray
 from stillbench.terms.base import Fluctuation, MeanShape
 
 SINGLES = 32
@@ -63,7 +63,7 @@ class BinnedPowers:
         """Return the bins up to ``frequency`` (cycles per sample)."""
         return self.chosen(self.frequency <= frequency)
 
-    def chosen(self, which: FloatArray | np.ndarray) -> "BinnedPowers":  # type: ignore[type-arg]
+    def chosen(self, which: BoolArray) -> "BinnedPowers":
         """Return some of the bins."""
         return BinnedPowers(
             self.frequency[which],

@@ -43,7 +43,7 @@ class FittedModel:
 
     def amplitude(self, weights: FloatArray) -> float:
         """Return sqrt(weights @ theta) at the maximum."""
-        return float(np.sqrt(max(0.0, weights @ self.fit.theta)))
+        return float(np.sqrt(np.maximum(0.0, weights @ self.fit.theta)))
 
     def limits(self, weights: FloatArray, threshold: float) -> tuple[float, float]:
         """Return the profile-likelihood interval of sqrt(weights @ theta)."""
@@ -97,7 +97,7 @@ class FittedModel:
 
         def log_density(amplitudes: FloatArray) -> FloatArray:
             spectrum = amplitudes**2 @ bins.basis.T
-            inside = (amplitudes >= 0).all(axis=1) & (spectrum > 0).all(axis=1)
+            inside = np.asarray((amplitudes >= 0).all(axis=1) & (spectrum > 0).all(axis=1))
             safe = np.where(inside[:, None], spectrum, 1.0)
             value = -0.5 * (np.log(safe) + power / safe) @ bins.dof
             value += np.log(np.where(amplitudes > 0, amplitudes, np.finfo(float).tiny)) @ lift

@@ -51,7 +51,7 @@ def profile_limits(
     ----------
     W. Q. Meeker and L. A. Escobar, Am. Stat. 49 (1995) 48.
     """
-    estimate = float(np.sqrt(max(0.0, weights @ best.theta)))
+    estimate = float(np.sqrt(np.maximum(0.0, weights @ best.theta)))
 
     def rise(amplitude: float) -> float:
         held = Constraint(weights, amplitude**2)
@@ -60,7 +60,7 @@ def profile_limits(
 
     # A first guess of the scale from the curvature at the maximum.
     covariance = np.linalg.pinv(best.information)
-    spread = float(np.sqrt(max(0.0, weights @ covariance @ weights)))
+    spread = float(np.sqrt(np.maximum(0.0, weights @ covariance @ weights)))
     width = spread / (2.0 * estimate) if estimate > 0 else 0.0
     if not 0 < width < estimate:
         width = max(np.sqrt(spread), estimate)

@@ -69,6 +69,6 @@ def solve_nonnegative(
 
 def _solve(matrix: FloatArray, right: FloatArray) -> FloatArray:
     try:
-        return np.linalg.solve(matrix, right)
+        return np.asarray(np.linalg.solve(matrix, right), dtype=np.float64)
     except np.linalg.LinAlgError:
-        return np.linalg.lstsq(matrix, right, rcond=None)[0]
+        return np.asarray(np.linalg.lstsq(matrix, right, rcond=None)[0], dtype=np.float64)

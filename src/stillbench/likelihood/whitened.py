@@ -25,7 +25,9 @@ def whitened_kurtosis(values: FloatArray, theta: Mapping[str, float]) -> float:
     part = values[:LONGEST]
     transform = cosine_transform(part)
     k = np.arange(1, part.size, dtype=float)
-    spectrum = sum((square * BY_ROLE[role].cosine_power(k, part.size) for role, square in theta.items()), np.zeros(k.size))
+    spectrum = sum(
+        (square * BY_ROLE[role].cosine_power(k, part.size) for role, square in theta.items()), np.zeros(k.size)
+    )
     if not np.all(spectrum > 0):
         return 3.0
     white = fft.idct(np.concatenate([[0.0], transform / np.sqrt(spectrum)]), type=2, norm="ortho")

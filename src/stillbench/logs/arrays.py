@@ -19,7 +19,7 @@ MOST_CHANNELS = 64
 class ArrayTable(Table):
     """Named columns already in memory or mapped."""
 
-    def __init__(self, columns: dict[str, np.ndarray], format_: str, *, has_heads: bool) -> None:  # type: ignore[type-arg]
+    def __init__(self, columns: dict[str, np.ndarray], format_: str, *, has_heads: bool) -> None:
         super().__init__(list(columns), format_, has_heads=has_heads)
         self._columns = list(columns.values())
 
@@ -41,7 +41,7 @@ class ArrayTable(Table):
         return str(self._columns[index][0])
 
 
-def columns_of(array: np.ndarray, name: str, prefix: str = "") -> dict[str, np.ndarray]:  # type: ignore[type-arg]
+def columns_of(array: np.ndarray, name: str, prefix: str = "") -> dict[str, np.ndarray]:
     """Split an array into columns: structured fields, one dimension, or rows of samples.
 
     Raises
@@ -60,7 +60,7 @@ def columns_of(array: np.ndarray, name: str, prefix: str = "") -> dict[str, np.n
     raise LogError(f"{name!r} holds an array of shape {array.shape}", "one or two dimensions")
 
 
-def _load(contents: Contents) -> dict[str, np.ndarray]:  # type: ignore[type-arg]
+def _load(contents: Contents) -> dict[str, np.ndarray]:
     try:
         if bytes(contents.data[:6]) == NPY_MAGIC:
             _check_declared(contents.data[:], contents.name)
@@ -75,7 +75,7 @@ def _load(contents: Contents) -> dict[str, np.ndarray]:  # type: ignore[type-arg
                         f"{member.filename!r} in {contents.name!r} expands {ratio:.0f} times",
                         f"at most {LARGEST_RATIO} times",
                     )
-        columns: dict[str, np.ndarray] = {}  # type: ignore[type-arg]
+        columns: dict[str, np.ndarray] = {}
         with np.load(io.BytesIO(contents.data), allow_pickle=False) as bundle:
             for key in bundle.files:
                 columns |= columns_of(bundle[key], contents.name, prefix=f"{key}.")

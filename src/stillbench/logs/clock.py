@@ -76,7 +76,14 @@ def audit_clock(log: SensorLog) -> Grid:
         index = np.arange(rows)
         zeros = np.zeros(rows, dtype=np.int64)
         return Grid(
-            interval, np.ones(rows, dtype=bool), index, zeros, index * interval, "declared rate", 0.0, ()
+            interval,
+            np.ones(rows, dtype=bool),
+            index,
+            zeros,
+            index.astype(np.float64) * interval,
+            "declared rate",
+            0.0,
+            (),
         )
     return _audit_stamps(log.stamps, log.rate)
 
@@ -85,7 +92,9 @@ def _audit_stamps(stamps: Stamps, rate: float | None) -> Grid:
     findings: list[Finding] = []
     steps = np.diff(stamps.seconds)
     if steps.size < FEWEST_STAMPS or not (steps != 0).any():
-        raise ClockError(f"the stamps in {stamps.column!r} do not move", "stamps that rise", "use --time none --rate HZ")
+        raise ClockError(
+            f"the stamps in {stamps.column!r} do not move", "stamps that rise", "use --time none --rate HZ"
+        )
     if np.count_nonzero(steps < 0) > BACKWARD_SHARE * steps.size:
         raise ClockError(
             f"the stamps in {stamps.column!r} run backwards in {np.count_nonzero(steps < 0)} of {steps.size} steps",
@@ -100,7 +109,7 @@ def _audit_stamps(stamps: Stamps, rate: float | None) -> Grid:
     steps = np.diff(seconds)
     kept = np.ones(seconds.size, dtype=bool)
     repeated = np.append(False, steps == 0)
-    coarse = np.count_nonzero(repeated) > COARSE_SHARE * steps.size
+    coarse = bool(np.count_nonzero(repeated) > COARSE_SHARE * steps.size)
     if repeated.any() and not coarse:
         kept = ~repeated
         where = seconds[repeated]
@@ -128,7 +137,7 @@ def _take_out_shifts(seconds: FloatArray, origin: float) -> list[Finding]:
     """Undo jumps of a local clock by whole half hours (daylight saving, a changed zone), in place."""
     steps = np.diff(seconds)
     usual = float(np.median(steps[steps > 0]))
-    findings = []
+    findings: list[Finding] = []
     for i in np.flatnonzero((steps < 0) | (np.abs(steps - 3600.0) <= usual + 2.0)):
         step = float(steps[i])
         shift = np.rint((step - usual) / SHIFT_UNIT) * SHIFT_UNIT
@@ -160,7 +169,7 @@ def _split_backward(seconds: FloatArray, segment: IntArray) -> list[Finding]:
     """Start a new segment where the stamps fall back by an interval or more, in place."""
     steps = np.diff(seconds)
     usual = float(np.median(steps[steps > 0]))
-    findings = []
+    findings: list[Finding] = []
     back = np.flatnonzero(steps <= -usual)
     for i in back:
         fall = float(steps[i])
@@ -182,7 +191,12 @@ def _split_backward(seconds: FloatArray, segment: IntArray) -> list[Finding]:
     if back.size > LISTED_STEPS:
         findings.append(
             Finding(
-                "backward_stamps", None, None, float(back.size), "steps", excluded=False,
+                "backward_stamps",
+                None,
+                None,
+                float(back.size),
+                "steps",
+                excluded=False,
                 because=f"{back.size} backward steps in all; the first {LISTED_STEPS} are listed",
                 disposition="the record is split at each",
             )
@@ -259,7 +273,7 @@ def _place_by_row(seconds: FloatArray, segment: IntArray, kept: BoolArray) -> tu
 
 
 def _jitter(seconds: FloatArray, index: IntArray, segment: IntArray, kept: BoolArray, interval: float) -> float:
-    """Standard deviation of the stamps about the even grid, robust, s."""
+    """Return the standard deviation of the stamps about the even grid, robust, s."""
     t, k, s = seconds[kept], index[kept], segment[kept]
     group = np.append(0, np.cumsum((np.diff(s) != 0) | (np.diff(k) > GAP_INTERVALS)))
     starts = np.flatnonzero(np.append(True, np.diff(group) != 0))
@@ -272,13 +286,23 @@ def _jitter(seconds: FloatArray, index: IntArray, segment: IntArray, kept: BoolA
 def _uneven(stamps: Stamps, interval: float, jitter: float, *, coarse: bool, steps: FloatArray) -> Finding:
     if coarse:
         return Finding(
-            "stamp_resolution", None, None, stamps.resolution, "s", excluded=False,
+            "stamp_resolution",
+            None,
+            None,
+            stamps.resolution,
+            "s",
+            excluded=False,
             because=f"the stamps are written to {stamps.resolution:g} s, coarser than the interval of {interval:.6g} s",
             disposition="rows are taken as even; single missing rows cannot be seen",
         )
     usual = float(np.median(steps[steps > 0]))
     return Finding(
-        "clock_jitter", None, None, jitter, "s", excluded=False,
+        "clock_jitter",
+        None,
+        None,
+        jitter,
+        "s",
+        excluded=False,
         because=f"the stamps are uneven: the usual step is {usual:.4g} s though rows come every {interval:.6g} s on the"
         " average (bursts, or stamps of the host)",
         disposition="the sensor's own clock is taken as even; single missing rows cannot be seen",
@@ -288,11 +312,16 @@ def _uneven(stamps: Stamps, interval: float, jitter: float, *, coarse: bool, ste
 def _rate_findings(
     seconds: FloatArray, index: IntArray, segment: IntArray, kept: BoolArray, interval: float, rate: float | None
 ) -> list[Finding]:
-    findings = []
+    findings: list[Finding] = []
     if rate is not None and abs(rate * interval - 1.0) > MISMATCH:
         findings.append(
             Finding(
-                "rate_mismatch", None, None, 1.0 / interval, "Hz", excluded=False,
+                "rate_mismatch",
+                None,
+                None,
+                1.0 / interval,
+                "Hz",
+                excluded=False,
                 because=f"the stamps say {1.0 / interval:.6g} Hz, the declared rate is {rate:.6g} Hz",
                 disposition="the stamps are used",
             )
@@ -305,7 +334,12 @@ def _rate_findings(
         if first > 0 and abs(second / first - 1.0) > BEND:
             findings.append(
                 Finding(
-                    "clock_jitter", None, None, 100.0 * (second / first - 1.0), "%", excluded=False,
+                    "clock_jitter",
+                    None,
+                    None,
+                    100.0 * (second / first - 1.0),
+                    "%",
+                    excluded=False,
                     because=f"the sampling interval changes from {first:.6g} s to {second:.6g} s between the halves",
                     disposition="analysed at the mean interval; averaging times are wrong by up to half of that",
                 )

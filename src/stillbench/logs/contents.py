@@ -132,7 +132,7 @@ def _check_expansion(expanded: int, compressed: int, name: str) -> None:
         )
 
 
-def _expand(stream: IO[bytes], name: str, compressed: int) -> bytes:
+def _expand(stream: IO[bytes] | gzip.GzipFile, name: str, compressed: int) -> bytes:
     parts: list[bytes] = []
     expanded = 0
     while chunk := stream.read(CHUNK):

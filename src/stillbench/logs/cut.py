@@ -1,13 +1,15 @@
 """cut_record: one channel of a log on its even grid, in SI, between the instants that are wanted."""
 
+import itertools
 from collections.abc import Sequence
 
 import numpy as np
 
+from stillbench.foundation.arrays import BoolArray
 from stillbench.foundation.errors import NothingToMeasureError, RecordTooShortError, UsageError
 from stillbench.logs.clock import Grid, audit_clock
 from stillbench.logs.front_end import convert
-from stillbench.logs.runs import SHORTEST_RUN, build_runs
+from stillbench.logs.runs import SHORTEST_RUN, build_runs, hole_limit
 from stillbench.logs.spans import Instants, within
 from stillbench.vocabulary.finding import Finding
 from stillbench.vocabulary.log_sheet import LogSheet
@@ -75,7 +77,12 @@ def cut_record(
         where = grid.seconds[lost]
         findings.append(
             Finding(
-                "not_finite", float(where[0]), float(where[-1]), float(where.size), "samples", excluded=True,
+                "not_finite",
+                float(where[0]),
+                float(where[-1]),
+                float(where.size),
+                "samples",
+                excluded=True,
                 because=f"{where.size} cells are empty, NaN or infinite",
                 disposition="treated as missing samples",
             )
@@ -86,13 +93,12 @@ def cut_record(
         grid.index[use],
         grid.segment[use],
         grid.seconds[use],
-        grid.sample_interval,
     )
     if not runs:
         raise RecordTooShortError(int(np.count_nonzero(use)), SHORTEST_RUN, "any estimate")
     findings += _gap_findings(grid, wanted, dropped)
     spans = tuple((run.start, run.start + run.n_samples * grid.sample_interval) for run in runs)
-    gaps = [b[0] - a[1] for a, b in zip(spans[:-1], spans[1:], strict=True)]
+    gaps = [after[0] - before[1] for before, after in itertools.pairwise(spans)]
     absent = _absent(grid, wanted)
     clock = Clock(grid.source, grid.jitter, max([0.0, *gaps]), absent, spans)
     return Record(
@@ -113,7 +119,7 @@ def cut_record(
 
 def _chosen(
     log: SensorLog, grid: Grid, start: str | None, stop: str | None, exclude: Sequence[str], findings: list[Finding]
-) -> np.ndarray:  # type: ignore[type-arg]
+) -> BoolArray:
     instants = Instants(grid.seconds, log.stamps)
     first = instants.instant(start) if start is not None else None
     last = instants.instant(stop) if stop is not None else None
@@ -132,7 +138,12 @@ def _chosen(
             count = int(np.count_nonzero(within(grid.seconds, left, right)))
             findings.append(
                 Finding(
-                    "gap", left, right, float(count), "rows", excluded=True,
+                    "gap",
+                    left,
+                    right,
+                    float(count),
+                    "rows",
+                    excluded=True,
                     because=f"left out on request ({name} {said})",
                     disposition="chosen by the user",
                 )
@@ -143,7 +154,12 @@ def _chosen(
         wanted &= ~inside
         findings.append(
             Finding(
-                "gap", left, right, float(np.count_nonzero(inside)), "rows", excluded=True,
+                "gap",
+                left,
+                right,
+                float(np.count_nonzero(inside)),
+                "rows",
+                excluded=True,
                 because=f"left out on request (--exclude {text})",
                 disposition="chosen by the user",
             )
@@ -151,7 +167,7 @@ def _chosen(
     return wanted
 
 
-def _absent(grid: Grid, wanted: np.ndarray) -> int:  # type: ignore[type-arg]
+def _absent(grid: Grid, wanted: BoolArray) -> int:
     """Grid places without a row between the first and last row wanted, within segments."""
     rows = np.flatnonzero(grid.kept)
     rows = rows[(rows >= np.argmax(wanted)) & (rows <= wanted.size - 1 - np.argmax(wanted[::-1]))]
@@ -160,10 +176,8 @@ def _absent(grid: Grid, wanted: np.ndarray) -> int:  # type: ignore[type-arg]
     return int(np.sum((steps - 1)[inside & (steps > 1)]))
 
 
-def _gap_findings(grid: Grid, wanted: np.ndarray, dropped: int) -> list[Finding]:  # type: ignore[type-arg]
+def _gap_findings(grid: Grid, wanted: BoolArray, dropped: int) -> list[Finding]:
     """Gaps and holes that are in the log itself, not those that the user made."""
-    from stillbench.logs.runs import hole_limit  # noqa: PLC0415
-
     rows = np.flatnonzero(grid.kept)
     rows = rows[(rows >= np.argmax(wanted)) & (rows <= wanted.size - 1 - np.argmax(wanted[::-1]))]
     steps = np.diff(grid.index[rows]) - 1
@@ -191,7 +205,12 @@ def _gap_findings(grid: Grid, wanted: np.ndarray, dropped: int) -> list[Finding]
         right = float(grid.seconds[rows[i + 1]])
         findings.append(
             Finding(
-                "gap", left, right, right - left, "s", excluded=False,
+                "gap",
+                left,
+                right,
+                right - left,
+                "s",
+                excluded=False,
                 because=f"no rows for {right - left:.6g} s ({int(holes[i])} samples)",
                 disposition="the record is split there; no average crosses the gap",
             )
@@ -199,7 +218,12 @@ def _gap_findings(grid: Grid, wanted: np.ndarray, dropped: int) -> list[Finding]
     if gaps.size > LISTED_GAPS:
         findings.append(
             Finding(
-                "gap", None, None, float(gaps.size), "gaps", excluded=False,
+                "gap",
+                None,
+                None,
+                float(gaps.size),
+                "gaps",
+                excluded=False,
                 because=f"{gaps.size} gaps in all; the {LISTED_GAPS} longest are listed",
                 disposition="the record is split at each",
             )
@@ -207,7 +231,12 @@ def _gap_findings(grid: Grid, wanted: np.ndarray, dropped: int) -> list[Finding]
     if dropped:
         findings.append(
             Finding(
-                "gap", None, None, float(dropped), "samples", excluded=True,
+                "gap",
+                None,
+                None,
+                float(dropped),
+                "samples",
+                excluded=True,
                 because=f"{dropped} samples stand in stretches shorter than {SHORTEST_RUN} between gaps",
                 disposition="left out",
             )

@@ -16,7 +16,6 @@ from stillbench.foundation.units import (
     NONE,
     RATE,
     RATIO,
-    TIME,
     VELOCITY,
     VOLTAGE,
     Dimension,
@@ -100,7 +99,12 @@ def convert(channel: Channel, front_end: FrontEnd | None, interval: float) -> Co
     if quantity in (q.VOLTAGE, q.COUNT):
         findings = (
             Finding(
-                "scale_factor_unknown", None, None, None, "", excluded=False,
+                "scale_factor_unknown",
+                None,
+                None,
+                None,
+                "",
+                excluded=False,
                 because=f"the log is in {channel.unit.text} and no scale factor is declared",
                 disposition=f"all results stay in {channel.unit.text}; they say nothing of a rate",
             ),
@@ -157,7 +161,12 @@ def _through_front_end(channel: Channel, front_end: FrontEnd) -> Conversion:
 def _uncertainty(text: str | None) -> tuple[float, tuple[Finding, ...]]:
     if text is None:
         finding = Finding(
-            "scale_factor_unknown", None, None, None, "", excluded=False,
+            "scale_factor_unknown",
+            None,
+            None,
+            None,
+            "",
+            excluded=False,
             because="the scale factor is declared without an uncertainty",
             disposition="intervals and verdicts do not contain it; declare scale_factor_uncertainty",
         )
@@ -171,9 +180,7 @@ def _uncertainty(text: str | None) -> tuple[float, tuple[Finding, ...]]:
     return relative, ()
 
 
-def _limits(
-    front_end: FrontEnd | None, unit: Unit, gain: float, shift: float
-) -> tuple[float, float] | None:
+def _limits(front_end: FrontEnd | None, unit: Unit, gain: float, shift: float) -> tuple[float, float] | None:
     """Lowest and highest reading of the converter, from ``'0 V to 5 V'`` or ``'+-10 V'``, in SI of the quantity."""
     if front_end is None or front_end.range is None:
         return None

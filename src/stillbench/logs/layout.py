@@ -71,9 +71,9 @@ def find_encoding(sample: bytes, name: str) -> str:
         return "utf-16"
     zeros_odd, zeros_even = sample[1::2].count(0), sample[0::2].count(0)
     half = max(1, len(sample) // 2)
-    if zeros_odd > 0.4 * half and zeros_even < 0.01 * half:  # noqa: PLR2004  ASCII in two bytes: every other is zero
+    if zeros_odd > 0.4 * half and zeros_even < 0.01 * half:
         return "utf-16-le"
-    if zeros_even > 0.4 * half and zeros_odd < 0.01 * half:  # noqa: PLR2004
+    if zeros_even > 0.4 * half and zeros_odd < 0.01 * half:
         return "utf-16-be"
     control = sum(sample.count(byte) for byte in range(32) if byte not in (9, 10, 12, 13))
     if b"\0" in sample or control > CONTROL_SHARE * len(sample):

@@ -217,8 +217,7 @@ def read_log(
         raise LogError(f"the log has {rows} rows", f"at least {FEWEST_ROWS}", "log for longer")
     kinds = {label: sheet.channel[label].kind if label in sheet.channel else "rate" for label, _ in chosen}
     made = tuple(
-        Channel(label, values, spoken[label], kinds[label])
-        for (label, _), values in zip(chosen, columns, strict=True)
+        Channel(label, values, spoken[label], kinds[label]) for (label, _), values in zip(chosen, columns, strict=True)
     )
     source = Source(source.name, source.bytes, source.sha256, rows, source.format)
     understood += table.remarks

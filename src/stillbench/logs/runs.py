@@ -1,5 +1,6 @@
 """Runs of a record: broken at long gaps, short holes carried as missing samples."""
 
+import itertools
 from collections.abc import Sequence
 from dataclasses import replace
 
@@ -29,7 +30,7 @@ def hole_limit(holes: IntArray, n_samples: int) -> int:
 
 
 def build_runs(
-    values: FloatArray, index: IntArray, segment: IntArray, seconds: FloatArray, interval: float
+    values: FloatArray, index: IntArray, segment: IntArray, seconds: FloatArray
 ) -> tuple[FloatArray, BoolArray, tuple[Run, ...], int]:
     """Lay rows out on the grid.
 
@@ -37,8 +38,6 @@ def build_runs(
     ----------
     values, index, segment, seconds : (rows,) arrays
         Finite values, their places, segments and times; only usable rows.
-    interval : float
-        s.
 
     Returns
     -------
@@ -57,7 +56,7 @@ def build_runs(
     bounds = np.concatenate([[0], breaks, [values.size]])
     parts, masks, runs = [], [], []
     position = dropped = 0
-    for first, last in zip(bounds[:-1], bounds[1:], strict=True):
+    for first, last in itertools.pairwise(bounds):
         if last - first < SHORTEST_RUN:
             dropped += int(last - first)
             continue
@@ -92,10 +91,10 @@ def regroup(record: Record, missing: BoolArray) -> Record:
         segment[run.first : run.last] = number
         seconds[run.first : run.last] = run.start + places * record.sample_interval
     use = ~missing
-    values, mask, runs, _ = build_runs(
-        record.values[use], index[use], segment[use], seconds[use], record.sample_interval
+    values, mask, runs, _ = build_runs(record.values[use], index[use], segment[use], seconds[use])
+    return replace(
+        record, values=values, missing=mask, runs=runs, clock=clock_of(record.clock, runs, record.sample_interval)
     )
-    return replace(record, values=values, missing=mask, runs=runs, clock=clock_of(record.clock, runs, record.sample_interval))
 
 
 def clock_of(clock: Clock, runs: Sequence[Run], interval: float) -> Clock:

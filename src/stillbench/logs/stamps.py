@@ -124,7 +124,9 @@ def _guess_unit(numbers: FloatArray, head: str) -> tuple[str, str]:
         else "s, ms, us or ns"
     )
     raise ClockError(
-        f"the unit of the time column {head!r} is not known", "--time-unit s, ms, us, ns, iso or unix", f"for comparison, {options}"
+        f"the unit of the time column {head!r} is not known",
+        "--time-unit s, ms, us, ns, iso or unix",
+        f"for comparison, {options}",
     )
 
 

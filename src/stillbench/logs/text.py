@@ -2,9 +2,9 @@
 
 import io
 import itertools
-import mmap
 import re
 from collections.abc import Iterator, Sequence
+from typing import TYPE_CHECKING
 
 import numpy as np
 
@@ -23,6 +23,9 @@ from stillbench.logs.layout import (
 )
 from stillbench.logs.table import Table
 from stillbench.vocabulary.log_sheet import LogSection
+
+if TYPE_CHECKING:
+    import mmap
 
 NULLS = ("", "nan", "NaN", "NAN", "-nan", "-NaN", "null", "NULL", "None", "NA", "N/A", "n/a", "#N/A", "-", "--")
 _BLANKS = re.compile(rb"[ \t]+")
@@ -84,7 +87,7 @@ class TextTable(Table):
             ) from error
 
     def _find_body(self) -> memoryview:
-        """The bytes from the first row of data on."""
+        """Return the bytes from the first row of data on."""
         offset = 0
         for _ in range(self.layout.body_line):
             end = self._bytes.find(b"\n", offset)
@@ -137,7 +140,7 @@ class TextTable(Table):
             self._numbered = True  # once more, so that the place of each is known
             return self._convert(indices, as_text=as_text)
         columns = [table.column(str(i)) for i in indices]
-        return self._with_holes(columns, true_misfits, kind) if true_misfits else columns
+        return self._with_holes(columns, true_misfits) if true_misfits else columns
 
     def _without_comments(self, indices: Sequence[int], *, as_text: bool) -> list[object]:
         self._body = memoryview(_COMMENT_LINES.sub(b"", bytes(self._body)))
@@ -145,7 +148,7 @@ class TextTable(Table):
         self.remarks.append("comment lines within the data were passed over")
         return self._convert(indices, as_text=as_text)
 
-    def _with_holes(self, columns: list[object], misfits: Sequence[tuple[int, str]], kind: object) -> list[object]:
+    def _with_holes(self, columns: list[object], misfits: Sequence[tuple[int, str]]) -> list[object]:
         """Give rows that do not fit an empty cell in their place, so that no time is lost; refuse when they are many."""
         import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
 

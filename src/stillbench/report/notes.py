@@ -21,7 +21,7 @@ def _joined(names: list[str]) -> str:
 
 
 def deviation_notes(channel: ChannelResult) -> list[Note]:
-    """Notes beside the Allan deviation."""
+    """Return notes beside the Allan deviation."""
     notes: list[Note] = []
     noise = channel.noise
     resolved = observed_terms(channel, RESOLVED)
@@ -36,8 +36,7 @@ def deviation_notes(channel: ChannelResult) -> list[Note]:
         notes.append(
             (
                 "The model does not explain this log.",
-                f"Goodness of fit {noise.goodness:.1f}, where 3 is already rare. Terms and intervals are not to be relied on;"
-                " look at the residuals.",
+                f"Goodness of fit {noise.goodness:.1f}, where 3 is already rare: terms and intervals are not to be relied on.",
             )
         )
     if ambiguous:
@@ -60,10 +59,17 @@ def deviation_notes(channel: ChannelResult) -> list[Note]:
     if blank:
         because = noise.terms[blank[0].replace(" ", "_")].because
         notes.append((f"{_joined(blank).capitalize()}:", f"not observable. {because[0].upper()}{because[1:]}."))
-    for finding in channel.findings:
-        if finding.kind in ("low_pass", "coarse_converter", "repeated_values"):
-            notes.append((f"{finding.kind.replace('_', ' ').capitalize()}.", f"{_sentence(finding.because)} {_sentence(finding.disposition)}"))
-    notes.append(("The last points", "of any such curve read low: at a third of the log typically by a seventh to a quarter. The band says by how much they may be off."))
+    notes.extend(
+        (_sentence(finding.kind.replace("_", " ")), f"{_sentence(finding.because)} {_sentence(finding.disposition)}")
+        for finding in channel.findings
+        if finding.kind in ("low_pass", "coarse_converter", "repeated_values")
+    )
+    notes.append(
+        (
+            "The last points",
+            "of any such curve read low: at a third of the log typically by a seventh to a quarter. The band says by how much they may be off.",
+        )
+    )
     return notes
 
 
@@ -83,7 +89,7 @@ def _lowest_point(channel: ChannelResult) -> str:
 
 
 def timeline_notes(channel: ChannelResult) -> list[Note]:
-    """Notes beside the log over time."""
+    """Return notes beside the log over time."""
     notes: list[Note] = []
     runs = len(channel.clock.runs)
     lead = share_text(channel.n_used, channel.n_samples)
@@ -106,7 +112,7 @@ def timeline_notes(channel: ChannelResult) -> list[Note]:
 
 
 def fit_notes(channel: ChannelResult) -> list[Note]:
-    """Notes beside residuals and spectrum."""
+    """Return notes beside residuals and spectrum."""
     goodness = channel.noise.goodness
     if goodness <= GOOD:
         word = "The model fits."
@@ -120,6 +126,16 @@ def fit_notes(channel: ChannelResult) -> list[Note]:
         ("Band used:", f"{significant(low, 2)} to {significant(high)} Hz."),
     ]
     if channel.noise.kurtosis > 3.2:  # noqa: PLR2004  visibly above a Gaussian's 3
-        notes.append(("Heavy tails:", f"kurtosis {channel.noise.kurtosis:.2f}; the interval of the white noise is widened for it."))
-    notes.append(("Under the model", "95 % of the residuals lie in the shaded strip. Neighbours that stray together show a line, a bump or a filter."))
+        notes.append(
+            (
+                "Heavy tails:",
+                f"kurtosis {channel.noise.kurtosis:.2f}; the interval of the white noise is widened for it.",
+            )
+        )
+    notes.append(
+        (
+            "Under the model",
+            "95 % of the residuals lie in the shaded strip. Neighbours that stray together show a line, a bump or a filter.",
+        )
+    )
     return notes

@@ -107,7 +107,9 @@ def specification_marks(verdicts: tuple[Verdict, ...], channel: ChannelResult) -
         role = role_of(name)
         if role is None or name not in channel.noise.terms:
             continue
-        at = {"white": 1.0, "walk": 3.0, "quantization": 3.0**0.5, "ramp": 2.0**0.5}.get(role, channel.curve.tau[-1] ** 0.5)
+        at = {"white": 1.0, "walk": 3.0, "quantization": 3.0**0.5, "ramp": 2.0**0.5}.get(
+            role, channel.curve.tau[-1] ** 0.5
+        )
         at = float(np.clip(at, channel.curve.tau[0] * 1.5, channel.curve.tau[-1] / 1.5))
         course = term_course(role, verdict.limit, np.array([at]), channel.sample_interval)
         marks.append((at, float(course[0]), f"limit {limit} ({words.split(' (')[0]})"))
@@ -129,10 +131,16 @@ def _figures(channel: ChannelResult, key: str, first: int) -> dict[str, _Figure]
     label = channel.label
     return {
         "deviation": _Figure(
-            _drawn(f"{key}-deviation", f"Allan deviation of {label}", 104, lambda axes: draw_deviation(axes, channel, labels, marks)),
+            _drawn(
+                f"{key}-deviation",
+                f"Allan deviation of {label}",
+                104,
+                lambda axes: draw_deviation(axes, channel, labels, marks),
+            ),
             first,
             f"Overlapping Allan deviation of {label} (circles) with its {percent} band, the fitted model (line) and its terms"
-            " (dashed, dotted)." + (" Short bars: limits of the specification at their averaging time." if marks else ""),
+            " (dashed, dotted)."
+            + (" Short bars: limits of the specification at their averaging time." if marks else ""),
             margin.deviation_notes(channel),
         ),
         "timeline": _Figure(
@@ -142,7 +150,9 @@ def _figures(channel: ChannelResult, key: str, first: int) -> dict[str, _Figure]
             margin.timeline_notes(channel),
         ),
         "residuals": _Figure(
-            _drawn(f"{key}-residuals", f"residuals of the fit of {label}", 48, lambda axes: draw_residuals(axes, channel)),
+            _drawn(
+                f"{key}-residuals", f"residuals of the fit of {label}", 48, lambda axes: draw_residuals(axes, channel)
+            ),
             first + 2,
             "Residuals of the fit: binned powers of the cosine transform over the model, as standard scores.",
             margin.fit_notes(channel),
@@ -160,12 +170,13 @@ def _figures(channel: ChannelResult, key: str, first: int) -> dict[str, _Figure]
 def _curve_table(channel: ChannelResult) -> list[tuple[str, ...]]:
     """Three points a decade of the curve, in the report unit."""
     curve, unit = channel.curve, parse_unit(channel.report_unit)
-    wanted = np.geomspace(curve.tau[0], curve.tau[-1], max(2, round(TABLE_PER_DECADE * np.log10(curve.tau[-1] / curve.tau[0])) + 1))
-    rows = []
+    wanted = np.geomspace(
+        curve.tau[0], curve.tau[-1], max(2, round(TABLE_PER_DECADE * np.log10(curve.tau[-1] / curve.tau[0])) + 1)
+    )
+    rows: list[tuple[str, ...]] = []
     for i in sorted({int(np.argmin(np.abs(np.log(curve.tau / at)))) for at in wanted}):
-        number = [curve.deviation[i] / unit.factor]
-        for column in (curve.lower, curve.upper, curve.model):
-            number.append(float("nan") if column is None else float(column[i]) / unit.factor)
+        columns = (curve.deviation, curve.lower, curve.upper, curve.model)
+        number = [float("nan") if column is None else float(column[i]) / unit.factor for column in columns]
         edf = "" if curve.edf is None else significant(float(curve.edf[i]))
         rows.append(
             (
@@ -190,14 +201,16 @@ def _timeline_table(channel: ChannelResult) -> list[tuple[str, ...]]:
         spread = float(timeline.maximum[part].max() - timeline.minimum[part].min()) / unit.factor
         decimals = max(0, 3 - int(np.floor(np.log10(spread)))) if spread > 0 else 6
         numbers = (timeline.minimum[part].min(), timeline.mean[part].mean(), timeline.maximum[part].max())
-        rows.append((instant_text(float(timeline.time[part[0]])), *(f"{float(n) / unit.factor:.{decimals}f}" for n in numbers)))
+        rows.append(
+            (instant_text(float(timeline.time[part[0]])), *(f"{float(n) / unit.factor:.{decimals}f}" for n in numbers))
+        )
     return rows
 
 
 def _spectrum_table(channel: ChannelResult) -> list[tuple[str, ...]]:
     bins, unit = channel.noise.bins, parse_unit(channel.report_unit)
     groups = np.floor(2.0 * np.log10(bins.frequency)).astype(int)
-    rows = []
+    rows: list[tuple[str, ...]] = []
     for group in np.unique(groups):
         part = groups == group
         dof = bins.dof[part]
@@ -277,11 +290,12 @@ def _flat(sections: Mapping[str, Mapping[str, Any]]) -> list[tuple[str, str]]:
 
 def _caution(result: Characterization) -> list[str]:
     sensor = str(result.identification.get("sensor", {}).get("kind", "")).lower()
-    cautions = [
+    general = (
         "These figures describe one log at rest. They are no release for guidance, navigation or any use in which an error can"
         " hurt someone: that needs tests under motion, temperature and vibration, and the practice of a qualified person under"
         " the codes that apply where it is used."
-    ]
+    )
+    cautions = [general]
     if any(word in sensor for word in ("wheel", "spin", "rotor")):
         cautions.append(
             "A spinning wheel stores energy and its excitation carries voltages that can injure: follow the maker's run-up and"
@@ -367,7 +381,9 @@ def render_report(result: Characterization) -> bytes:
 
     assets = resources.files("stillbench.report")
     loader = jinja2.FunctionLoader(lambda name: (assets / "templates" / name).read_text("utf-8"))
-    environment = jinja2.Environment(loader=loader, autoescape=True, trim_blocks=True, lstrip_blocks=True, undefined=jinja2.StrictUndefined)
+    environment = jinja2.Environment(
+        loader=loader, autoescape=True, trim_blocks=True, lstrip_blocks=True, undefined=jinja2.StrictUndefined
+    )
     environment.filters["figure"] = _markup
     per_channel = 4
     channels = [
@@ -383,7 +399,11 @@ def render_report(result: Characterization) -> bytes:
         identification=_flat(result.identification),
         source=result.source,
         provenance=result.provenance,
-        settings=[(key.replace("_", " "), _setting_text(value)) for key, value in result.provenance.settings.items() if value not in (None, "", (), [])],
+        settings=[
+            (key.replace("_", " "), _setting_text(value))
+            for key, value in result.provenance.settings.items()
+            if value not in (None, "", (), [])
+        ],
         cautions=_caution(result),
         blind_spots=BLIND_SPOTS,
         made_at=result.made_at,

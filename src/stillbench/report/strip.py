@@ -19,13 +19,19 @@ def strip(row: VerdictRow) -> str:
         words = f"found {row.found}, limit {row.limit} {row.unit}"
         left, right = (min(max(0.0, end * scale), END) for end in (row.lower, row.upper))
         if left < END:
-            parts.append(f'<rect x="{left:.1f}" y="{middle - 4}" width="{max(1.5, right - left):.1f}" height="8" class="bar"/>')
+            parts.append(
+                f'<rect x="{left:.1f}" y="{middle - 4}" width="{max(1.5, right - left):.1f}" height="8" class="bar"/>'
+            )
         at = row.value * scale
         if at <= END:
-            parts.append(f'<line x1="{at:.1f}" y1="{middle - 5.5}" x2="{at:.1f}" y2="{middle + 5.5}" class="estimate"/>')
+            parts.append(
+                f'<line x1="{at:.1f}" y1="{middle - 5.5}" x2="{at:.1f}" y2="{middle + 5.5}" class="estimate"/>'
+            )
         else:
             parts.append(f'<path d="M{END:.1f} {middle - 5} l6 5 l-6 5 z" class="arrow"/>')
-            parts.append(f'<text x="{END - 4:.1f}" y="{middle - 3}" text-anchor="end">{significant(row.value, 2)}</text>')
+            parts.append(
+                f'<text x="{END - 4:.1f}" y="{middle - 3}" text-anchor="end">{significant(row.value, 2)}</text>'
+            )
         if row.upper * scale > END and at <= END:
             parts.append(f'<path d="M{END:.1f} {middle - 5} l6 5 l-6 5 z" class="arrow"/>')
     parts.append(f'<line x1="{LIMIT_AT}" y1="{middle - 8.5}" x2="{LIMIT_AT}" y2="{middle + 8.5}" class="limit"/>')

@@ -149,7 +149,11 @@ def verdict_remark(verdict: Verdict) -> str:
     """Return the small print below a decision: probability, or the log that would decide."""
     if verdict.decision == UNDECIDED and verdict.deciding_length is not None:
         low, high = verdict.deciding_length
-        span = f"{duration_text(low)} to {duration_text(high)}" if high is not None else f"{duration_text(low)} or far more"
+        span = (
+            f"{duration_text(low)} to {duration_text(high)}"
+            if high is not None
+            else f"{duration_text(low)} or far more"
+        )
         return f"a log of {span} would decide"
     probability = verdict.conformance_probability
     if probability is None:
@@ -190,7 +194,9 @@ def share_text(used: int, offered: int) -> str:
 def bias_text(channel: ChannelResult) -> str:
     """Write the bias with its interval in the report unit, ASCII."""
     unit = parse_unit(channel.report_unit)
-    numbers = interval_text(*(number / unit.factor for number in (channel.bias.value, channel.bias.lower, channel.bias.upper)))
+    numbers = interval_text(
+        *(number / unit.factor for number in (channel.bias.value, channel.bias.lower, channel.bias.upper))
+    )
     return f"{numbers} {unit.text}"
 
 

@@ -68,7 +68,12 @@ def find_stuck(record: Record) -> Outcome:
         first, last = int(starts[i]), int(starts[i] + lengths[i]) - 1
         findings.append(
             Finding(
-                "stuck", float(times[first]), float(times[last]), float(lengths[i]), "samples", excluded=True,
+                "stuck",
+                float(times[first]),
+                float(times[last]),
+                float(lengths[i]),
+                "samples",
+                excluded=True,
                 because=f"{int(lengths[i])} equal values in a row; chance gives {threshold:.0f} once in a hundred logs",
                 disposition="left out",
             )
@@ -76,7 +81,12 @@ def find_stuck(record: Record) -> Outcome:
     if stuck.size > LISTED:
         findings.append(
             Finding(
-                "stuck", None, None, float(stuck.size), "stretches", excluded=True,
+                "stuck",
+                None,
+                None,
+                float(stuck.size),
+                "stretches",
+                excluded=True,
                 because=f"{stuck.size} stuck stretches in all; the {LISTED} longest are listed",
                 disposition="left out",
             )

@@ -26,7 +26,7 @@ def converter_step(values: FloatArray) -> float | None:
 
 
 def sample_noise(record: Record) -> float:
-    """Standard deviation of the noise of single samples, from differences of neighbours; Sheppard's correction off."""
+    """Return the standard deviation of single samples, from differences of neighbours; Sheppard's correction off."""
     squares = np.concatenate([np.diff(piece) ** 2 for piece in record.pieces()])
     return float(np.sqrt(np.nanmean(squares) / 2.0))
 
@@ -46,7 +46,12 @@ def check_converter(record: Record) -> Outcome:
         return nothing(record)
     refused = ratio < REFUSED
     finding = Finding(
-        "coarse_converter", None, None, ratio, "steps", excluded=False,
+        "coarse_converter",
+        None,
+        None,
+        ratio,
+        "steps",
+        excluded=False,
         because=f"the noise of single samples is {ratio:.2g} steps of the converter",
         disposition="the white noise is not resolved: no figure is given for it"
         if refused

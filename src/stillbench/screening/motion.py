@@ -4,7 +4,7 @@ import itertools
 
 import numpy as np
 
-from stillbench.foundation.arrays import FloatArray
+from stillbench.foundation.arrays import BoolArray, FloatArray
 from stillbench.foundation.errors import NothingToMeasureError
 from stillbench.logs.runs import sample_times
 from stillbench.screening.outcome import Outcome, nothing
@@ -108,7 +108,7 @@ def find_motion(record: Record) -> Outcome:
     return Outcome(tuple(findings), marked)
 
 
-def _close_short_rests(flags: np.ndarray) -> None:  # type: ignore[type-arg]
+def _close_short_rests(flags: BoolArray) -> None:
     """Between two motions a rest of a few blocks is handling too, in place."""
     moving = _stretches(flags)
     for (_, stop), (start, _) in itertools.pairwise(moving):
@@ -116,7 +116,7 @@ def _close_short_rests(flags: np.ndarray) -> None:  # type: ignore[type-arg]
             flags[stop:start] = True
 
 
-def _stretches(flags: np.ndarray) -> list[tuple[int, int]]:  # type: ignore[type-arg]
+def _stretches(flags: BoolArray) -> list[tuple[int, int]]:
     padded = np.concatenate([[False], flags, [False]])
     edges = np.flatnonzero(padded[1:] != padded[:-1])
     return list(zip(edges[::2].tolist(), edges[1::2].tolist(), strict=True))

@@ -37,14 +37,14 @@ def mean_hold(values: FloatArray) -> tuple[float, float, float]:
         One run; NaN counts as unequal and is left out of the shares.
     """
     pairs = ~(np.isnan(values[1:]) | np.isnan(values[:-1]))
-    changes = np.count_nonzero((values[1:] != values[:-1]) & pairs) / max(1, np.count_nonzero(pairs))
+    changes = int(np.count_nonzero((values[1:] != values[:-1]) & pairs)) / max(1, int(np.count_nonzero(pairs)))
     ties = float(np.mean([np.mean(values[lag:] == values[:-lag]) for lag in FAR_LAGS if lag < values.size // 2]))
     score = (1.0 - ties - changes) / np.sqrt(2.0 * ties * (1.0 - ties) / values.size + 1e-10)
     return (1.0 - ties) / changes if changes > 0 else np.inf, float(score), ties
 
 
 def _phasor(events: IntArray, frequencies: FloatArray) -> FloatArray:
-    return np.abs(np.exp(2j * np.pi * np.outer(frequencies, events)).sum(axis=1))
+    return np.asarray(np.abs(np.exp(2j * np.pi * np.outer(frequencies, events)).sum(axis=1)))
 
 
 def hold_events(values: FloatArray, hold: float) -> IntArray:
@@ -120,7 +120,12 @@ def undo_repeats(record: Record) -> tuple[Record, tuple[Finding, ...]]:
             return record, ()
         return record, (
             Finding(
-                "repeated_values", None, None, hold, "samples", excluded=False,
+                "repeated_values",
+                None,
+                None,
+                hold,
+                "samples",
+                excluded=False,
                 because=f"one value in {hold:.3g} is new: values repeat, but not at a steady rate",
                 disposition="not corrected: deviations below some ten refresh periods read low",
             ),
@@ -145,7 +150,12 @@ def undo_repeats(record: Record) -> tuple[Record, tuple[Finding, ...]]:
         position += places.size
     interval = record.sample_interval * period
     finding = Finding(
-        "repeated_values", None, None, 1.0 / interval, "Hz", excluded=True,
+        "repeated_values",
+        None,
+        None,
+        1.0 / interval,
+        "Hz",
+        excluded=True,
         because=f"each value is logged {period:.6g} times: the log runs at {1.0 / record.sample_interval:.6g} Hz, the"
         f" sensor refreshes at {1.0 / interval:.6g} Hz",
         disposition="analysed at the refresh rate, one sample for each value",

@@ -51,14 +51,21 @@ def find_saturation(record: Record) -> Outcome:
         if _piled_up(ordered, how_often.astype(float), values.size, sigma):
             at = values == sign * ordered[-1]
             findings.append(
-                _finding(times[at], int(how_often[-1]), values.size, f"at the {side} value, more than its tail explains")
+                _finding(
+                    times[at], int(how_often[-1]), values.size, f"at the {side} value, more than its tail explains"
+                )
             )
     return Outcome(tuple(findings), nothing(record).marked) if findings else nothing(record)
 
 
 def _finding(times: FloatArray, count: int, n_samples: int, where: str) -> Finding:
     return Finding(
-        "saturation", float(times[0]), float(times[-1]), 100.0 * count / n_samples, "%", excluded=False,
+        "saturation",
+        float(times[0]),
+        float(times[-1]),
+        100.0 * count / n_samples,
+        "%",
+        excluded=False,
         because=f"{count} samples lie {where}",
         disposition="left in: the noise is clipped there, white noise reads low and the mean is drawn inwards",
     )

@@ -1,8 +1,10 @@
 """Isolated gross spikes: single samples far outside the noise."""
 
+import itertools
+
 import numpy as np
 
-from stillbench.foundation.arrays import FloatArray, IntArray
+from stillbench.foundation.arrays import BoolArray, FloatArray, IntArray
 from stillbench.logs.runs import sample_times
 from stillbench.screening.outcome import Outcome, nothing
 from stillbench.vocabulary.finding import Finding
@@ -29,7 +31,7 @@ def level_of(values: FloatArray) -> FloatArray:
     if (np.diff(edges) == block).all():
         medians = np.nanmedian(values.reshape(count, block), axis=1)
     else:
-        medians = np.array([np.nanmedian(values[a:b]) for a, b in zip(edges[:-1], edges[1:], strict=True)])
+        medians = np.array([np.nanmedian(values[a:b]) for a, b in itertools.pairwise(edges)])
     return np.interp(np.arange(values.size), (edges[:-1] + edges[1:] - 1) / 2.0, medians)
 
 
@@ -92,7 +94,12 @@ def find_spikes(record: Record) -> Outcome:
     shoulder = int(np.count_nonzero(np.abs(contrast) > SHOULDER * threshold * local)) - count
     if count > LARGEST_SHARE * record.values.size or shoulder > max(3, count):
         finding = Finding(
-            "heavy_tails", None, None, float(count), "samples", excluded=False,
+            "heavy_tails",
+            None,
+            None,
+            float(count),
+            "samples",
+            excluded=False,
             because=f"{count} samples lie beyond {threshold:.1f} standard deviations and {shoulder} just below: the noise"
             " itself has heavy tails",
             disposition="nothing is left out; the interval of the white noise is widened by the kurtosis",
@@ -109,7 +116,11 @@ def find_spikes(record: Record) -> Outcome:
         findings.append(
             Finding(
                 "spike" if last - first <= LONGEST_SPIKE else "burst",
-                float(times[first]), float(times[last - 1]), float(deviations), "standard deviations", excluded=True,
+                float(times[first]),
+                float(times[last - 1]),
+                float(deviations),
+                "standard deviations",
+                excluded=True,
                 because=f"{many} {deviations:+.1f} standard deviations off; chance reaches {threshold - MARGIN:.1f}"
                 " once in a thousand logs",
                 disposition="left out, treated as missing",
@@ -118,7 +129,12 @@ def find_spikes(record: Record) -> Outcome:
     if len(groups) > LISTED:
         findings.append(
             Finding(
-                "spike", float(times[groups[0][0]]), float(times[groups[-1][1] - 1]), float(count), "samples", excluded=True,
+                "spike",
+                float(times[groups[0][0]]),
+                float(times[groups[-1][1] - 1]),
+                float(count),
+                "samples",
+                excluded=True,
                 because=f"{len(groups)} spikes and bursts in all, {count} samples; the {LISTED} largest are listed",
                 disposition="left out, treated as missing",
             )
@@ -126,7 +142,7 @@ def find_spikes(record: Record) -> Outcome:
     return Outcome(tuple(findings), marked)
 
 
-def _groups(marked: np.ndarray) -> list[tuple[int, int]]:  # type: ignore[type-arg]
+def _groups(marked: BoolArray) -> list[tuple[int, int]]:
     """Stretches of marked samples, those next to each other taken together."""
     padded = np.concatenate([[False], marked, [False]])
     edges = np.flatnonzero(padded[1:] != padded[:-1])

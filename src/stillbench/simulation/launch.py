@@ -178,12 +178,12 @@ class Bench:
 
 
 def _as_voltage(rate: FloatArray) -> FloatArray:
-    """The demodulated rate as a 16-bit converter of 0 V to 5 V reads it."""
+    """Read the demodulated rate as a 16-bit converter of 0 V to 5 V does."""
     return np.rint((ZERO + SCALE_FACTOR * rate) / STEP) * STEP
 
 
 def _as_written(rate: FloatArray) -> FloatArray:
-    """The digital part puts out steps of 0.0005 deg/s."""
+    """Round to the steps of the digital part, 0.0005 deg/s."""
     return np.rint(rate / 0.0005) * 0.0005
 
 

@@ -45,8 +45,8 @@ def make_night(night: Night) -> tuple[FloatArray, FloatArray]:
     generator = np.random.default_rng(night.seed)
     n_samples = round(night.hours * 3600.0 * night.rate)
     interval = 1.0 / night.rate
-    time = np.arange(n_samples) * interval
-    values = night.null + night.ramp * time
+    time = np.arange(n_samples, dtype=np.float64) * interval
+    values: FloatArray = night.null + night.ramp * time
     for role, coefficient in night.coefficients.items():
         unit_sample = coefficient / interval ** TIME_POWERS[role]
         values += unit_sample * BY_ROLE[role].generate(n_samples, generator)
@@ -55,4 +55,4 @@ def make_night(night: Night) -> tuple[FloatArray, FloatArray]:
     keep = np.ones(n_samples, dtype=bool)
     for start, stop in night.lost:
         keep[round(start * night.rate) : round(stop * night.rate)] = False
-    return time[keep], values[keep]
+    return np.asarray(time[keep]), np.asarray(values[keep], dtype=np.float64)

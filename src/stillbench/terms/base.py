@@ -29,19 +29,19 @@ class Fluctuation(ABC):
 
     @abstractmethod
     def spectrum(self, frequency: FloatArray) -> FloatArray:
-        """Two-sided spectral density of the rate at ``frequency`` (cycles per sample, above 0 to 1/2)."""
+        """Return the two-sided spectral density of the rate at ``frequency`` (cycles per sample, above 0 to 1/2)."""
 
     @abstractmethod
     def cosine_power(self, k: FloatArray, n_samples: int) -> FloatArray:
-        """Mean square of coefficient ``k`` (1 to n-1, may be fractional) of the orthonormal DCT-II of ``n_samples`` rates."""
+        """Return the mean square of coefficient ``k`` (1 to n-1, may be fractional) of the orthonormal DCT-II of ``n_samples`` rates."""
 
     @abstractmethod
     def allan_variance(self, factor: FloatArray) -> FloatArray:
-        """Allan variance at averaging factors ``factor`` (samples, from 1)."""
+        """Return the Allan variance at averaging factors ``factor`` (samples, from 1)."""
 
     @abstractmethod
     def covariance(self, lag: FloatArray) -> FloatArray:
-        """Generalized covariance of the angle (the running sum of the rate) at ``lag`` samples."""
+        """Return the generalized covariance of the angle (the running sum of the rate) at ``lag`` samples."""
 
     @abstractmethod
     def generate(self, n_samples: int, generator: np.random.Generator) -> FloatArray:
@@ -63,12 +63,12 @@ class MeanShape(ABC):
 
     @abstractmethod
     def shape(self, n_samples: int) -> FloatArray:
-        """The shape in the rates, unit coefficient, shape (n_samples,)."""
+        """Return the shape in the rates, unit coefficient, shape (n_samples,)."""
 
     @abstractmethod
     def cosine(self, k: FloatArray, n_samples: int) -> FloatArray:
-        """Coefficient ``k`` of the orthonormal DCT-II of the shape."""
+        """Return coefficient ``k`` of the orthonormal DCT-II of the shape."""
 
     @abstractmethod
     def allan_variance(self, factor: FloatArray) -> FloatArray:
-        """Footprint in the Allan variance at averaging factors ``factor``."""
+        """Return the footprint in the Allan variance at averaging factors ``factor``."""

@@ -95,9 +95,7 @@ def _mean_square_variance(
     return variance, 2.0 * total / float(pairs.sum()) ** 2
 
 
-def curve_edf(
-    theta: Mapping[str, float], slope: float, factors: IntArray, run_lengths: Sequence[int]
-) -> FloatArray:
+def curve_edf(theta: Mapping[str, float], slope: float, factors: IntArray, run_lengths: Sequence[int]) -> FloatArray:
     """Return the equivalent degrees of freedom of the overlapping Allan variance pooled over runs.
 
     Parameters

@@ -32,7 +32,7 @@ class QuantizationNoise(Fluctuation):
         return 3.0 / factor**2
 
     def covariance(self, lag: FloatArray) -> FloatArray:
-        return np.where(np.abs(lag) < 0.5, 1.0, 0.0)
+        return np.where(np.rint(lag) == 0, 1.0, 0.0)
 
     def generate(self, n_samples: int, generator: np.random.Generator) -> FloatArray:
         return np.diff(generator.standard_normal(n_samples + 1))

@@ -20,7 +20,7 @@ class Ramp(MeanShape):
     time_power = -1.0
 
     def shape(self, n_samples: int) -> FloatArray:
-        return np.arange(n_samples) - (n_samples - 1) / 2.0
+        return np.arange(n_samples, dtype=np.float64) - (n_samples - 1) / 2.0
 
     def cosine(self, k: FloatArray, n_samples: int) -> FloatArray:
         phase = np.pi * np.asarray(k, dtype=float) / (2 * n_samples)

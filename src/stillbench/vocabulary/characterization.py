@@ -2,6 +2,7 @@
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field
+from typing import ClassVar
 
 from stillbench.foundation.arrays import FloatArray
 from stillbench.vocabulary.deviation_curve import DeviationCurve
@@ -27,7 +28,7 @@ class Timeline:
     mean: FloatArray
     maximum: FloatArray
 
-    __json_names__ = {"time": "time_s"}
+    __json_names__: ClassVar[Mapping[str, str]] = {"time": "time_s"}
 
 
 @dataclass(frozen=True)
@@ -94,10 +95,10 @@ class ChannelResult:
     unscreened: Mapping[str, NoiseTerm] = field(default_factory=dict)
     side: Mapping[str, Timeline] = field(default_factory=dict)
 
-    __json_names__ = {"sample_interval": "sample_interval_s", "duration": "duration_s"}
+    __json_names__: ClassVar[Mapping[str, str]] = {"sample_interval": "sample_interval_s", "duration": "duration_s"}
 
     def _repr_html_(self) -> str:
-        return f"<p><b>{_escaped(self.label)}</b></p>{self.noise._repr_html_()}"  # noqa: SLF001  the same protocol
+        return f"<p><b>{_escaped(self.label)}</b></p>{self.noise._repr_html_()}"
 
 
 @dataclass(frozen=True)
@@ -153,7 +154,7 @@ class Characterization:
         return 3 if FAILS in decisions else 4 if UNDECIDED in decisions else 0
 
     def _repr_html_(self) -> str:
-        return "".join(channel._repr_html_() for channel in self.channels)  # noqa: SLF001  the same protocol
+        return "".join(channel._repr_html_() for channel in self.channels)
 
 
 def _escaped(text: str) -> str:

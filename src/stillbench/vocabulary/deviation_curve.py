@@ -1,6 +1,8 @@
 """The Allan deviation at a set of averaging times."""
 
+from collections.abc import Mapping
 from dataclasses import dataclass
+from typing import ClassVar
 
 from stillbench.foundation.arrays import FloatArray, IntArray
 
@@ -39,4 +41,4 @@ class DeviationCurve:
     model: FloatArray | None = None
     coverage: float = 0.95
 
-    __json_names__ = {"tau": "tau_s"}
+    __json_names__: ClassVar[Mapping[str, str]] = {"tau": "tau_s"}

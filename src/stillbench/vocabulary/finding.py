@@ -1,7 +1,8 @@
 """One thing found in a log that its reader must know."""
 
+from collections.abc import Mapping
 from dataclasses import dataclass
-from typing import Literal, get_args
+from typing import ClassVar, Literal, get_args
 
 FindingKind = Literal[
     "missing_samples",
@@ -73,4 +74,4 @@ class Finding:
     because: str
     disposition: str
 
-    __json_names__ = {"start": "start_s", "stop": "stop_s"}
+    __json_names__: ClassVar[Mapping[str, str]] = {"start": "start_s", "stop": "stop_s"}

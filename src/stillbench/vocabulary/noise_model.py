@@ -2,12 +2,12 @@
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, ClassVar
 
 from stillbench.foundation.arrays import FloatArray
 
 if TYPE_CHECKING:
-    import pandas
+    import pandas as pd
 
 RESOLVED = "resolved"
 AMBIGUOUS = "ambiguous"
@@ -74,7 +74,7 @@ class SpectralLine:
     upper: float
     alias_of: str | None = None
 
-    __json_names__ = {"frequency": "frequency_hz"}
+    __json_names__: ClassVar[Mapping[str, str]] = {"frequency": "frequency_hz"}
 
 
 @dataclass(frozen=True)
@@ -84,7 +84,7 @@ class Response:
     shape: str
     corner: float | None
 
-    __json_names__ = {"corner": "corner_hz"}
+    __json_names__: ClassVar[Mapping[str, str]] = {"corner": "corner_hz"}
 
 
 @dataclass(frozen=True)
@@ -114,7 +114,7 @@ class Bins:
     power: FloatArray
     model: FloatArray
 
-    __json_names__ = {"frequency": "frequency_hz"}
+    __json_names__: ClassVar[Mapping[str, str]] = {"frequency": "frequency_hz"}
 
 
 @dataclass(frozen=True)
@@ -148,9 +148,9 @@ class NoiseModel:
     bins: Bins
     kurtosis: float
 
-    __json_names__ = {"band": "band_hz"}
+    __json_names__: ClassVar[Mapping[str, str]] = {"band": "band_hz"}
 
-    def to_frame(self) -> "pandas.DataFrame":
+    def to_frame(self) -> "pd.DataFrame":
         """Return the terms as a table: one row a term; coefficient, lower, upper, unit (SI), state, because."""
         import pandas as pd  # noqa: PLC0415  pandas costs most of a second and is wanted only here
 

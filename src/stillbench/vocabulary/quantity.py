@@ -48,16 +48,15 @@ class Quantity:
     curve_unit: str = ""
 
     def term_unit(self, role: str) -> str:
-        """SI unit of the coefficient of one term."""
+        """Return the SI unit of the coefficient of one term."""
         special = {("angular rate", "white"): "rad/sqrt(s)", ("angular rate", "quantization"): "rad"}
         special |= {("angular rate", "ramp"): "rad/s^2", ("acceleration", "white"): "m/s/sqrt(s)"}
         special |= {("acceleration", "quantization"): "m/s", ("acceleration", "walk"): "m/s^2/sqrt(s)"}
         special |= {("acceleration", "ramp"): "m/s^3"}
         return special.get((self.name, role), self.unit + SI_SUFFIX[role])
 
-
     def spoken_unit(self, role: str, report_unit: str) -> str:
-        """Unit in which a report prints a term, given the unit in which it prints deviations.
+        """Return the unit in which a report prints a term, given the unit in which it prints deviations.
 
         The trade's own units go with the default; SI with SI; otherwise the report unit times a power of the second.
         """

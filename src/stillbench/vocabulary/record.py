@@ -1,6 +1,8 @@
 """One channel, evenly clocked, in SI units, in runs between gaps."""
 
+from collections.abc import Mapping
 from dataclasses import dataclass
+from typing import ClassVar
 
 from stillbench.foundation.arrays import BoolArray, FloatArray
 from stillbench.vocabulary.finding import Finding
@@ -52,7 +54,7 @@ class Clock:
     missing: int
     runs: tuple[tuple[float, float], ...]
 
-    __json_names__ = {"jitter": "jitter_s", "longest_gap": "longest_gap_s"}
+    __json_names__: ClassVar[Mapping[str, str]] = {"jitter": "jitter_s", "longest_gap": "longest_gap_s"}
 
 
 @dataclass(frozen=True)
@@ -133,5 +135,5 @@ class Record:
         return last.start + last.n_samples * self.sample_interval - self.runs[0].start
 
     def pieces(self) -> list[FloatArray]:
-        """The values of each run, as views."""
+        """Return the values of each run, as views."""
         return [self.values[run.first : run.last] for run in self.runs]

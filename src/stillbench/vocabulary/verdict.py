@@ -1,6 +1,8 @@
 """The answer to one requirement."""
 
+from collections.abc import Mapping
 from dataclasses import dataclass
+from typing import ClassVar
 
 CONFORMS = "conforms"
 FAILS = "does not conform"
@@ -50,4 +52,4 @@ class Verdict:
     deciding_length: tuple[float, float | None] | None
     because: str
 
-    __json_names__ = {"deciding_length": "deciding_length_s"}
+    __json_names__: ClassVar[Mapping[str, str]] = {"deciding_length": "deciding_length_s"}

@@ -1,0 +1,74 @@
+"""Delimited text of any common layout gives the numbers that were written."""
+
+from pathlib import Path
+
+import numpy as np
+import pytest
+from hypothesis import example, given, settings
+from hypothesis import strategies as st
+
+from stillbench.foundation.errors import StillbenchError
+from stillbench.logs.read import read_log
+from stillbench.vocabulary.log_sheet import LogSheet
+
+
+@pytest.fixture(scope="module")
+def folder(tmp_path_factory: pytest.TempPathFactory) -> Path:
+    return tmp_path_factory.mktemp("text")
+
+
+@settings(max_examples=120)
+@given(
+    delimiter=st.sampled_from([",", ";", "\t", "  ", " \t "]),
+    decimal=st.sampled_from([".", ","]),
+    line_end=st.sampled_from(["\n", "\r\n"]),
+    encoding=st.sampled_from(["utf-8", "utf-8-sig", "utf-16", "utf-16-le", "utf-16-be", "latin-1"]),
+    head=st.booleans(),
+    comments=st.integers(0, 3),
+    trailing=st.booleans(),
+    last_end=st.booleans(),
+)
+@example(delimiter=",", decimal=".", line_end="\r\n", encoding="utf-16", head=True, comments=2, trailing=True, last_end=False)
+def test_layouts(
+    *, folder: Path, delimiter: str, decimal: str, line_end: str, encoding: str, head: bool, comments: int, trailing: bool, last_end: bool
+) -> None:
+    if delimiter == "," and decimal == ",":
+        return  # no such text can be written
+    numbers = np.round(np.random.default_rng(3).normal(2.5, 0.1, (40, 2)), 6)
+    time = np.arange(40) * 0.02
+    end = delimiter if trailing and delimiter.strip() else ""
+    lines = [f"# logged by hand, line {i}" for i in range(comments)]
+    if head:
+        lines.append(delimiter.join(["time", "rate", "µ volts" if delimiter.strip() or "\t" in delimiter else "volts"]) + end)
+    rows = ([f"{t:.2f}", f"{a:.6f}", f"{b:.6f}"] for t, (a, b) in zip(time, numbers, strict=True))
+    lines += [delimiter.join(cell.replace(".", decimal) for cell in row) + end for row in rows]
+    text = line_end.join(lines) + (line_end if last_end else "")
+    path = folder / "log.txt"
+    path.write_bytes(text.encode(encoding))
+    if delimiter == " \t ":
+        head = False  # the head of blanks and tabs splits as its rows do; taken by number below
+    log = read_log(path, channels=["2", "3"], units={"": "deg/s"}, time=1, time_unit="s")
+    assert log.source.rows == 40
+    for i in range(2):
+        assert np.array_equal(log.channels[i].values, numbers[:, i])
+    assert log.stamps is not None
+    assert np.allclose(log.stamps.seconds, time, atol=1e-12)
+
+
+@settings(max_examples=150)
+@given(st.binary(max_size=3_000))
+@example(b"\xff\xfe")
+@example(b"1,2\n" * 20 + b'"')
+@example(b"\x93NUMPY\x01\x00\xff\xff")
+@example(b"PK\x03\x04rest")
+@example(b"\x1f\x8b\x08\x00")
+def test_any_bytes_end_in_a_log_or_one_clear_error(folder: Path, content: bytes) -> None:
+    path = folder / "any.csv"
+    path.write_bytes(content)
+    try:
+        log = read_log(path, sheet=LogSheet(), channels=["1"], units={"": "deg/s"}, rate=1.0, time="none")
+    except StillbenchError as error:
+        assert error.message
+        assert "\n" not in error.message
+    else:
+        assert log.channels[0].values.size >= 16
