@@ -7,10 +7,10 @@ from collections.abc import Mapping
 import numpy as np
 from hypothesis import given, settings
 from hypothesis import strategies as st
+from tests.conftest import made_noise
 
 from stillbench.archive.codec import decode, encode
 from stillbench.pipeline import characterize
-from tests.conftest import made_noise
 
 
 def same(one: object, other: object) -> bool:
@@ -22,7 +22,9 @@ def same(one: object, other: object) -> bool:
     if isinstance(one, np.ndarray):
         return isinstance(other, np.ndarray) and np.array_equal(one, other, equal_nan=True)
     if isinstance(one, Mapping):
-        return isinstance(other, Mapping) and list(one) == list(other) and all(same(one[key], other[key]) for key in one)
+        return (
+            isinstance(other, Mapping) and list(one) == list(other) and all(same(one[key], other[key]) for key in one)
+        )
     if isinstance(one, tuple | list):
         return isinstance(other, tuple | list) and len(one) == len(other) and all(map(same, one, other))
     return one == other

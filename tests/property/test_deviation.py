@@ -47,7 +47,7 @@ def test_time_reversal_changes_nothing(log: FloatArray, factor: int) -> None:
 
 @given(st.integers(20, 400), st.integers(1, 10), st.floats(-5, 5))
 def test_a_ramp_gives_slope_times_tau_over_root_two(n_samples: int, factor: int, slope: float) -> None:
-    ramp = slope * np.arange(n_samples)
+    ramp = slope * np.arange(n_samples, dtype=np.float64)
     expected = abs(slope) * factor / np.sqrt(2.0)
     assert deviation([ramp], factor) == pytest.approx(expected, abs=tolerance(ramp))
 
@@ -67,7 +67,9 @@ def test_blocks_join_without_seam() -> None:
 
 
 @given(logs, factors, st.data())
-def test_splitting_at_a_gap_drops_the_windows_that_straddle_it(log: FloatArray, factor: int, data: st.DataObject) -> None:
+def test_splitting_at_a_gap_drops_the_windows_that_straddle_it(
+    log: FloatArray, factor: int, data: st.DataObject
+) -> None:
     cut = data.draw(st.integers(1, log.size - 1))
     first, second = log[:cut], log[cut:]
     assume(max(first.size, second.size) >= 2 * factor)

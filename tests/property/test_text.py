@@ -28,9 +28,20 @@ def folder(tmp_path_factory: pytest.TempPathFactory) -> Path:
     trailing=st.booleans(),
     last_end=st.booleans(),
 )
-@example(delimiter=",", decimal=".", line_end="\r\n", encoding="utf-16", head=True, comments=2, trailing=True, last_end=False)
+@example(
+    delimiter=",", decimal=".", line_end="\r\n", encoding="utf-16", head=True, comments=2, trailing=True, last_end=False
+)
 def test_layouts(
-    *, folder: Path, delimiter: str, decimal: str, line_end: str, encoding: str, head: bool, comments: int, trailing: bool, last_end: bool
+    *,
+    folder: Path,
+    delimiter: str,
+    decimal: str,
+    line_end: str,
+    encoding: str,
+    head: bool,
+    comments: int,
+    trailing: bool,
+    last_end: bool,
 ) -> None:
     if delimiter == "," and decimal == ",":
         return  # no such text can be written
@@ -39,7 +50,9 @@ def test_layouts(
     end = delimiter if trailing and delimiter.strip() else ""
     lines = [f"# logged by hand, line {i}" for i in range(comments)]
     if head:
-        lines.append(delimiter.join(["time", "rate", "µ volts" if delimiter.strip() or "\t" in delimiter else "volts"]) + end)
+        lines.append(
+            delimiter.join(["time", "rate", "µ volts" if delimiter.strip() or "\t" in delimiter else "volts"]) + end
+        )
     rows = ([f"{t:.2f}", f"{a:.6f}", f"{b:.6f}"] for t, (a, b) in zip(time, numbers, strict=True))
     lines += [delimiter.join(cell.replace(".", decimal) for cell in row) + end for row in rows]
     text = line_end.join(lines) + (line_end if last_end else "")

@@ -4,13 +4,13 @@ import allantools
 import numpy as np
 import pytest
 from statsmodels.tsa.statespace.structural import UnobservedComponents
+from tests.conftest import made_noise
 
 from stillbench.deviation.averaging import averaging_factors
 from stillbench.deviation.overlapping import pooled_deviation
 from stillbench.likelihood.bins import bin_runs
 from stillbench.likelihood.fit import maximise
 from stillbench.terms.catalogue import BY_ROLE
-from tests.conftest import made_noise
 
 
 @pytest.mark.parametrize("offset", [0.0, 1e4])

@@ -2,15 +2,21 @@
 
 import numpy as np
 import pytest
+from tests.published.test_sp1065 import thousand_points
 
 from stillbench.deviation.intervals import chi_square_limits
 from stillbench.deviation.overlapping import overlapping_deviation
 from stillbench.terms.covariance import curve_edf
-from tests.published.test_sp1065 import thousand_points
 
 # Factors for the limits of a standard deviation from n observations, 95 % two-sided: table "Confidence Intervals on the
 # Standard Deviation" of the Boost C++ math documentation.
-BOOST_FACTORS = [(3, "0.5207", "6.2847"), (10, "0.6878", "1.8256"), (20, "0.7605", "1.4606"), (100, "0.8780", "1.1617"), (1000, "0.9580", "1.0459")]
+BOOST_FACTORS = [
+    (3, "0.5207", "6.2847"),
+    (10, "0.6878", "1.8256"),
+    (20, "0.7605", "1.4606"),
+    (100, "0.8780", "1.1617"),
+    (1000, "0.9580", "1.0459"),
+]
 
 
 @pytest.mark.parametrize(("n_observations", "low", "high"), BOOST_FACTORS)
@@ -23,7 +29,16 @@ def test_limits_of_a_standard_deviation(n_observations: int, low: str, high: str
 
 # Exact degrees of freedom of the overlapping Allan variance of independent samples: with K = M-2m+1 and r_j = 2m-3j up to m,
 # j-2m up to 2m, edf = K^2 (2m)^2 / (K (2m)^2 + 2 sum (K-j) r_j^2). Random walk and white angle noise from exact covariance.
-WHITE = [(1000, 1, "666.222296"), (1000, 10, "146.072326"), (1000, 100, "12.813268"), (1000, 333, "2.677251"), (1000, 499, "1.005361"), (1000, 500, "1.000000"), (100, 10, "12.783244"), (10_000, 100, "147.750320")]
+WHITE = [
+    (1000, 1, "666.222296"),
+    (1000, 10, "146.072326"),
+    (1000, 100, "12.813268"),
+    (1000, 333, "2.677251"),
+    (1000, 499, "1.005361"),
+    (1000, 500, "1.000000"),
+    (100, 10, "12.783244"),
+    (10_000, 100, "147.750320"),
+]
 WALK = [(1000, 1, "999.000"), (1000, 10, "91.755"), (1000, 100, "7.757"), (1000, 333, "1.407")]
 ANGLE = [(1000, 1, "514.036055"), (1000, 10, "507.173123"), (1000, 100, "440.206518")]
 
@@ -69,7 +84,12 @@ def test_angle_noise_with_strided_lags_counts_its_spikes_once() -> None:
 
 
 # Limits of the 1000-point set for white noise, computed from the published deviations and the exact degrees of freedom.
-LIMITS = [(1, "2.773490e-01", "3.088153e-01"), (8, "9.586740e-02", "1.178073e-01"), (64, "2.791404e-02", "5.166568e-02"), (333, "4.563625e-03", "3.484250e-02")]
+LIMITS = [
+    (1, "2.773490e-01", "3.088153e-01"),
+    (8, "9.586740e-02", "1.178073e-01"),
+    (64, "2.791404e-02", "5.166568e-02"),
+    (333, "4.563625e-03", "3.484250e-02"),
+]
 
 
 @pytest.mark.parametrize(("factor", "low", "high"), LIMITS)

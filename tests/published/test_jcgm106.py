@@ -23,7 +23,9 @@ def test_breakdown_voltage_of_a_diode() -> None:
     assert f"{conformance_probability(-5.47, 0.05, upper_limit=-5.40):.2f}" == "0.92"
 
 
-@pytest.mark.parametrize(("probability", "printed"), [(0.80, "0.84"), (0.90, "1.28"), (0.95, "1.64"), (0.99, "2.33"), (0.999, "3.09")])
+@pytest.mark.parametrize(
+    ("probability", "printed"), [(0.80, "0.84"), (0.90, "1.28"), (0.95, "1.64"), (0.99, "2.33"), (0.999, "3.09")]
+)
 def test_one_sided_quantiles(probability: float, printed: str) -> None:
     """JCGM 106, Table 1 (z for a one-sided limit; 0.95 is printed 1.64)."""
     assert f"{normal_quantile(probability):.2f}" == printed

@@ -5,6 +5,8 @@ from pathlib import Path
 
 import click
 
+PICTURE = "deviation.png"
+
 
 @click.command(name="demo")
 @click.option(
@@ -25,6 +27,7 @@ def command(out: Path, *, quiet: bool) -> int:
     from stillbench.cli.write_result import REPORT, write_result  # noqa: PLC0415
     from stillbench.foundation.files import write_whole  # noqa: PLC0415
     from stillbench.pipeline import characterize  # noqa: PLC0415
+    from stillbench.report.render import deviation_picture  # noqa: PLC0415
     from stillbench.report.words import ASCII_MARKS, verdict_row  # noqa: PLC0415
     from stillbench.simulation.launch import BENCHES, MADE_AT, SPECIFICATION, write_bench  # noqa: PLC0415
 
@@ -44,6 +47,7 @@ def command(out: Path, *, quiet: bool) -> int:
             result = characterize(log, log_sheet=sheet, specification=specification, made_at=MADE_AT, progress=progress)
             folder = out / bench.name
             write_result(result, folder, None)
+            write_whole({folder / PICTURE: deviation_picture(result.channels[0])})
             lines.append(f"{bench.words}: open {folder / REPORT}")
             for channel in result.channels:
                 for verdict in channel.verdicts:

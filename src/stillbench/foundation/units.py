@@ -201,7 +201,7 @@ _SPELLINGS: dict[str, str] = {
 _COMPOUNDS = {"dps": "deg/s", "dph": "deg/h", "rps": "rad/s"}
 
 _TOKEN = re.compile(
-    r"\s*(?:(?P<root>sqrt|rt(?=\s*\()|\N{SQUARE ROOT})|(?P<open>\()|(?P<close>\))|(?P<times>[*\N{MIDDLE DOT}\N{DOT OPERATOR}])|(?P<over>/)"
+    r"\s*(?:(?P<root>sqrt|rt(?=\s*\()|\N{SQUARE ROOT})|(?P<open>\()|(?P<close>\))|(?P<times>\*(?!\*)|[\N{MIDDLE DOT}\N{DOT OPERATOR}])|(?P<over>/)"
     r"|(?P<power>\^\s*\(?-?\d+(?:[./]\d+)?\)?|\*\*-?\d+(?:\.\d+)?|\N{SUPERSCRIPT TWO}|\N{SUPERSCRIPT MINUS}\N{SUPERSCRIPT ONE})"
     r"|(?P<name>\N{DEGREE SIGN}C|%RH|%|\N{DEGREE SIGN}|\N{MASCULINE ORDINAL INDICATOR}|\N{DEGREE CELSIUS}|[A-Za-z\N{MICRO SIGN}\N{GREEK SMALL LETTER MU}]+)"
     r"|(?P<one>1(?![\d.])))"

@@ -7,7 +7,7 @@ import numpy as np
 
 from stillbench.foundation.arrays import BoolArray, FloatArray
 from stillbench.foundation.progress import SILENT, Progress
-from stillbench.identification.band import CORNER_OVER_TOP, Band, largest_band
+from stillbench.identification.band import CORNER_OVER_TOP, NYQUIST, Band, largest_band
 from stillbench.identification.textbook import read_textbook
 from stillbench.likelihood.bins import BinnedPowers, bin_runs
 from stillbench.likelihood.fit import Fit, maximise
@@ -36,6 +36,8 @@ from stillbench.vocabulary.record import Record
 RAMP_RATIO = 9.0
 """Likelihood ratio from which a ramp is accepted; a Wald ratio is not safe, a random walk looks like a trend."""
 POOR_FIT = 3.0
+DROOPING = 0.8
+"""Power in the top octave, over what the terms give, below which the sensor is taken to be filtered."""
 SHORT = 256
 """Samples below which flicker and walk are not told from white noise at all."""
 UNRESOLVED_STEPS = 0.4
@@ -110,6 +112,7 @@ def identify_noise(
     if shapes[ramp]:
         estimate = float(full.beta[ramp])
     goodness = goodness_of_fit(used, full.spectrum)
+    excess = _power_above(bins, full, band)
     accepted = smallest_accepted(used, full, shapes=shapes)
     progress.step(0.7)
     longest = max(record.pieces(), key=len)
@@ -137,7 +140,7 @@ def identify_noise(
         (),
         tuple(names),
         _band_hz(band, record),
-        _response(band, record),
+        _response(band, excess, record),
         goodness,
         _information(used, full, record, quantity),
         _spectrum(bins, full, shapes, record),
@@ -145,7 +148,7 @@ def identify_noise(
     )
     progress.step(1.0)
     fitted = FittedModel(used, full, shapes, record.sample_interval)
-    return Identification(model, tuple(_findings(band, goodness, record, quantity)), fitted)
+    return Identification(model, tuple(_findings(band, excess, goodness, record, quantity)), fitted)
 
 
 def to_si(role: str, interval: float) -> float:
@@ -241,8 +244,17 @@ def _band_hz(band: Band, record: Record) -> tuple[float, float]:
     return 1.0 / (2.0 * longest), band.top / record.sample_interval
 
 
-def _response(band: Band, record: Record) -> Response | None:
-    if band.full or band.droop > -3.0:  # noqa: PLR2004  three standard deviations
+def _power_above(bins: BinnedPowers, full: Fit, band: Band) -> float:
+    """Return the power in the top octave of the full band over what the terms fitted below give there."""
+    top = bins.frequency > NYQUIST / 2.0
+    if band.full or not top.any():
+        return 1.0
+    expected = float(bins.dof[top] @ (bins.basis[top] @ full.theta))
+    return float(bins.dof[top] @ bins.power[top]) / expected if expected > 0 else np.inf
+
+
+def _response(band: Band, excess: float, record: Record) -> Response | None:
+    if band.full or excess > DROOPING:
         return None
     return Response("low-pass, shape not fitted", CORNER_OVER_TOP * band.top / record.sample_interval)
 
@@ -283,11 +295,11 @@ def _merged(
     return mean(frequency), total, mean(power), mean(model)
 
 
-def _findings(band: Band, goodness: float, record: Record, quantity: Quantity) -> list[Finding]:
+def _findings(band: Band, excess: float, goodness: float, record: Record, quantity: Quantity) -> list[Finding]:
     findings = []
     top = band.top / record.sample_interval
     if not band.full:
-        drooping = band.droop <= -3.0  # noqa: PLR2004  three standard deviations
+        drooping = excess <= DROOPING
         corner = CORNER_OVER_TOP * top
         findings.append(
             Finding(
@@ -298,11 +310,11 @@ def _findings(band: Band, goodness: float, record: Record, quantity: Quantity) -
                 "Hz",
                 excluded=True,
                 because=(
-                    f"the spectrum falls towards the top of the band (score {band.droop:.1f}): a low-pass in the sensor,"
-                    f" corner about {corner:.2g} Hz, shape not fitted"
+                    f"the spectrum falls towards the top of the band, to {100 * excess:.2g} % of what the terms give: a"
+                    f" low-pass in the sensor, corner about {corner:.2g} Hz, shape not fitted"
                     if drooping
-                    else f"the terms do not explain the spectrum above {2 * top:.3g} Hz (score {band.droop:+.1f},"
-                    f" goodness of fit {band.misfit:.1f})"
+                    else f"the terms do not explain the spectrum above {2 * top:.3g} Hz (goodness of fit {band.misfit:.1f};"
+                    f" power in the top octave {excess:.3g} times theirs)"
                 ),
                 disposition=f"fitted below {top:.3g} Hz only; the terms hold for averaging times above {1.0 / top:.3g} s",
             )

@@ -1,5 +1,7 @@
 """Profile-likelihood intervals of linear functions of the squared coefficients, and of a mean shape."""
 
+from collections.abc import Callable
+
 import numpy as np
 
 from stillbench.foundation.arrays import BoolArray, FloatArray
@@ -8,8 +10,8 @@ from stillbench.likelihood.fit import Constraint, Fit, maximise
 
 GROWTH = 1.5
 MOST_EXPANSIONS = 80
-RELATIVE_PRECISION = 1e-4
-"""Of an interval's end, in amplitude: far below its own uncertainty."""
+PRECISION = 2e-4
+"""To which an interval's end is found, as a share of its distance from the estimate."""
 
 
 def likelihood_threshold(coverage: float) -> float:
@@ -63,11 +65,12 @@ def profile_limits(
     spread = float(np.sqrt(np.maximum(0.0, weights @ covariance @ weights)))
     width = spread / (2.0 * estimate) if estimate > 0 else 0.0
     if not 0 < width < estimate:
-        width = max(np.sqrt(spread), estimate)
-    upper = _crossing(rise, estimate, width * np.sqrt(threshold))
+        width = max(float(np.sqrt(spread)), estimate)
+    width *= float(np.sqrt(threshold))
+    upper = _crossing(rise, estimate, width)
     lower = 0.0
     if estimate > 0 and rise(0.0) > 0:
-        lower = _between(rise, 0.0, estimate, outside_first=True)
+        lower = max(0.0, -_crossing(lambda negative: rise(max(0.0, -negative)), -estimate, min(width, estimate)))
     return lower, upper
 
 
@@ -128,23 +131,15 @@ def _student_threshold(bins: BinnedPowers, fit: Fit, index: int, threshold: floa
     return float((freedom + 1.0) * np.log1p(t**2 / freedom))
 
 
-def _crossing(rise, inside: float, width: float) -> float:  # type: ignore[no-untyped-def]  # noqa: ANN001
-    """Step outwards from ``inside`` until ``rise`` is positive, then close in."""
+def _crossing(rise: Callable[[float], float], inside: float, width: float) -> float:
+    """Step outwards from ``inside`` until ``rise`` is positive, then close in by a bracketing root search."""
+    from scipy.optimize import brentq  # noqa: PLC0415  heavy imports stay inside functions
+
     near, far = inside, inside + width
     for _ in range(MOST_EXPANSIONS):
         if rise(far) > 0:
-            return _between(rise, near, far, outside_first=False)
+            if rise(near) > 0:
+                return near
+            return float(brentq(rise, near, far, xtol=PRECISION * (far - inside), rtol=8.9e-16))
         near, far = far, inside + GROWTH * (far - inside)
     return float("inf")
-
-
-def _between(rise, low: float, high: float, *, outside_first: bool) -> float:  # type: ignore[no-untyped-def]  # noqa: ANN001
-    """Find the crossing between two points by a bracketing root search."""
-    from scipy.optimize import brentq  # noqa: PLC0415  heavy imports stay inside functions
-
-    at_low = rise(low)
-    at_high = rise(high)
-    if at_low * at_high > 0:
-        return low if outside_first else high
-    scale = max(abs(low), abs(high), high - low)
-    return float(brentq(rise, low, high, xtol=RELATIVE_PRECISION * scale * 0.1, rtol=RELATIVE_PRECISION))

@@ -19,6 +19,10 @@ EVEN_SHARE = 0.98
 COARSE_SHARE = 0.05
 """Above this share of repeated stamps they are coarser than the sampling."""
 BACKWARD_SHARE = 0.2
+BURST_SHARE = 0.05
+BURST_MULTIPLE = 2.0
+LONG_STEP = 1_000.0
+"""Stamps come in bursts when more than this share of the steps are multiples and their mean exceeds two usual steps."""
 MISMATCH = 0.005
 BEND = 0.01
 SHIFT_UNIT = 1800.0
@@ -237,7 +241,10 @@ def _place(seconds: FloatArray, segment: IntArray, kept: BoolArray) -> tuple[flo
         multiple = np.maximum(np.rint(steps / usual), 1.0)
         near = (np.abs(steps / usual - multiple) < NEAR) & inside
         short = multiple <= GAP_INTERVALS + 1
-        even = np.count_nonzero(near) >= EVEN_SHARE * np.count_nonzero(inside)
+        # In bursts the usual step is that inside a packet: many steps are then long, and some are very long.
+        mean_multiple = float(np.minimum(multiple, LONG_STEP).mean())
+        bursts = np.count_nonzero(multiple > 1) > BURST_SHARE * steps.size and mean_multiple > BURST_MULTIPLE
+        even = np.count_nonzero(near) >= EVEN_SHARE * np.count_nonzero(inside) and not bursts
         if not even:
             return _place_by_row(seconds, segment, kept)
         multiple = np.where(inside, multiple, 1.0)

@@ -164,7 +164,7 @@ def _read_dates(table: Table, index: int) -> tuple[Stamps, str]:
         row = int(np.flatnonzero(times.isna().to_numpy())[0]) + 1
         raise ClockError(f"row {row} of the time column {head!r} is empty", "a stamp in every row")
     nanoseconds = times.astype("datetime64[ns, UTC]").astype("int64").to_numpy()
-    seconds = (nanoseconds - nanoseconds[0]) * 1e-9
+    seconds = (nanoseconds - nanoseconds[0]) / 1e9
     kind = "absolute" if zoned else "local"
     stamps = Stamps(seconds, head, "iso", kind, float(nanoseconds[0]) * 1e-9, _resolution(seconds))  # type: ignore[arg-type]
     zone = "with zone" if zoned else "local time, no zone given"

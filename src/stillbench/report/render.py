@@ -167,6 +167,18 @@ def _figures(channel: ChannelResult, key: str, first: int) -> dict[str, _Figure]
     }
 
 
+def deviation_picture(channel: ChannelResult) -> bytes:
+    """Return the Allan deviation of a channel as a PNG on white paper, for pages that cannot hold SVG."""
+    import io  # noqa: PLC0415  wanted only here
+
+    labels = {name: term_label(channel, name) for name in channel.noise.terms}
+    buffer = io.BytesIO()
+    with sheet(104) as (figure, axes):
+        draw_deviation(axes, channel, labels, specification_marks(channel.verdicts, channel))
+        figure.savefig(buffer, format="png", dpi=150, facecolor="white", metadata={"Software": None})
+    return buffer.getvalue()
+
+
 def _curve_table(channel: ChannelResult) -> list[tuple[str, ...]]:
     """Three points a decade of the curve, in the report unit."""
     curve, unit = channel.curve, parse_unit(channel.report_unit)

@@ -1,0 +1,152 @@
+"""The clock audit on made stamps: each oddity is found, sized, and does not move the grid."""
+
+import numpy as np
+import pytest
+
+from stillbench.foundation.arrays import FloatArray
+from stillbench.foundation.errors import ClockError
+from stillbench.foundation.units import parse_unit
+from stillbench.logs.clock import Grid, audit_clock
+from stillbench.logs.cut import cut_record
+from stillbench.vocabulary.sensor_log import Channel, SensorLog, Source, StampKind, Stamps
+
+INTERVAL = 0.01
+
+
+def log_of(
+    seconds: FloatArray, *, kind: StampKind = "counter", rate: float | None = None, origin: float | None = None
+) -> SensorLog:
+    values = np.random.default_rng(0).standard_normal(seconds.size)
+    source = Source("made", 0, "0" * 64, seconds.size, "made")
+    stamps = Stamps(seconds - seconds[0], "time", "s", kind, origin, 1e-6)
+    return SensorLog(source, (Channel("x", values, parse_unit("V")),), stamps, rate)
+
+
+def audit(seconds: FloatArray, **more: object) -> tuple[Grid, list[str]]:
+    grid = audit_clock(log_of(seconds, **more))  # type: ignore[arg-type]
+    return grid, [finding.kind for finding in grid.findings]
+
+
+def even(n_samples: int = 5_000) -> FloatArray:
+    return np.arange(n_samples, dtype=np.float64) * INTERVAL
+
+
+def test_even_stamps() -> None:
+    grid, kinds = audit(even())
+    assert grid.sample_interval == pytest.approx(INTERVAL, rel=1e-9)
+    assert kinds == []
+    assert np.array_equal(grid.index, np.arange(5_000))
+
+
+def test_jitter_below_a_quarter_interval() -> None:
+    grid, kinds = audit(even() + np.random.default_rng(1).uniform(-0.1, 0.1, 5_000) * INTERVAL)
+    assert kinds == []
+    assert grid.jitter == pytest.approx(0.1 * INTERVAL / np.sqrt(3), rel=0.05)
+    assert grid.sample_interval == pytest.approx(INTERVAL, rel=1e-5)
+    assert np.array_equal(grid.index, np.arange(5_000))
+
+
+def test_missing_rows_keep_their_place() -> None:
+    keep = np.ones(5_000, dtype=bool)
+    keep[[700, 1_500, 1_501]] = False
+    keep[3_000:3_400] = False
+    seconds = even()[keep]
+    record = cut_record(log_of(seconds), "x")
+    assert [run.n_samples for run in record.runs] == [3_000, 1_600]
+    assert record.missing.sum() == 3
+    assert record.runs[1].start == pytest.approx(34.0)
+    assert record.clock.missing == 403
+    assert record.clock.longest_gap == pytest.approx(4.0)
+    kinds = [finding.kind for finding in record.findings]
+    assert kinds.count("gap") == 1
+    assert "missing_samples" in kinds
+
+
+def test_many_holes_are_carried_up_to_two_percent() -> None:
+    keep = np.random.default_rng(3).random(20_000) > 0.015
+    keep[0] = keep[-1] = True
+    record = cut_record(log_of(even(20_000)[keep]), "x")
+    assert len(record.runs) == 1
+    keep = np.random.default_rng(3).random(20_000) > 0.06
+    record = cut_record(log_of(even(20_000)[keep]), "x")
+    assert record.missing.sum() <= 0.021 * record.n_samples
+
+
+def test_bursts() -> None:
+    """Rows come in packets of five: the median step is far below the interval."""
+    packet = np.arange(5_000) // 5
+    seconds = packet * 5 * INTERVAL + (np.arange(5_000) % 5) * 0.0005
+    grid, kinds = audit(seconds)
+    assert kinds == ["clock_jitter"]
+    assert grid.sample_interval == pytest.approx(INTERVAL, rel=1e-3)
+
+
+def test_coarse_stamps() -> None:
+    grid, kinds = audit(np.floor(even() * 10) / 10)
+    assert kinds == ["stamp_resolution"]
+    assert grid.sample_interval == pytest.approx(INTERVAL, rel=1e-4)
+
+
+def test_duplicates_are_left_out() -> None:
+    seconds = np.insert(even(), 1_000, even()[999])
+    grid, kinds = audit(seconds)
+    assert kinds == ["duplicate_stamps"]
+    assert np.count_nonzero(~grid.kept) == 1
+    assert np.array_equal(grid.index[grid.kept], np.arange(5_000))
+
+
+def test_restart_splits_the_record() -> None:
+    seconds = np.concatenate([even(3_000), even(2_000)])
+    grid, kinds = audit(seconds)
+    assert kinds == ["backward_stamps"]
+    assert grid.segment[-1] == 1
+    record = cut_record(log_of(seconds), "x")
+    assert [run.n_samples for run in record.runs] == [3_000, 2_000]
+
+
+def test_stamps_that_run_backwards_are_refused() -> None:
+    with pytest.raises(ClockError, match="backwards"):
+        audit(even()[::-1])
+    with pytest.raises(ClockError, match="do not move"):
+        audit(np.zeros(100))
+
+
+def test_declared_rate_that_differs() -> None:
+    _, kinds = audit(even(), rate=101.0)
+    assert kinds == ["rate_mismatch"]
+    _, kinds = audit(even(), rate=100.3)
+    assert kinds == []
+
+
+MIDNIGHT = 1_743_292_800.0  # 2025-03-30 00:00 on the wall, the night the clocks go forward in Europe
+
+
+def test_clocks_going_forward_are_no_gap() -> None:
+    seconds = np.arange(4 * 3_600.0)
+    local = np.where(seconds >= 2 * 3_600, seconds + 3_600, seconds)
+    grid, kinds = audit(local, kind="local", origin=MIDNIGHT)
+    assert kinds == ["clock_shift"]
+    assert grid.findings[0].measure == 3_600
+    assert np.array_equal(grid.index, np.arange(seconds.size))
+
+
+def test_clocks_going_back_are_no_restart() -> None:
+    seconds = np.arange(4 * 3_600.0)
+    local = np.where(seconds >= 3 * 3_600, seconds - 3_600, seconds)
+    grid, kinds = audit(local, kind="local", origin=MIDNIGHT)
+    assert kinds == ["clock_shift"]
+    assert np.array_equal(grid.index, np.arange(seconds.size))
+
+
+def test_an_hour_missing_at_another_minute_is_a_gap() -> None:
+    seconds = np.arange(4 * 3_600.0)
+    local = np.where(seconds >= 2 * 3_600 + 1_234, seconds + 3_600, seconds)
+    grid, kinds = audit(local, kind="local", origin=MIDNIGHT)
+    assert kinds == []
+    assert grid.index[-1] == seconds.size - 1 + 3_600
+
+
+def test_a_rate_that_changes_between_the_halves() -> None:
+    steps = np.where(np.arange(6_000) < 3_000, INTERVAL, 1.03 * INTERVAL)
+    _, kinds = audit(np.cumsum(steps))
+    assert "clock_jitter" in kinds
