@@ -11,7 +11,8 @@ from scipy import stats
 from stillbench.deviation.intervals import chi_square_limits
 from stillbench.deviation.overlapping import pooled_deviation
 from stillbench.terms.catalogue import BY_ROLE
-from stillbench.terms.covariance import curve_edf, model_variance
+from stillbench.terms.covariance import curve_edf
+from stillbench.terms.mixture import Mixture
 
 LOGS = 1_000
 N_SAMPLES = 1_200
@@ -21,8 +22,8 @@ FACTORS = np.array([12, 40, 120, 240, 400])
 @pytest.mark.parametrize("role", ["white", "flicker", "walk"])
 def test_band_covers(role: str) -> None:
     generator = np.random.default_rng(11)
-    truth = np.sqrt(model_variance({role: 1.0}, 0.0, FACTORS))
-    edf = curve_edf({role: 1.0}, 0.0, FACTORS, [N_SAMPLES])
+    truth = np.sqrt(Mixture({role: 1.0}).allan_variance(FACTORS))
+    edf = curve_edf(Mixture({role: 1.0}), FACTORS, [N_SAMPLES])
     covered = np.zeros(FACTORS.size)
     for _ in range(LOGS):
         sigma, _ = pooled_deviation([BY_ROLE[role].generate(N_SAMPLES, generator)], FACTORS)

@@ -7,6 +7,7 @@ from tests.published.test_sp1065 import thousand_points
 from stillbench.deviation.intervals import chi_square_limits
 from stillbench.deviation.overlapping import overlapping_deviation
 from stillbench.terms.covariance import curve_edf
+from stillbench.terms.mixture import Mixture
 
 # Factors for the limits of a standard deviation from n observations, 95 % two-sided: table "Confidence Intervals on the
 # Standard Deviation" of the Boost C++ math documentation.
@@ -53,26 +54,26 @@ def white_edf(n_samples: int, factor: int) -> float:
 
 @pytest.mark.parametrize(("n_samples", "factor", "printed"), WHITE)
 def test_white_noise(n_samples: int, factor: int, printed: str) -> None:
-    got = curve_edf({"white": 1.0}, 0.0, np.array([factor]), [n_samples])[0]
+    got = curve_edf(Mixture({"white": 1.0}), np.array([factor]), [n_samples])[0]
     assert f"{got:.6f}" == printed
     assert got == pytest.approx(max(1.0, white_edf(n_samples, factor)), rel=1e-9)  # float64 sums
 
 
 def test_white_noise_with_strided_lags() -> None:
     """Above 512 samples lags are strided; the sum is then good to a part in a thousand, far below what edf is good for."""
-    got = curve_edf({"white": 1.0}, 0.0, np.array([36_000]), [360_000])[0]
+    got = curve_edf(Mixture({"white": 1.0}), np.array([36_000]), [360_000])[0]
     assert got == pytest.approx(white_edf(360_000, 36_000), rel=1e-3)
     assert f"{white_edf(360_000, 36_000):.6f}" == "12.800041"
 
 
 @pytest.mark.parametrize(("n_samples", "factor", "printed"), WALK)
 def test_random_walk(n_samples: int, factor: int, printed: str) -> None:
-    assert f"{curve_edf({'walk': 1.0}, 0.0, np.array([factor]), [n_samples])[0]:.3f}" == printed
+    assert f"{curve_edf(Mixture({'walk': 1.0}), np.array([factor]), [n_samples])[0]:.3f}" == printed
 
 
 @pytest.mark.parametrize(("n_samples", "factor", "printed"), ANGLE)
 def test_white_angle_noise(n_samples: int, factor: int, printed: str) -> None:
-    assert f"{curve_edf({'quantization': 1.0}, 0.0, np.array([factor]), [n_samples])[0]:.6f}" == printed
+    assert f"{curve_edf(Mixture({'quantization': 1.0}), np.array([factor]), [n_samples])[0]:.6f}" == printed
 
 
 def test_angle_noise_with_strided_lags_counts_its_spikes_once() -> None:
@@ -80,7 +81,9 @@ def test_angle_noise_with_strided_lags_counts_its_spikes_once() -> None:
     n_samples, factor = 100_000, 2_000
     count = n_samples - 2 * factor + 1
     exact = 36.0 * count**2 / (36.0 * count + 2 * (16.0 * (count - factor) + (count - 2 * factor)))
-    assert curve_edf({"quantization": 1.0}, 0.0, np.array([factor]), [n_samples])[0] == pytest.approx(exact, rel=1e-9)
+    assert curve_edf(Mixture({"quantization": 1.0}), np.array([factor]), [n_samples])[0] == pytest.approx(
+        exact, rel=1e-9
+    )
 
 
 # Limits of the 1000-point set for white noise, computed from the published deviations and the exact degrees of freedom.
@@ -95,6 +98,6 @@ LIMITS = [
 @pytest.mark.parametrize(("factor", "low", "high"), LIMITS)
 def test_limits_of_the_thousand_points(factor: int, low: str, high: str) -> None:
     sigma = overlapping_deviation(thousand_points(), sample_interval=1.0, factor=factor)
-    edf = curve_edf({"white": 1.0}, 0.0, np.array([factor]), [1000])
+    edf = curve_edf(Mixture({"white": 1.0}), np.array([factor]), [1000])
     lower, upper = chi_square_limits(np.array([sigma]), edf, 0.95)
     assert (f"{lower[0]:.6e}", f"{upper[0]:.6e}") == (low, high)

@@ -8,18 +8,19 @@ Choice of threshold by the relative uncertainty and choice of prior: by simulati
 """
 
 from collections.abc import Callable
+from dataclasses import replace
 
 import numpy as np
 
 from stillbench.assessment.evidence import Estimate, Evidence
 from stillbench.assessment.uncertainty import normal_quantile
 from stillbench.deviation.averaging import averaging_factors
-from stillbench.deviation.intervals import chi_square_limits, unit_sample_theta
+from stillbench.deviation.intervals import chi_square_limits, mixture_of
 from stillbench.deviation.overlapping import pooled_deviation
 from stillbench.foundation.arrays import FloatArray
 from stillbench.likelihood.profile import likelihood_threshold
-from stillbench.terms.catalogue import BY_ROLE
-from stillbench.terms.covariance import curve_edf, model_variance
+from stillbench.terms.covariance import curve_edf
+from stillbench.terms.mixture import Mixture
 from stillbench.vocabulary.quantity import TIME_POWERS, role_of
 from stillbench.vocabulary.specification import Requirement
 
@@ -145,9 +146,7 @@ def deviation_at(evidence: Evidence, tau: float, limit: float, coverage: float, 
     if 2 * samples > longest:
         raise NotMeasurableError(f"the log has no two averages of {tau:g} s in one run")
     if evidence.trusted and samples * interval * evidence.model.band[1] >= 0.5 - 1e-9:
-        weights = evidence.fitted.weights(
-            {role: float(term.allan_variance(np.array(float(samples)))) for role, term in BY_ROLE.items()}
-        )
+        weights = evidence.fitted.variance_weights(samples)
         return _functional(evidence, weights, factor, limit, coverage, "amplitude", "from the fitted model")
     return _from_curve(evidence, samples, coverage, factor)
 
@@ -155,10 +154,10 @@ def deviation_at(evidence: Evidence, tau: float, limit: float, coverage: float, 
 def _from_curve(evidence: Evidence, samples: int, coverage: float, factor: float) -> Estimate:
     factors = np.array([samples])
     sigma, _ = pooled_deviation(evidence.record.pieces(), factors)
-    theta, slope = unit_sample_theta(evidence.model, evidence.fitted.sample_interval)
-    if not any(theta.values()):
-        theta = {"white": 1.0}
-    edf = curve_edf(theta, slope, factors, [run.n_samples for run in evidence.record.runs])
+    mixture = mixture_of(evidence.model, evidence.fitted.sample_interval)
+    edf = curve_edf(
+        mixture if mixture.parts else Mixture({"white": 1.0}), factors, [run.n_samples for run in evidence.record.runs]
+    )
     value = factor * float(sigma[0])
 
     def around(level: float) -> tuple[float, float]:
@@ -194,12 +193,12 @@ def estimate_lowest(evidence: Evidence, requirement: Requirement, limit: float) 
     _require_trust(evidence)
     longest = max(run.n_samples for run in evidence.record.runs)
     factors = averaging_factors(max(3, 3 * longest // USABLE_SHARE))
-    theta, _ = unit_sample_theta(evidence.model, evidence.fitted.sample_interval)
-    samples = int(factors[np.argmin(model_variance(theta, 0.0, factors))])
+    mixture = replace(mixture_of(evidence.model, evidence.fitted.sample_interval), slope=0.0)
+    samples = int(factors[np.argmin(mixture.allan_variance(factors))])
     tau = samples * evidence.fitted.sample_interval
     found = deviation_at(evidence, tau, limit, requirement.coverage, 1.0)
     at_end = " (the end of the usable range: no minimum)" if samples == factors[-1] else ""
-    return Estimate(**{**found.__dict__, "because": f"at an averaging time of {tau:.3g} s{at_end}"})
+    return replace(found, because=f"at an averaging time of {tau:.3g} s{at_end}")
 
 
 def estimate_bias(evidence: Evidence, requirement: Requirement, limit: float) -> Estimate:  # noqa: ARG001  same signature for all

@@ -6,9 +6,10 @@ from dataclasses import replace
 import numpy as np
 
 from stillbench.foundation.arrays import FloatArray
-from stillbench.terms.covariance import curve_edf, model_variance
+from stillbench.terms.covariance import curve_edf
+from stillbench.terms.mixture import Mixture
 from stillbench.vocabulary.deviation_curve import DeviationCurve
-from stillbench.vocabulary.noise_model import NoiseModel
+from stillbench.vocabulary.noise_model import RESOLVED, NoiseModel
 from stillbench.vocabulary.quantity import TIME_POWERS, role_of
 
 
@@ -26,20 +27,23 @@ def chi_square_limits(deviation: FloatArray, edf: FloatArray, coverage: float) -
     return deviation * np.sqrt(edf / low), deviation * np.sqrt(edf / high)
 
 
-def unit_sample_theta(model: NoiseModel, sample_interval: float) -> tuple[dict[str, float], float]:
-    """Return squared unit-sample coefficients by role, and the ramp per sample, of a model in SI."""
+def mixture_of(model: NoiseModel, sample_interval: float) -> Mixture:
+    """Return the terms of a model in SI as a mixture in unit samples; a ramp counts when it is resolved."""
     theta: dict[str, float] = {}
     slope = 0.0
+    correlation_time = None
     for name, term in model.terms.items():
         role = role_of(name)
         if role is None or term.coefficient is None:
             continue
         coefficient = term.coefficient / sample_interval ** TIME_POWERS[role]
         if role == "ramp":
-            slope = coefficient if term.state == "resolved" else 0.0
+            slope = coefficient if term.state == RESOLVED else 0.0
         else:
             theta[role] = coefficient**2
-    return theta, slope
+        if role == "correlated":
+            correlation_time = term.parameters["correlation_time_s"] / sample_interval
+    return Mixture(theta, slope, correlation_time)
 
 
 def bound_deviation(
@@ -64,9 +68,9 @@ def bound_deviation(
     coverage : float
         Two-sided.
     """
-    theta, slope = unit_sample_theta(model, sample_interval)
+    mixture = mixture_of(model, sample_interval)
     factors = np.rint(curve.tau / sample_interval).astype(np.int64)
-    edf = curve_edf(theta, slope, factors, run_lengths)
+    edf = curve_edf(mixture, factors, run_lengths)
     lower, upper = chi_square_limits(curve.deviation, edf, coverage)
-    course = np.sqrt(model_variance(theta, slope, factors))
+    course = np.sqrt(mixture.allan_variance(factors))
     return replace(curve, lower=lower, upper=upper, edf=edf, model=course, coverage=coverage)

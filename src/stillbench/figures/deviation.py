@@ -8,7 +8,8 @@ import numpy as np
 from stillbench.figures.style import GREY, INK, PETROL, SHADE, label_decade_steps, logarithmic, with_halo
 from stillbench.foundation.arrays import FloatArray
 from stillbench.foundation.units import parse_unit
-from stillbench.terms.catalogue import BY_ROLE, SHAPE_BY_ROLE
+from stillbench.terms.catalogue import SHAPE_BY_ROLE
+from stillbench.terms.mixture import term_of
 from stillbench.vocabulary.noise_model import AMBIGUOUS, RESOLVED
 from stillbench.vocabulary.quantity import TIME_POWERS, role_of
 
@@ -23,18 +24,22 @@ DASHES: Mapping[str, tuple[float, ...]] = {
     "white": (5, 2.5),
     "flicker": (1, 1.2, 4, 1.2),
     "walk": (1.2, 1.6),
+    "correlated": (3, 1.5, 1, 1.5),
     "ramp": (8, 2, 1, 2, 1, 2),
 }
 FEW_AVERAGES = 10.0
 TINY_SHARE = 0.05
 
 
-def term_course(role: str, coefficient: float, tau: FloatArray, interval: float) -> FloatArray:
-    """Return the Allan deviation of one term, SI, at averaging times ``tau``."""
+def term_course(
+    role: str, coefficient: float, tau: FloatArray, interval: float, correlation_time: float | None = None
+) -> FloatArray:
+    """Return the Allan deviation of one term, SI, at averaging times ``tau`` (all times in s)."""
     unit_sample = coefficient / interval ** TIME_POWERS[role]
     factors = np.maximum(tau / interval, 1.0)
-    term = BY_ROLE.get(role)
-    variance = term.allan_variance(factors) if term else SHAPE_BY_ROLE[role].allan_variance(factors)
+    shape = SHAPE_BY_ROLE.get(role)
+    samples = None if correlation_time is None else correlation_time / interval
+    variance = shape.allan_variance(factors) if shape else term_of(role, samples).allan_variance(factors)
     return np.asarray(np.abs(unit_sample) * np.sqrt(variance))
 
 
@@ -128,7 +133,13 @@ def _draw_terms(
         role = role_of(name)
         if role is None or not term.coefficient or term.state not in (RESOLVED, AMBIGUOUS):
             continue
-        shown.append((name, role, term_course(role, term.coefficient, tau, interval) / factor))
+        shown.append(
+            (
+                name,
+                role,
+                term_course(role, term.coefficient, tau, interval, term.parameters.get("correlation_time_s")) / factor,
+            )
+        )
     total = np.sqrt(np.sum([course**2 for *_, course in shown], axis=0)) if shown else np.ones(tau.size)
     low, high = axes.get_ylim()
     for number, (name, role, course) in enumerate(shown, start=1):

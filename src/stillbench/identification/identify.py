@@ -17,6 +17,7 @@ from stillbench.likelihood.profile import likelihood_threshold, profile_limits, 
 from stillbench.likelihood.subsets import smallest_accepted
 from stillbench.likelihood.whitened import whitened_kurtosis
 from stillbench.terms.catalogue import BY_ROLE, FLUCTUATIONS, MEAN_SHAPES
+from stillbench.terms.mixture import Mixture
 from stillbench.vocabulary.deviation_curve import DeviationCurve
 from stillbench.vocabulary.finding import Finding
 from stillbench.vocabulary.noise_model import (
@@ -117,7 +118,7 @@ def identify_noise(
     progress.step(0.7)
     longest = max(record.pieces(), key=len)
     theta = dict(zip(used.roles, full.theta.tolist(), strict=True))
-    kurtosis = whitened_kurtosis(longest, theta) if band.full else 3.0
+    kurtosis = whitened_kurtosis(longest, Mixture(theta)) if band.full else 3.0
     limits = {
         role: profile_limits(used, full, np.eye(len(used.roles))[i], threshold, shapes=shapes)
         for i, role in enumerate(used.roles)

@@ -5,8 +5,10 @@ covariance once the mean is removed, so their squares are independent and the li
 one. For flicker noise the largest correlation between coefficients is 0.12, at the lowest of them only.
 """
 
-from collections.abc import Sequence
-from dataclasses import dataclass
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, replace
+from functools import cached_property
+from typing import Any
 
 import numpy as np
 
@@ -25,8 +27,6 @@ SHAPE_REACH = 65_536
 QUADRATURE_FROM = 64
 """Bins with at least this many coefficients have their mean basis by quadrature in place of a sum."""
 
-_NODES, _WEIGHTS = np.polynomial.legendre.leggauss(8)
-
 
 @dataclass(frozen=True)
 class BinnedPowers:
@@ -34,10 +34,10 @@ class BinnedPowers:
 
     Attributes
     ----------
-    frequency : (j,) float array
-        Mean frequency, cycles per sample.
-    dof : (j,) float array
-        Coefficients in the bin.
+    first, last : (j,) int arrays
+        Coefficients ``first`` to ``last - 1`` of their run.
+    length : (j,) int array
+        Samples of the run.
     power : (j,) float array
         Mean square of the coefficients.
     basis : (j, a) float array
@@ -50,8 +50,9 @@ class BinnedPowers:
         Names of the ``a`` terms and ``r`` regressors.
     """
 
-    frequency: FloatArray
-    dof: FloatArray
+    first: IntArray
+    last: IntArray
+    length: IntArray
     power: FloatArray
     basis: FloatArray
     cross: FloatArray
@@ -59,22 +60,64 @@ class BinnedPowers:
     roles: tuple[str, ...]
     shapes: tuple[str, ...]
 
+    @cached_property
+    def frequency(self) -> FloatArray:
+        """Mean frequency of each bin, cycles per sample, shape (j,)."""
+        return np.asarray((self.first + self.last - 1) / (4.0 * self.length))
+
+    @cached_property
+    def dof(self) -> FloatArray:
+        """Coefficients in each bin, shape (j,)."""
+        return (self.last - self.first).astype(np.float64)
+
     def below(self, frequency: float) -> "BinnedPowers":
         """Return the bins up to ``frequency`` (cycles per sample)."""
         return self.chosen(self.frequency <= frequency)
 
-    def chosen(self, which: BoolArray) -> "BinnedPowers":
+    def chosen(self, which: BoolArray | IntArray) -> "BinnedPowers":
         """Return some of the bins."""
-        return BinnedPowers(
-            self.frequency[which],
-            self.dof[which],
-            self.power[which],
-            self.basis[which],
-            self.cross[which],
-            self.gram[which],
-            self.roles,
-            self.shapes,
+        return replace(
+            self,
+            first=self.first[which],
+            last=self.last[which],
+            length=self.length[which],
+            power=self.power[which],
+            basis=self.basis[which],
+            cross=self.cross[which],
+            gram=self.gram[which],
         )
+
+    def with_column(self, role: str, column: FloatArray) -> "BinnedPowers":
+        """Return the bins with one more term."""
+        return replace(self, basis=np.column_stack([self.basis, column]), roles=(*self.roles, role))
+
+    def means_of(self, power: Callable[[FloatArray, int], FloatArray], nodes: int = 8) -> FloatArray:
+        """Return the mean of an expected power over the coefficients of each bin.
+
+        Parameters
+        ----------
+        power : callable
+            Of coefficient (float array) and number of samples.
+        nodes : int
+            Of the quadrature in wide bins; more where the power varies within a bin.
+        """
+        means = np.empty(self.first.size)
+        width = self.last - self.first
+        for length in np.unique(self.length):
+            own = self.length == length
+            wide = np.flatnonzero(own & (width >= QUADRATURE_FROM))
+            if wide.size:
+                # The sum over k is an integral from k0 - 1/2 to k1 - 1/2 of a function smooth on the scale of the bin.
+                abscissae, weights = np.polynomial.legendre.leggauss(nodes)
+                low, high = self.first[wide] - 0.5, self.last[wide] - 0.5
+                middle, half = (low + high) / 2.0, (high - low) / 2.0
+                means[wide] = power(middle[:, None] + half[:, None] * abscissae, int(length)) @ weights / 2.0
+            narrow = np.flatnonzero(own & (width < QUADRATURE_FROM))
+            if narrow.size:
+                starts = np.concatenate([[0], np.cumsum(width[narrow])])
+                k = np.arange(starts[-1]) - np.repeat(starts[:-1] - self.first[narrow], width[narrow])
+                means[narrow] = np.add.reduceat(power(k.astype(float), int(length)), starts[:-1]) / width[narrow]
+        return means
 
 
 def cosine_transform(values: FloatArray) -> FloatArray:
@@ -102,26 +145,6 @@ def bin_starts(n_samples: int) -> IntArray:
     return np.unique(np.concatenate([singles, edges]))
 
 
-def _bin_means(term: Fluctuation, starts: IntArray, n_samples: int) -> FloatArray:
-    """Mean of the expected power of ``term`` over the coefficients of each bin."""
-    means = np.empty(starts.size - 1)
-    widths = np.diff(starts)
-    wide = widths >= QUADRATURE_FROM
-    if wide.any():
-        # The sum over k is an integral from k0 - 1/2 to k1 - 1/2 of a function smooth on the scale of the bin.
-        first, last = starts[:-1][wide] - 0.5, starts[1:][wide] - 0.5
-        middle, half = (first + last) / 2.0, (last - first) / 2.0
-        nodes = middle[:, None] + half[:, None] * _NODES
-        means[wide] = term.cosine_power(nodes, n_samples) @ _WEIGHTS / 2.0
-    narrow = np.flatnonzero(~wide)
-    if narrow.size:
-        stop = int(starts[narrow[-1] + 1])
-        each = term.cosine_power(np.arange(1, stop, dtype=float), n_samples)
-        sums = np.add.reduceat(each, starts[: narrow[-1] + 1] - 1)
-        means[narrow] = sums[narrow] / widths[narrow]
-    return means
-
-
 def bin_run(values: FloatArray, terms: Sequence[Fluctuation], shapes: Sequence[MeanShape]) -> BinnedPowers:
     """Transform and bin one run.
 
@@ -138,46 +161,44 @@ def bin_run(values: FloatArray, terms: Sequence[Fluctuation], shapes: Sequence[M
     """
     n_samples = values.size
     starts = bin_starts(n_samples)
-    dof = np.diff(starts).astype(float)
+    width = np.diff(starts).astype(float)
     transform = cosine_transform(values)
     offsets = starts[:-1] - 1
     reach = min(n_samples - 1, SHAPE_REACH)
     k = np.arange(1, reach + 1, dtype=float)
     columns = np.array([shape.cosine(k, n_samples) for shape in shapes]).reshape(len(shapes), reach)
     covered = offsets[offsets < reach]
-    cross = np.zeros((dof.size, len(shapes)))
-    gram = np.zeros((dof.size, len(shapes), len(shapes)))
+    cross = np.zeros((width.size, len(shapes)))
+    gram = np.zeros((width.size, len(shapes), len(shapes)))
     for r in range(len(shapes)):
         cross[: covered.size, r] = np.add.reduceat(columns[r] * transform[:reach], covered)
         for s in range(len(shapes)):
             gram[: covered.size, r, s] = np.add.reduceat(columns[r] * columns[s], covered)
     np.square(transform, out=transform)
-    power = np.add.reduceat(transform, offsets) / dof
-    basis = np.column_stack([_bin_means(term, starts, n_samples) for term in terms])
-    frequency = (starts[:-1] + starts[1:] - 1) / (4.0 * n_samples)
-    return BinnedPowers(
-        frequency,
-        dof,
+    power = np.add.reduceat(transform, offsets) / width
+    bins = BinnedPowers(
+        starts[:-1],
+        starts[1:],
+        np.full(width.size, n_samples),
         power,
-        basis,
-        cross / dof[:, None],
-        gram / dof[:, None, None],
-        tuple(term.role for term in terms),
+        np.empty((width.size, 0)),
+        cross / width[:, None],
+        gram / width[:, None, None],
+        (),
         tuple(shape.role for shape in shapes),
     )
+    for term in terms:
+        bins = bins.with_column(term.role, bins.means_of(term.cosine_power))
+    return bins
 
 
 def bin_runs(pieces: Sequence[FloatArray], terms: Sequence[Fluctuation], shapes: Sequence[MeanShape]) -> BinnedPowers:
     """Bin every run; each keeps its own mean, the likelihoods add. Sorted by frequency."""
     parts = [bin_run(piece, terms, shapes) for piece in pieces]
-    order = np.argsort(np.concatenate([part.frequency for part in parts]), kind="stable")
-    return BinnedPowers(
-        np.concatenate([part.frequency for part in parts])[order],
-        np.concatenate([part.dof for part in parts])[order],
-        np.concatenate([part.power for part in parts])[order],
-        np.concatenate([part.basis for part in parts])[order],
-        np.concatenate([part.cross for part in parts])[order],
-        np.concatenate([part.gram for part in parts])[order],
-        parts[0].roles,
-        parts[0].shapes,
-    )
+
+    def joined(name: str) -> Any:  # noqa: ANN401  an array of the type of the field
+        return np.concatenate([getattr(part, name) for part in parts])
+
+    fields = ("first", "last", "length", "power", "basis", "cross", "gram")
+    whole = replace(parts[0], **{name: joined(name) for name in fields})
+    return whole.chosen(np.argsort(whole.frequency, kind="stable"))

@@ -9,6 +9,8 @@ from stillbench.foundation.arrays import BoolArray, FloatArray
 from stillbench.likelihood.bins import BinnedPowers
 from stillbench.likelihood.fit import Fit
 from stillbench.likelihood.profile import profile_limits, shape_limits
+from stillbench.likelihood.response import OUTPUT
+from stillbench.terms.mixture import term_of
 
 WALKERS = 32
 STEPS = 400
@@ -30,16 +32,32 @@ class FittedModel:
         Mean shapes in the model.
     sample_interval : float
         s.
+    correlation_time : float or None
+        Of the correlated term, samples.
+    family : tuple of BinnedPowers
+        The same data with other correlation times near the best one: intervals take the best of them at every point.
     """
 
     bins: BinnedPowers
     fit: Fit
     shapes: BoolArray
     sample_interval: float
+    correlation_time: float | None = None
+    family: tuple[BinnedPowers, ...] = ()
 
     def weights(self, by_role: Mapping[str, float]) -> FloatArray:
-        """Return weights in the order of the terms; roles not in the model count nothing."""
-        return np.array([by_role.get(role, 0.0) for role in self.bins.roles])
+        """Return weights in the order of the terms; roles not in the model count nothing.
+
+        White noise behind a filter of the sensor is part of the white level.
+        """
+        level = {OUTPUT: by_role.get("white", 0.0), **by_role}
+        return np.array([level.get(role, 0.0) for role in self.bins.roles])
+
+    def variance_weights(self, factor: int) -> FloatArray:
+        """Return the weights that give the Allan variance at an averaging factor."""
+        at = np.array(float(factor))
+        roles = [role for role in self.bins.roles if role != OUTPUT]
+        return self.weights({role: float(term_of(role, self.correlation_time).allan_variance(at)) for role in roles})
 
     def amplitude(self, weights: FloatArray) -> float:
         """Return sqrt(weights @ theta) at the maximum."""
@@ -47,7 +65,7 @@ class FittedModel:
 
     def limits(self, weights: FloatArray, threshold: float) -> tuple[float, float]:
         """Return the profile-likelihood interval of sqrt(weights @ theta)."""
-        return profile_limits(self.bins, self.fit, weights, threshold, shapes=self.shapes)
+        return profile_limits(self.bins, self.fit, weights, threshold, shapes=self.shapes, family=self.family)
 
     def shape_limits(self, role: str, threshold: float) -> tuple[float, float, float]:
         """Return estimate and interval of a mean shape, per sample."""

@@ -1,6 +1,6 @@
 """Profile-likelihood intervals of linear functions of the squared coefficients, and of a mean shape."""
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 
 import numpy as np
 
@@ -29,6 +29,7 @@ def profile_limits(
     *,
     terms: BoolArray | None = None,
     shapes: BoolArray | None = None,
+    family: Sequence[BinnedPowers] = (),
 ) -> tuple[float, float]:
     """Return the ends of the profile-likelihood interval of sqrt(weights @ theta).
 
@@ -43,6 +44,8 @@ def profile_limits(
         Of 2 (l - l_min).
     terms, shapes
         As for ``maximise``.
+    family : sequence of BinnedPowers
+        The same data with the basis at other values of a parameter that is free: the best of them counts at every point.
 
     Returns
     -------
@@ -57,8 +60,11 @@ def profile_limits(
 
     def rise(amplitude: float) -> float:
         held = Constraint(weights, amplitude**2)
-        fit = maximise(bins, terms=terms, shapes=shapes, constraint=held, start=best.theta)
-        return 2.0 * (fit.objective - best.objective) - threshold
+        least = min(
+            maximise(one, terms=terms, shapes=shapes, constraint=held, start=best.theta).objective
+            for one in (bins, *family)
+        )
+        return 2.0 * (least - best.objective) - threshold
 
     # A first guess of the scale from the curvature at the maximum.
     covariance = np.linalg.pinv(best.information)

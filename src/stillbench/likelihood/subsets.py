@@ -32,7 +32,9 @@ def chi_bar_quantile(dropped: int, significance: float = SIGNIFICANCE) -> float:
     return float(brentq(excess, 1e-6, 100.0))
 
 
-def smallest_accepted(bins: BinnedPowers, full: Fit, *, shapes: BoolArray | None = None) -> list[tuple[str, ...]]:
+def smallest_accepted(
+    bins: BinnedPowers, full: Fit, *, shapes: BoolArray | None = None, required: Sequence[str] = ()
+) -> list[tuple[str, ...]]:
     """Return the smallest sets of terms whose likelihood is not significantly below that of the full model.
 
     Parameters
@@ -42,6 +44,8 @@ def smallest_accepted(bins: BinnedPowers, full: Fit, *, shapes: BoolArray | None
         With all terms, restricted.
     shapes
         As for ``maximise``.
+    required : sequence of str
+        Roles that stay in every set.
 
     Returns
     -------
@@ -49,10 +53,13 @@ def smallest_accepted(bins: BinnedPowers, full: Fit, *, shapes: BoolArray | None
         Sets of roles, none of which contains another; several when the log cannot tell them apart.
     """
     count = len(bins.roles)
+    needed = {bins.roles.index(role) for role in required}
     accepted: list[frozenset[int]] = []
     for size in range(1, count + 1):
         for chosen in itertools.combinations(range(count), size):
             candidate = frozenset(chosen)
+            if not needed <= candidate:
+                continue
             if any(smaller <= candidate for smaller in accepted):
                 continue
             if size == count:

@@ -10,7 +10,14 @@ from stillbench.vocabulary.noise_model import NOT_OBSERVABLE, RESOLVED, UPPER_BO
 from stillbench.vocabulary.quantity import QUANTITIES, role_of
 from stillbench.vocabulary.verdict import CONFORMS, FAILS, UNDECIDED, Verdict
 
-SYMBOLS: Mapping[str, str] = {"quantization": "Q", "white": "N", "flicker": "B", "walk": "K", "ramp": "R"}
+SYMBOLS: Mapping[str, str] = {
+    "quantization": "Q",
+    "white": "N",
+    "flicker": "B",
+    "correlated": "G",
+    "walk": "K",
+    "ramp": "R",
+}
 ASCII_MARKS: Mapping[str, str] = {CONFORMS: "[#]", FAILS: "[ ]", UNDECIDED: "[/]"}
 SURE = 0.999
 

@@ -10,12 +10,14 @@ C. A. Greenhall, "Recipes for degrees of freedom of frequency stability estimato
 994; generalized autocovariance from memory, formulas derived here and checked against exact white-noise values.
 """
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 
 import numpy as np
 
 from stillbench.foundation.arrays import FloatArray, IntArray
-from stillbench.terms.catalogue import BY_ROLE, SHAPE_BY_ROLE
+from stillbench.terms.base import Fluctuation
+from stillbench.terms.catalogue import SHAPE_BY_ROLE
+from stillbench.terms.mixture import Mixture
 
 SECOND_DIFFERENCE_PRODUCT = np.array([1.0, -4.0, 6.0, -4.0, 1.0])
 """Autocorrelation of the weights (1, -2, 1)."""
@@ -30,12 +32,12 @@ REACH = 8
 """Lags beyond this many averaging times are left out: white and walk end at 2, flicker falls as lag^-4."""
 
 
-def pair_covariance(theta: Mapping[str, float], factor: int, lag: FloatArray) -> FloatArray:
+def pair_covariance(parts: Sequence[tuple[float, Fluctuation]], factor: int, lag: FloatArray) -> FloatArray:
     """Return the covariance of two normalised second differences of the angle, ``lag`` samples apart.
 
     Parameters
     ----------
-    theta : mapping of role to squared unit-sample coefficient
+    parts : sequence of (squared unit-sample coefficient, term)
     factor : int
         Averaging factor m, samples.
     lag : (l,) float array
@@ -47,10 +49,7 @@ def pair_covariance(theta: Mapping[str, float], factor: int, lag: FloatArray) ->
         R(l), where R(0) is the Allan variance.
     """
     total = np.zeros(np.shape(lag))
-    for role, square in theta.items():
-        if square == 0 or role not in BY_ROLE:
-            continue
-        term = BY_ROLE[role]
+    for square, term in parts:
         for offset, product in zip(range(-2, 3), SECOND_DIFFERENCE_PRODUCT, strict=True):
             total += square * product * term.covariance(lag + offset * factor)
     return total / (2.0 * factor**2)
@@ -66,15 +65,13 @@ def _lags(factor: int, n_pairs: int) -> tuple[FloatArray, FloatArray]:
     return lags, 2.0 * np.diff(edges)
 
 
-def _mean_square_variance(
-    theta: Mapping[str, float], fixed: float, factor: int, pairs: FloatArray
-) -> tuple[float, float]:
+def _mean_square_variance(mixture: Mixture, fixed: float, factor: int, pairs: FloatArray) -> tuple[float, float]:
     """Return R(0) and Var[mean of (second difference + c)^2], c^2 = ``fixed``, over runs with ``pairs`` pairs each.
 
     Var = 2/M^2 sum_l (M - |l|) (R(l)^2 + 2 c^2 R(l)).
     """
-    smooth = {role: square for role, square in theta.items() if role != "quantization"}
-    spikes = {role: square for role, square in theta.items() if role == "quantization"}
+    smooth = [part for part in mixture.parts if part[1].role != "quantization"]
+    spikes = [part for part in mixture.parts if part[1].role == "quantization"]
 
     def weighted(lags: FloatArray, weights: FloatArray, values: FloatArray) -> float:
         overlap = np.clip(pairs[:, None] - lags, 0.0, None).sum(axis=0)
@@ -84,7 +81,7 @@ def _mean_square_variance(
     course = pair_covariance(smooth, factor, lags)
     total = weighted(lags, weights, course**2 + 2.0 * fixed * course)
     variance = float(course[0])
-    if any(spikes.values()):
+    if spikes:
         # White noise in the angle correlates at 0, m and 2m only; a strided sum would count these spikes too often.
         where = np.array([0.0, factor, 2.0 * factor])
         below = pair_covariance(smooth, factor, where)
@@ -95,15 +92,13 @@ def _mean_square_variance(
     return variance, 2.0 * total / float(pairs.sum()) ** 2
 
 
-def curve_edf(theta: Mapping[str, float], slope: float, factors: IntArray, run_lengths: Sequence[int]) -> FloatArray:
+def curve_edf(mixture: Mixture, factors: IntArray, run_lengths: Sequence[int]) -> FloatArray:
     """Return the equivalent degrees of freedom of the overlapping Allan variance pooled over runs.
 
     Parameters
     ----------
-    theta : mapping of role to squared unit-sample coefficient
-        Of the random terms.
-    slope : float
-        Ramp per sample, which adds a fixed part to every second difference.
+    mixture : Mixture
+        Its ramp adds a fixed part to every second difference.
     factors : (k,) int array
         Averaging factors.
     run_lengths : sequence of int
@@ -117,16 +112,7 @@ def curve_edf(theta: Mapping[str, float], slope: float, factors: IntArray, run_l
     edf = np.empty(factors.size)
     for i, factor in enumerate(int(m) for m in factors):
         pairs = np.array([n - 2 * factor + 1 for n in run_lengths if n >= 2 * factor], dtype=float)
-        fixed = slope**2 * float(SHAPE_BY_ROLE["ramp"].allan_variance(np.array(float(factor))))
-        variance, spread = _mean_square_variance(theta, fixed, factor, pairs)
+        fixed = mixture.slope**2 * float(SHAPE_BY_ROLE["ramp"].allan_variance(np.array(float(factor))))
+        variance, spread = _mean_square_variance(mixture, fixed, factor, pairs)
         edf[i] = max(1.0, 2.0 * (variance + fixed) ** 2 / spread) if spread > 0 else 1.0
     return edf
-
-
-def model_variance(theta: Mapping[str, float], slope: float, factors: IntArray) -> FloatArray:
-    """Return the Allan variance of a model at averaging factors, unit samples; shape (k,)."""
-    samples = factors.astype(float)
-    total = slope**2 * SHAPE_BY_ROLE["ramp"].allan_variance(samples)
-    for role, square in theta.items():
-        total = total + square * BY_ROLE[role].allan_variance(samples)
-    return np.asarray(total)

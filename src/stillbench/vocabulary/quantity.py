@@ -8,15 +8,23 @@ Names of the terms: IEEE Std 952 (rate gyros) and IEEE Std 1293 (accelerometers)
 from collections.abc import Mapping
 from dataclasses import dataclass
 
-ROLES = ("quantization", "white", "flicker", "walk", "ramp")
+ROLES = ("quantization", "white", "correlated", "flicker", "walk", "ramp")
 """Roles of the noise terms, in the order in which they rule from short to long averaging times."""
 
-TIME_POWERS: Mapping[str, float] = {"quantization": 1.0, "white": 0.5, "flicker": 0.0, "walk": -0.5, "ramp": -1.0}
+TIME_POWERS: Mapping[str, float] = {
+    "quantization": 1.0,
+    "white": 0.5,
+    "correlated": 0.0,
+    "flicker": 0.0,
+    "walk": -0.5,
+    "ramp": -1.0,
+}
 """Unit of a coefficient = unit of the quantity times seconds to this power."""
 
 SI_SUFFIX: Mapping[str, str] = {
     "quantization": "*s",
     "white": "*sqrt(s)",
+    "correlated": "",
     "flicker": "",
     "walk": "/sqrt(s)",
     "ramp": "/s",
@@ -78,7 +86,13 @@ _SPOKEN_WITH: Mapping[str, Mapping[str, str]] = {
     "count": {"ramp": "count/h"},
 }
 
-_PLAIN = {"white": "white_noise", "flicker": "flicker_noise", "walk": "random_walk", "ramp": "ramp"}
+_PLAIN = {
+    "white": "white_noise",
+    "correlated": "exponentially_correlated",
+    "flicker": "flicker_noise",
+    "walk": "random_walk",
+    "ramp": "ramp",
+}
 
 ANGULAR_RATE = Quantity(
     "angular rate",
@@ -86,6 +100,7 @@ ANGULAR_RATE = Quantity(
     {
         "quantization": "quantization_noise",
         "white": "angle_random_walk",
+        "correlated": "exponentially_correlated",
         "flicker": "bias_instability",
         "walk": "rate_random_walk",
         "ramp": "rate_ramp",
@@ -93,6 +108,7 @@ ANGULAR_RATE = Quantity(
     {
         "quantization": "arcsec",
         "white": "deg/sqrt(h)",
+        "correlated": "deg/h",
         "flicker": "deg/h",
         "walk": "deg/h/sqrt(h)",
         "ramp": "deg/h/h",
@@ -105,6 +121,7 @@ ACCELERATION = Quantity(
     {
         "quantization": "quantization_noise",
         "white": "velocity_random_walk",
+        "correlated": "exponentially_correlated",
         "flicker": "bias_instability",
         "walk": "acceleration_random_walk",
         "ramp": "acceleration_ramp",
@@ -112,6 +129,7 @@ ACCELERATION = Quantity(
     {
         "quantization": "m/s",
         "white": "m/s/sqrt(h)",
+        "correlated": "ug",
         "flicker": "ug",
         "walk": "ug/sqrt(h)",
         "ramp": "ug/h",

@@ -48,7 +48,7 @@ class Requirement(BaseModel):
     @field_validator("quantity")
     @classmethod
     def _known_quantity(cls, name: str) -> str:
-        known = [*OTHER_QUANTITIES, *term_names(), "exponentially correlated"]
+        known = [*OTHER_QUANTITIES, *term_names()]
         plain = name.replace("_", " ").strip()
         if plain not in known:
             hint = did_you_mean(plain, known) or f"known: {', '.join(sorted(known))}"

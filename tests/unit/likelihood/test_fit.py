@@ -11,6 +11,7 @@ from stillbench.likelihood.quadratic import solve_nonnegative
 from stillbench.likelihood.subsets import chi_bar_quantile
 from stillbench.likelihood.whitened import whitened_kurtosis
 from stillbench.terms.catalogue import BY_ROLE, MEAN_SHAPES
+from stillbench.terms.mixture import Mixture
 
 TERMS = [BY_ROLE[role] for role in ("white", "flicker", "walk")]
 
@@ -125,9 +126,9 @@ def test_chi_bar_quantiles() -> None:
 def test_kurtosis_of_a_whitened_log() -> None:
     log = made_noise(100_000, 6, white=1.0, walk=0.01)
     theta = {"white": 1.0, "walk": 1e-4}
-    assert whitened_kurtosis(log, theta) == pytest.approx(3.0, abs=4 * np.sqrt(24 / 100_000))
+    assert whitened_kurtosis(log, Mixture(theta)) == pytest.approx(3.0, abs=4 * np.sqrt(24 / 100_000))
     heavy = np.random.default_rng(1).standard_t(5, 100_000)  # kurtosis 9
-    assert whitened_kurtosis(heavy, {"white": 5 / 3}) > 5
+    assert whitened_kurtosis(heavy, Mixture({"white": 5 / 3})) > 5
 
 
 def test_posterior_draws_agree_with_the_likelihood() -> None:

@@ -9,8 +9,9 @@ from scipy import integrate, stats
 from stillbench.likelihood.bins import bin_run, bin_starts, cosine_transform
 from stillbench.terms.base import Fluctuation
 from stillbench.terms.catalogue import BY_ROLE, FLUCTUATIONS, SHAPE_BY_ROLE
-from stillbench.terms.covariance import curve_edf, model_variance, pair_covariance
+from stillbench.terms.covariance import curve_edf, pair_covariance
 from stillbench.terms.flicker import mean_correction
+from stillbench.terms.mixture import Mixture
 
 CERTAINTY = 0.9999
 
@@ -18,14 +19,14 @@ CERTAINTY = 0.9999
 @pytest.mark.parametrize("role", ["white", "walk", "quantization"])
 @pytest.mark.parametrize("factor", [1, 2, 7, 100])
 def test_allan_variance_follows_from_the_covariance(role: str, factor: int) -> None:
-    rule = pair_covariance({role: 1.0}, factor, np.array([0.0]))[0]
+    rule = pair_covariance(Mixture({role: 1.0}).parts, factor, np.array([0.0]))[0]
     assert rule == pytest.approx(float(BY_ROLE[role].allan_variance(np.array(float(factor)))), rel=1e-12)
 
 
 @pytest.mark.parametrize("factor", [100, 1_000])
 def test_flicker_floor_follows_from_the_covariance(factor: int) -> None:
     """0.6643 B: sqrt(2 ln 2/pi), IEEE Std 952 annex C (from memory)."""
-    rule = np.sqrt(pair_covariance({"flicker": 1.0}, factor, np.array([0.0]))[0])
+    rule = np.sqrt(pair_covariance(Mixture({"flicker": 1.0}).parts, factor, np.array([0.0]))[0])
     assert f"{rule:.4f}" == "0.6643"
     assert np.sqrt(BY_ROLE["flicker"].allan_variance(np.array(float(factor)))) == pytest.approx(rule, rel=1e-9)
 
@@ -126,13 +127,13 @@ def test_powers_add_up_to_the_sum_of_squares() -> None:
 
 def test_a_ramp_raises_the_degrees_of_freedom() -> None:
     factors = np.array([50])
-    without = curve_edf({"white": 1.0}, 0.0, factors, [1_000])[0]
-    steep = curve_edf({"white": 1.0}, 1.0, factors, [1_000])[0]
+    without = curve_edf(Mixture({"white": 1.0}), factors, [1_000])[0]
+    steep = curve_edf(Mixture({"white": 1.0}, 1.0), factors, [1_000])[0]
     assert steep > 10 * without
-    assert model_variance({"white": 1.0}, 1.0, factors)[0] == pytest.approx(1 / 50 + 50**2 / 2)
+    assert Mixture({"white": 1.0}, 1.0).allan_variance(factors)[0] == pytest.approx(1 / 50 + 50**2 / 2)
 
 
 def test_pooled_degrees_of_freedom_of_equal_runs_add() -> None:
-    one = curve_edf({"white": 1.0, "walk": 1e-4}, 0.0, np.array([20]), [1_000])[0]
-    four = curve_edf({"white": 1.0, "walk": 1e-4}, 0.0, np.array([20]), [1_000] * 4)[0]
+    one = curve_edf(Mixture({"white": 1.0, "walk": 1e-4}), np.array([20]), [1_000])[0]
+    four = curve_edf(Mixture({"white": 1.0, "walk": 1e-4}), np.array([20]), [1_000] * 4)[0]
     assert four == pytest.approx(4 * one, rel=1e-12)
