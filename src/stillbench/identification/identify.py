@@ -5,18 +5,22 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from stillbench.foundation.arrays import BoolArray, FloatArray
+from stillbench.foundation.arrays import FloatArray
 from stillbench.foundation.progress import SILENT, Progress
-from stillbench.identification.band import CORNER_OVER_TOP, NYQUIST, Band, largest_band
+from stillbench.identification.band import CORNER_OVER_TOP, NYQUIST, Band
+from stillbench.identification.choice import RAMP_RATIO, Choice, choose_model
+from stillbench.identification.second_opinion import curve_estimates
 from stillbench.identification.textbook import read_textbook
 from stillbench.likelihood.bins import BinnedPowers, bin_runs
-from stillbench.likelihood.fit import Fit, maximise
+from stillbench.likelihood.fit import Fit
 from stillbench.likelihood.fitted import FittedModel
 from stillbench.likelihood.goodness import goodness_of_fit
-from stillbench.likelihood.profile import likelihood_threshold, profile_limits, shape_limits
+from stillbench.likelihood.profile import likelihood_threshold
+from stillbench.likelihood.response import AVERAGE, OUTPUT, FilterFit
 from stillbench.likelihood.subsets import smallest_accepted
 from stillbench.likelihood.whitened import whitened_kurtosis
 from stillbench.terms.catalogue import BY_ROLE, FLUCTUATIONS, MEAN_SHAPES
+from stillbench.terms.correlated import CorrelatedNoise
 from stillbench.terms.mixture import Mixture
 from stillbench.vocabulary.deviation_curve import DeviationCurve
 from stillbench.vocabulary.finding import Finding
@@ -31,11 +35,11 @@ from stillbench.vocabulary.noise_model import (
     NoiseTerm,
     Response,
 )
-from stillbench.vocabulary.quantity import QUANTITIES, TIME_POWERS, Quantity
+from stillbench.vocabulary.quantity import QUANTITIES, ROLES, TIME_POWERS, Quantity
 from stillbench.vocabulary.record import Record
 
-RAMP_RATIO = 9.0
-"""Likelihood ratio from which a ramp is accepted; a Wald ratio is not safe, a random walk looks like a trend."""
+SETTLED = 15.0
+"""Averaging time times 2 pi corner above which a low-pass lowers the deviation by less than 2 %."""
 POOR_FIT = 3.0
 DROOPING = 0.8
 """Power in the top octave, over what the terms give, below which the sensor is taken to be filtered."""
@@ -96,60 +100,105 @@ def identify_noise(
     quantity = QUANTITIES[record.quantity]
     terms = [BY_ROLE[role] for role in roles_of(record)]
     bins = bin_runs(record.pieces(), terms, MEAN_SHAPES)
-    progress.step(0.3)
-    threshold = likelihood_threshold(coverage)
-    no_shape = np.zeros(len(bins.shapes), dtype=bool)
-    # First the ramp in the full band, then the band with the ramp if there is one.
-    ramp = bins.shapes.index("ramp")
-    shapes = no_shape.copy()
-    shapes[ramp] = shape_limits(bins, ramp, threshold)[3] > RAMP_RATIO
-    band = largest_band(bins, shapes)
+    progress.step(0.2)
+    choice = choose_model(bins, coverage)
     progress.step(0.5)
-    used = bins.below(band.top)
-    estimate, lower, upper, ratio = shape_limits(used, ramp, threshold)
-    shapes = no_shape.copy()
-    shapes[ramp] = ratio > RAMP_RATIO
-    full = maximise(used, shapes=shapes)
-    if shapes[ramp]:
-        estimate = float(full.beta[ramp])
-    goodness = goodness_of_fit(used, full.spectrum)
-    excess = _power_above(bins, full, band)
-    accepted = smallest_accepted(used, full, shapes=shapes)
+    found = choice.correlation
+    fitted = FittedModel(
+        choice.bins,
+        choice.fit,
+        choice.shapes,
+        record.sample_interval,
+        found.time if found else None,
+        found.family if found else (),
+    )
+    accepted = [
+        tuple(role for role in chosen if role != OUTPUT)
+        for chosen in smallest_accepted(
+            choice.bins,
+            choice.fit,
+            shapes=choice.shapes,
+            required=[role for role in (CorrelatedNoise.role, OUTPUT) if role in choice.bins.roles],
+        )
+    ]
     progress.step(0.7)
-    longest = max(record.pieces(), key=len)
-    theta = dict(zip(used.roles, full.theta.tolist(), strict=True))
-    kurtosis = whitened_kurtosis(longest, Mixture(theta)) if band.full else 3.0
-    limits = {
-        role: profile_limits(used, full, np.eye(len(used.roles))[i], threshold, shapes=shapes)
-        for i, role in enumerate(used.roles)
-    }
-    limits["white"] = _widened(limits["white"], full, used, kurtosis, threshold)
-    made = {role: _term(role, i, full, limits[role], accepted, record, quantity) for i, role in enumerate(used.roles)}
-    made["ramp"] = _ramp_term(estimate, lower, upper, ratio, record, quantity)
+    kurtosis = _kurtosis(record, fitted, choice)
+    made = _terms(fitted, accepted, coverage, kurtosis, record, quantity, choice)
     made = _observable(made, record, findings)
     readings = read_textbook(curve, record.duration)
+    second = curve_estimates(record, fitted, coverage) if choice.low_pass is None and choice.band.full else {}
     named = {
-        quantity.terms[role]: replace(term, textbook=readings.get(role))
+        quantity.terms[role]: replace(term, textbook=readings.get(role), curve_estimate=second.get(role))
         for role, term in made.items()
         if role != "quantization" or any("quantization" in chosen for chosen in accepted)
     }
     names = [tuple(quantity.terms[role] for role in chosen) for chosen in accepted]
-    if shapes[ramp]:
+    ramp = choice.bins.shapes.index("ramp")
+    if choice.shapes[ramp]:
         names = [(*chosen, quantity.terms["ramp"]) for chosen in names]
+    goodness = goodness_of_fit(choice.bins, choice.fit.spectrum)
+    excess = _power_above(choice)
     model = NoiseModel(
         named,
         (),
         tuple(names),
-        _band_hz(band, record),
-        _response(band, excess, record),
+        _band_hz(choice.band, record),
+        _response(choice, excess, record),
         goodness,
-        _information(used, full, record, quantity),
-        _spectrum(bins, full, shapes, record),
+        _information(choice.bins, choice.fit, record, quantity),
+        _spectrum(choice, record),
         kurtosis,
     )
     progress.step(1.0)
-    fitted = FittedModel(used, full, shapes, record.sample_interval)
-    return Identification(model, tuple(_findings(band, excess, goodness, record, quantity)), fitted)
+    return Identification(model, tuple(_findings(model, choice, excess, record, quantity)), fitted)
+
+
+def _kurtosis(record: Record, fitted: FittedModel, choice: Choice) -> float:
+    """Kurtosis of the whitened log; 3 where the white noise at single samples is not in the model."""
+    if not choice.band.full or choice.low_pass is not None:
+        return 3.0
+    theta = dict(zip(fitted.bins.roles, fitted.fit.theta.tolist(), strict=True))
+    return whitened_kurtosis(max(record.pieces(), key=len), Mixture(theta, 0.0, fitted.correlation_time))
+
+
+def _terms(
+    fitted: FittedModel,
+    accepted: Sequence[tuple[str, ...]],
+    coverage: float,
+    kurtosis: float,
+    record: Record,
+    quantity: Quantity,
+    choice: Choice,
+) -> dict[str, NoiseTerm]:
+    """Return the terms by role, in the order of the catalogue of roles."""
+    threshold = likelihood_threshold(coverage)
+    made = {}
+    for role in ROLES:
+        if role not in fitted.bins.roles:
+            continue
+        weights = fitted.weights({role: 1.0})
+        limits = fitted.limits(weights, threshold)
+        if role == "white":
+            limits = _widened(limits, fitted.amplitude(weights), float(fitted.bins.dof.sum()), kurtosis, threshold)
+        made[role] = _term(role, fitted.amplitude(weights), limits, accepted, record, quantity)
+    found = choice.correlation
+    if found is not None:
+        interval = record.sample_interval
+        ends = {"correlation_time_lower_s": found.lower, "correlation_time_upper_s": found.upper}
+        made["correlated"] = replace(
+            made["correlated"],
+            parameters={
+                "correlation_time_s": found.time * interval,
+                **{name: end * interval for name, end in ends.items() if np.isfinite(end)},
+            },
+            because=f"correlation time {found.time * interval:.3g} s, likelihood ratio {found.ratio:.1f} against none",
+        )
+    estimate, lower, upper, ratio = choice.ramp
+    ramp = choice.bins.shapes.index("ramp")
+    if choice.shapes[ramp]:
+        estimate = float(choice.fit.beta[ramp])
+    made["ramp"] = _ramp_term(estimate, lower, upper, ratio, record, quantity)
+    return made
 
 
 def to_si(role: str, interval: float) -> float:
@@ -158,12 +207,10 @@ def to_si(role: str, interval: float) -> float:
 
 
 def _widened(
-    limits: tuple[float, float], full: Fit, bins: BinnedPowers, kurtosis: float, threshold: float
+    limits: tuple[float, float], estimate: float, n_samples: float, kurtosis: float, threshold: float
 ) -> tuple[float, float]:
     """Widen the interval of the white noise by the variance (kurtosis - 3)/n of ln N^2 that heavy tails add."""
-    n_samples = float(bins.dof.sum())
     excess = max(0.0, kurtosis - 3.0) / n_samples
-    estimate = float(np.sqrt(full.theta[bins.roles.index("white")]))
     lower, upper = limits
     if excess == 0 or estimate == 0:
         return limits
@@ -175,15 +222,14 @@ def _widened(
 
 def _term(
     role: str,
-    index: int,
-    full: Fit,
+    amplitude: float,
     limits: tuple[float, float],
     accepted: Sequence[tuple[str, ...]],
     record: Record,
     quantity: Quantity,
 ) -> NoiseTerm:
     factor = to_si(role, record.sample_interval)
-    coefficient = float(np.sqrt(full.theta[index])) * factor
+    coefficient = amplitude * factor
     lower, upper = limits[0] * factor, limits[1] * factor
     count = sum(role in chosen for chosen in accepted)
     if count == len(accepted) and lower > 0:
@@ -245,36 +291,43 @@ def _band_hz(band: Band, record: Record) -> tuple[float, float]:
     return 1.0 / (2.0 * longest), band.top / record.sample_interval
 
 
-def _power_above(bins: BinnedPowers, full: Fit, band: Band) -> float:
+def _power_above(choice: Choice) -> float:
     """Return the power in the top octave of the full band over what the terms fitted below give there."""
-    top = bins.frequency > NYQUIST / 2.0
-    if band.full or not top.any():
+    top = choice.whole.frequency > NYQUIST / 2.0
+    if choice.band.full or choice.low_pass is not None or not top.any():
         return 1.0
-    expected = float(bins.dof[top] @ (bins.basis[top] @ full.theta))
-    return float(bins.dof[top] @ bins.power[top]) / expected if expected > 0 else np.inf
+    dof, power = choice.whole.dof[top], choice.whole.power[top]
+    expected = float(dof @ (choice.whole.basis[top] @ choice.fit.theta))
+    return float(dof @ power) / expected if expected > 0 else np.inf
 
 
-def _response(band: Band, excess: float, record: Record) -> Response | None:
-    if band.full or excess > DROOPING:
+def _response(choice: Choice, excess: float, record: Record) -> Response | None:
+    if choice.low_pass is not None:
+        return Response(choice.low_pass.shape.words, choice.low_pass.corner / record.sample_interval)
+    if choice.band.full or excess > DROOPING:
         return None
-    return Response("low-pass, shape not fitted", CORNER_OVER_TOP * band.top / record.sample_interval)
+    return Response("low-pass, shape not fitted", CORNER_OVER_TOP * choice.band.top / record.sample_interval)
 
 
 def _information(bins: BinnedPowers, full: Fit, record: Record, quantity: Quantity) -> Information:
-    """Fisher information of the squared coefficients in SI."""
-    scale = np.array([to_si(role, record.sample_interval) ** 2 for role in bins.roles])
-    matrix = full.information / np.outer(scale, scale)
-    return Information(tuple(quantity.terms[role] for role in bins.roles), matrix)
+    """Fisher information of the squared coefficients in SI; noise behind a filter of the sensor is left free."""
+    kept = np.array([role != OUTPUT for role in bins.roles])
+    covariance = np.linalg.pinv(full.information, hermitian=True)
+    matrix = np.linalg.pinv(covariance[np.ix_(kept, kept)], hermitian=True) if not kept.all() else full.information
+    roles = [role for role in bins.roles if role != OUTPUT]
+    scale = np.array([to_si(role, record.sample_interval) ** 2 for role in roles])
+    return Information(tuple(quantity.terms[role] for role in roles), matrix / np.outer(scale, scale))
 
 
-def _spectrum(bins: BinnedPowers, full: Fit, shapes: BoolArray, record: Record) -> Bins:
+def _spectrum(choice: Choice, record: Record) -> Bins:
     """Powers of all bins (the whole band), shapes taken off, with the fitted model, as two-sided densities in SI."""
-    power = bins.power.copy()
-    if shapes.any():
-        beta = np.where(shapes, full.beta, 0.0)
-        power = power - 2.0 * bins.cross @ beta + np.einsum("r,jrs,s->j", beta, bins.gram, beta)
+    whole, fit = choice.whole, choice.fit
+    power = whole.power.copy()
+    if choice.shapes.any():
+        beta = np.where(choice.shapes, fit.beta, 0.0)
+        power = power - 2.0 * whole.cross @ beta + np.einsum("r,jrs,s->j", beta, whole.gram, beta)
     frequency, dof, power, model = _merged(
-        bins.frequency, bins.dof, np.maximum(power, 0.0), bins.basis @ full.theta, len(record.runs)
+        whole.frequency, whole.dof, np.maximum(power, 0.0), whole.basis @ fit.theta, len(record.runs)
     )
     interval = record.sample_interval
     return Bins(frequency / interval, dof, power * interval, model * interval)
@@ -296,10 +349,26 @@ def _merged(
     return mean(frequency), total, mean(power), mean(model)
 
 
-def _findings(band: Band, excess: float, goodness: float, record: Record, quantity: Quantity) -> list[Finding]:
+def _findings(model: NoiseModel, choice: Choice, excess: float, record: Record, quantity: Quantity) -> list[Finding]:
+    band, goodness = choice.band, model.goodness
     findings = []
     top = band.top / record.sample_interval
-    if not band.full:
+    if choice.low_pass is not None and model.response is not None and model.response.corner is not None:
+        corner = model.response.corner
+        findings.append(
+            Finding(
+                "low_pass",
+                None,
+                None,
+                corner,
+                "Hz",
+                excluded=False,
+                because=f"the spectrum falls towards the top of the band as behind {_named_shape(choice.low_pass, record)}",
+                disposition="fitted with the noise; the white noise given is its level below the corner, and the terms hold"
+                f" for averaging times above {SETTLED / (2.0 * np.pi * corner):.3g} s",
+            )
+        )
+    elif not band.full:
         drooping = excess <= DROOPING
         corner = CORNER_OVER_TOP * top
         findings.append(
@@ -312,7 +381,7 @@ def _findings(band: Band, excess: float, goodness: float, record: Record, quanti
                 excluded=True,
                 because=(
                     f"the spectrum falls towards the top of the band, to {100 * excess:.2g} % of what the terms give: a"
-                    f" low-pass in the sensor, corner about {corner:.2g} Hz, shape not fitted"
+                    f" low-pass in the sensor, corner about {corner:.2g} Hz, shape not known"
                     if drooping
                     else f"the terms do not explain the spectrum above {2 * top:.3g} Hz (goodness of fit {band.misfit:.1f};"
                     f" power in the top octave {excess:.3g} times theirs)"
@@ -334,6 +403,7 @@ def _findings(band: Band, excess: float, goodness: float, record: Record, quanti
                 " residuals for a line, a bump or a drift",
             )
         )
+    findings += _disagreements(model)
     longest = max(run.n_samples for run in record.runs)
     if longest < SHORT:
         name = quantity.terms["flicker"].replace("_", " ")
@@ -349,4 +419,39 @@ def _findings(band: Band, excess: float, goodness: float, record: Record, quanti
                 disposition=f"only the white noise is given; {name} and slower terms are not observable",
             )
         )
+    return findings
+
+
+def _named_shape(found: FilterFit, record: Record) -> str:
+    if found.shape is AVERAGE:
+        return f"a moving average of {found.parameter:.0f} samples ({found.parameter * record.sample_interval:.3g} s)"
+    return f"a low-pass of {found.shape.words}, corner {found.corner / record.sample_interval:.3g} Hz"
+
+
+def _disagreements(model: NoiseModel) -> list[Finding]:
+    """Terms on which the fit and the curve differ by more than their joint uncertainty."""
+    findings = []
+    for name, term in model.terms.items():
+        second = term.curve_estimate
+        if second is None or term.coefficient is None or term.lower is None or term.upper is None:
+            continue
+        above = second.coefficient > term.coefficient
+        own = term.upper - term.coefficient if above else term.coefficient - term.lower
+        other = second.coefficient - second.lower if above else second.upper - second.coefficient
+        allowed = float(np.hypot(own, other))
+        apart = abs(second.coefficient - term.coefficient)
+        if apart > allowed > 0 and term.state == RESOLVED:
+            findings.append(
+                Finding(
+                    "methods_disagree",
+                    None,
+                    None,
+                    apart / allowed,
+                    "times their joint uncertainty",
+                    excluded=False,
+                    because=f"{name.replace('_', ' ')}: the curve gives {second.coefficient / term.coefficient:.3g} times the"
+                    " figure of the fit",
+                    disposition="the fit is reported; look for what the model does not hold (a line, a change during the log)",
+                )
+            )
     return findings

@@ -116,3 +116,56 @@ def curve_edf(mixture: Mixture, factors: IntArray, run_lengths: Sequence[int]) -
         variance, spread = _mean_square_variance(mixture, fixed, factor, pairs)
         edf[i] = max(1.0, 2.0 * (variance + fixed) ** 2 / spread) if spread > 0 else 1.0
     return edf
+
+
+def cross_covariance(
+    parts: Sequence[tuple[float, Fluctuation]], first: int, second: int, lag: FloatArray
+) -> FloatArray:
+    """Return the covariance of normalised second differences at averaging factors ``first`` and ``second``.
+
+    R(l) = sum_ab c_a c_b G(l + a m_1 - b m_2)/(2 m_1 m_2), c = (1, -2, 1), the second difference of ``second`` starting
+    ``lag`` samples before that of ``first``.
+    """
+    total = np.zeros(np.shape(lag))
+    for square, term in parts:
+        for a, weight_a in enumerate((1.0, -2.0, 1.0)):
+            for b, weight_b in enumerate((1.0, -2.0, 1.0)):
+                total += square * weight_a * weight_b * term.covariance(lag + a * first - b * second)
+    return total / (2.0 * first * second)
+
+
+def curve_covariance(mixture: Mixture, factors: IntArray, run_lengths: Sequence[int]) -> FloatArray:
+    """Return the covariance between the points of an overlapping Allan variance pooled over runs, shape (k, k).
+
+    V_ij = 2/(M_i M_j) sum over runs and lags of (number of pairs at that lag) R_ij(l)^2. Lags are strided by a twelfth of
+    the shorter factor and reach eight of the longer beyond the ends of both differences.
+    """
+    count = factors.size
+    covariance = np.empty((count, count))
+    smooth = [part for part in mixture.parts if part[1].role != "quantization"]
+    spikes = [part for part in mixture.parts if part[1].role == "quantization"]
+    pairs = np.array([[max(0, n - 2 * int(m) + 1) for n in run_lengths] for m in factors], dtype=float)
+    for i in range(count):
+        for j in range(i, count):
+            first, second = int(factors[i]), int(factors[j])
+            stride = max(1, min(first, second) // 12, max(first, second) // 768)
+            reach = REACH * max(first, second)
+            lags = np.unique(np.concatenate([np.arange(-reach, reach + 1, stride), [0, second - first]])).astype(float)
+            edges = np.concatenate([[lags[0] - 0.5], (lags[1:] + lags[:-1]) / 2.0, [lags[-1] + 0.5]])
+            weights = np.diff(edges)
+            values = cross_covariance(smooth, first, second, lags)
+            total = float(weights @ (_overlap(pairs[i], pairs[j], lags) * values**2))
+            if spikes:
+                where = np.unique([b * second - a * first for a in range(3) for b in range(3)]).astype(float)
+                below = cross_covariance(smooth, first, second, where)
+                rise = (below + cross_covariance(spikes, first, second, where)) ** 2 - below**2
+                total += float(np.sum(_overlap(pairs[i], pairs[j], where) * rise))
+            covariance[i, j] = covariance[j, i] = 2.0 * total / (pairs[i].sum() * pairs[j].sum())
+    return covariance
+
+
+def _overlap(first: FloatArray, second: FloatArray, lags: FloatArray) -> FloatArray:
+    """Return the number of pairs of starts (s, s + lag) with s below ``second`` and s + lag below ``first``, over runs."""
+    low = np.maximum(0.0, lags[:, None])
+    high = np.minimum(first, second + lags[:, None])
+    return np.asarray(np.clip(high - low, 0.0, None).sum(axis=1))
