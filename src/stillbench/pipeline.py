@@ -14,9 +14,9 @@ from stillbench.assessment.evidence import Evidence
 from stillbench.assessment.judge import judge, load_specification, require_applicable, spoken_unit
 from stillbench.assessment.uncertainty import normal_quantile, with_common_factor
 from stillbench.deviation.averaging import PER_DECADE
-from stillbench.deviation.intervals import bound_deviation
+from stillbench.deviation.intervals import bound_deviation, mixture_of
 from stillbench.deviation.overlapping import estimate_deviation
-from stillbench.foundation.errors import UsageError
+from stillbench.foundation.errors import NothingToMeasureError, RecordTooShortError, UsageError
 from stillbench.foundation.progress import SILENT, Progress
 from stillbench.foundation.toml_source import load_toml
 from stillbench.foundation.units import parse_unit
@@ -26,6 +26,7 @@ from stillbench.logs.cut import cut_record
 from stillbench.logs.front_end import convert
 from stillbench.logs.read import read_log
 from stillbench.logs.runs import sample_times
+from stillbench.screening.converter import REFUSED
 from stillbench.screening.screen import levels_differ, screen
 from stillbench.version import __version__
 from stillbench.vocabulary.characterization import (
@@ -48,6 +49,8 @@ LIBRARIES = ("numpy", "scipy", "pandas", "pyarrow")
 """Those whose version can move a number."""
 TIMELINE_SPANS = 900
 COVERAGES = (0.5, 0.999)
+CLIPPED_PERCENT = 0.1
+"""Of the samples at the rails from which the white noise reads low by more than its error in a night."""
 
 
 def load_log_sheet(path: Path) -> LogSheet:
@@ -80,6 +83,7 @@ def characterize(
     exclusions: bool = True,
     keep: Mapping[str, str] | None = None,
     name: str = "array",
+    selfcheck: str = "not run",
     progress: Progress = SILENT,
 ) -> Characterization:
     """Characterize the noise of a log taken at rest, and judge it where a specification is given.
@@ -114,6 +118,8 @@ def characterize(
         Findings overruled.
     name : str
         Of data that are not a file.
+    selfcheck : str
+        Outcome of the self-check, which stands in the result.
     progress : Progress
 
     Returns
@@ -161,17 +167,31 @@ def characterize(
     if report_unit is not None:
         for quantity in quantities:
             report_unit = spoken_unit(report_unit, quantity)
-    results = []
+    results: list[ChannelResult] = []
+    skipped: list[str] = []
     for channel in sensor_log.channels:
-        record = cut_record(sensor_log, channel.label, sheet=sheet, start=first, stop=last, exclude=exclude, grid=grid)
-        screened = screen(record, exclusions=exclusions, keep=keep, progress=progress)
+        try:
+            record = cut_record(
+                sensor_log, channel.label, sheet=sheet, start=first, stop=last, exclude=exclude, grid=grid
+            )
+            screened = screen(record, exclusions=exclusions, keep=keep, progress=progress)
+        except (NothingToMeasureError, RecordTooShortError) as error:
+            # Asked for by name a dead channel is an error; among all of them it is a remark.
+            if "all" not in channels:
+                raise
+            skipped.append(f"channel {channel.label!r} left out: {error.found}")
+            continue
         results.append(
             _characterize_record(record, screened, spec, coverage=coverage, report_unit=report_unit, progress=progress)
+        )
+    if not results:
+        raise NothingToMeasureError(
+            f"no channel can be characterized ({'; '.join(skipped)})", "a signal with noise in it"
         )
     settings: dict[str, Setting] = {
         "channels": tuple(channel.label for channel in sensor_log.channels),
         "units": tuple(channel.unit.text for channel in sensor_log.channels),
-        "understood": sensor_log.understood,
+        "understood": (*sensor_log.understood, *skipped),
         "from": first,
         "to": last,
         "exclude": tuple(exclude),
@@ -185,7 +205,7 @@ def characterize(
     libraries = {library: metadata.version(library) for library in LIBRARIES}
     return Characterization(
         stamp,
-        Provenance(__version__, libraries, settings, "not run"),
+        Provenance(__version__, libraries, settings, selfcheck),
         sensor_log.source,
         _identification(sheet),
         tuple(results),
@@ -250,17 +270,25 @@ def _characterize_record(
         sample_interval=used.sample_interval,
         run_lengths=[run.n_samples for run in used.runs],
         coverage=coverage,
+        mixture=replace(found.fitted.mixture(), slope=mixture_of(found.model, used.sample_interval).slope),
     )
     same_level = not levels_differ(screened.findings)
-    bias = _bias(used, found, z, same_level=same_level)
+    bias, bias_error = _bias(used, found, z, same_level=same_level)
     evidence = Evidence(
         used,
         found.model,
         found.fitted,
         bias,
+        bias_error,
         relative,
         trusted=not _poor(found),
         same_level=same_level,
+        clipped=any(
+            finding.kind == "saturation" and (finding.measure or 0.0) > CLIPPED_PERCENT for finding in screened.findings
+        ),
+        coarse=any(
+            finding.kind == "coarse_converter" and (finding.measure or 0.0) < REFUSED for finding in screened.findings
+        ),
     )
     verdicts = judge(specification, evidence)
     low, high = with_common_factor(bias.value, bias.lower, bias.upper, relative, z)
@@ -291,19 +319,19 @@ def _poor(found: Identification) -> bool:
     return found.model.goodness > POOR_FIT
 
 
-def _bias(record: Record, found: Identification, z: float, *, same_level: bool) -> Bias:
-    """Mean of the log (of its longest run where the sensor was turned); the error is that of the white noise.
+def _bias(record: Record, found: Identification, z: float, *, same_level: bool) -> tuple[Bias, float]:
+    """Mean of the log (of its longest run where the sensor was turned), with the Allan deviation at the length of the log.
 
-    Slower terms are part of what the mean of this log is; they limit what it says of another time.
+    For white noise that is the standard error of the mean. Flicker and walk move the mean itself from one log to the next,
+    by root two times this.
     """
     runs = record.runs if same_level else (max(record.runs, key=lambda run: run.n_samples),)
     parts = [record.values[run.first : run.last][~record.missing[run.first : run.last]] for run in runs]
     values = np.concatenate(parts)
     origin = values[0]
     mean = float(origin + np.mean(values - origin))
-    white = float(found.fitted.fit.theta[found.fitted.bins.roles.index("white")])
-    error = z * float(np.sqrt(white / values.size))
-    return Bias(mean, mean - error, mean + error)
+    error = found.fitted.amplitude(found.fitted.variance_weights(values.size))
+    return Bias(mean, mean - z * error, mean + z * error), error
 
 
 def _widened(model: NoiseModel, relative: float, z: float) -> NoiseModel:

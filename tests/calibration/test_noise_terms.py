@@ -56,7 +56,7 @@ def trials(name: str) -> Trials:
         limits.append([profile_limits(bins, fit, row, threshold) for row in np.eye(3)])
         accepted.append(smallest_accepted(bins, fit))
         ramp.append(shape_limits(bins, 0, threshold))
-        goodness.append(goodness_of_fit(bins, fit.spectrum))
+        goodness.append(goodness_of_fit(bins, fit))
         droop.append(droop_score(bins, fit, 0.5))
     return Trials(np.array(theta), np.array(limits), accepted, np.array(ramp), np.array(goodness), np.array(droop))
 
@@ -100,7 +100,7 @@ def test_errors_are_near_the_cramer_rao_bound(name: str) -> None:
     weighted = bins.basis / (bins.basis @ truth)[:, None]
     covariance = np.linalg.inv(0.5 * (weighted * bins.dof[:, None]).T @ weighted)
     for i, role in enumerate(ROLES):
-        if truth[i] and covariance[i, i] < 0.01 * truth[i] ** 2:  # resolved well enough for a normal error
+        if truth[i] and covariance[i, i] < 0.15 * truth[i] ** 2:  # resolved well enough for a normal error
             ratio = np.mean((done.theta[:, i] - truth[i]) ** 2) / covariance[i, i]
             low, high = (stats.chi2.ppf(p, LOGS) / LOGS for p in ((1 - CERTAINTY) / 2, (1 + CERTAINTY) / 2))
             assert low < ratio < 1.10**2 * high, (role, ratio)

@@ -212,7 +212,8 @@ def test_spans_by_seconds_rows_and_clock(stillbench: Command, tmp_path: Path, ta
 
     assert runs() == [[0, 4_000]]
     assert runs("--from", "100", "--to", "3000") == [[100, 3_000]]
-    assert runs("--from", "row:101", "--to", "row:3001") == [[100, 3_000]]
+    assert runs("--from", "row:101", "--to", "row:3000") == [[100, 3_000]]
+    assert runs("--from", "21:59:59") == [[0, 4_000]]
     assert runs("--from", "22:01:40", "--to", "2025-03-01 22:50:00") == [[100, 3_000]]
     assert runs("--exclude", "1000:2000") == [[0, 1_000], [2_000, 4_000]]
     assert runs("--exclude", "22:10:00:22:20:00") == [[0, 600], [1_200, 4_000]]

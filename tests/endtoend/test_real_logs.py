@@ -116,12 +116,13 @@ def test_reference_adc_5h(real_log: Find) -> None:
 def test_reference_box_18h(real_log: Find) -> None:
     channel = only(real_log("reference_box_18h/microvolts.csv"), unit="uV")
     assert channel.curve.tau[-1] > 3_600
-    assert channel.n_used <= channel.n_samples
+    # The box settles for hours: the fit must not pretend to explain it, or must have found a band that it does.
+    assert channel.noise.goodness < 3 or "poor_fit" in kinds(channel)
 
 
 def test_still_34s_has_an_empty_stamp_and_says_so(real_log: Find) -> None:
     path = real_log("still_34s/imu.csv")
-    with pytest.raises(ClockError, match="empty in row 1"):
+    with pytest.raises(ClockError, match="empty in 224 of 690 rows"):
         characterize(path, channels=["IMU::UncompGyro::X [rad/s]"], unit="rad/s")
     channel = only(path, channels=["IMU::UncompGyro::X [rad/s]"], unit="rad/s", time="none", rate=20)
     assert channel.duration == pytest.approx(34, abs=1)

@@ -22,6 +22,7 @@ from stillbench.likelihood.profile import likelihood_threshold
 from stillbench.terms.covariance import curve_edf
 from stillbench.terms.mixture import Mixture
 from stillbench.vocabulary.quantity import TIME_POWERS, role_of
+from stillbench.vocabulary.record import Record
 from stillbench.vocabulary.specification import Requirement
 
 LIKELY = 0.6827
@@ -31,6 +32,12 @@ SEEN_90 = 0.90
 DRAWS = 20_000
 SEED = 40_961
 USABLE_SHARE = 10
+FULL_BAND = 0.499
+"""Top of the band over the sampling rate that counts as all of it."""
+WHOLE = 0.01
+"""Relative difference of an averaging time from a whole number of samples that is let pass."""
+COVERED = 0.98
+"""Share of the averages due in the horizon that must exist for a drift to be judged."""
 
 
 class NotMeasurableError(Exception):
@@ -86,6 +93,8 @@ def estimate_term(evidence: Evidence, requirement: Requirement, limit: float) ->
     fitted = evidence.fitted
     factor = fitted.sample_interval ** TIME_POWERS[role]
     _require_trust(evidence)
+    if role == "white":
+        _require_resolved(evidence)
     name = requirement.quantity.replace(" ", "_")
     term = evidence.model.terms.get(name)
     if term is not None and term.coefficient is None:
@@ -129,6 +138,13 @@ def _ramp(evidence: Evidence, factor: float, coverage: float) -> Estimate:
     )
 
 
+def _require_resolved(evidence: Evidence) -> None:
+    if evidence.clipped:
+        raise NotMeasurableError("the readings are saturated, so the noise of this log reads low")
+    if evidence.coarse:
+        raise NotMeasurableError("the converter does not resolve the white noise of this log")
+
+
 def _require_trust(evidence: Evidence) -> None:
     if not evidence.trusted:
         raise NotMeasurableError(
@@ -138,6 +154,7 @@ def _require_trust(evidence: Evidence) -> None:
 
 def deviation_at(evidence: Evidence, tau: float, limit: float, coverage: float, factor: float) -> Estimate:
     """Estimate factor * sigma(tau): by the model where it holds, else from the curve itself."""
+    _require_resolved(evidence)
     interval = evidence.fitted.sample_interval
     samples = round(tau / interval)
     longest = max(run.n_samples for run in evidence.record.runs)
@@ -145,10 +162,19 @@ def deviation_at(evidence: Evidence, tau: float, limit: float, coverage: float, 
         raise NotMeasurableError(f"an average of {tau:g} s is shorter than one sample ({interval:.4g} s)")
     if 2 * samples > longest:
         raise NotMeasurableError(f"the log has no two averages of {tau:g} s in one run")
-    if evidence.trusted and samples * interval * evidence.model.band[1] >= 0.5 - 1e-9:
-        weights = evidence.fitted.variance_weights(samples)
+    top = evidence.model.band[1]
+    if evidence.trusted and (top * interval > FULL_BAND or tau * top >= 1.0):
+        weights = evidence.fitted.variance_weights(tau / interval)
         return _functional(evidence, weights, factor, limit, coverage, "amplitude", "from the fitted model")
+    _require_whole(tau, samples, interval)
     return _from_curve(evidence, samples, coverage, factor)
+
+
+def _require_whole(tau: float, samples: int, interval: float) -> None:
+    if abs(samples * interval / tau - 1.0) > WHOLE:
+        raise NotMeasurableError(
+            f"{tau:g} s is no whole number of samples of {interval:.4g} s (the nearest is {samples * interval:.4g} s)"
+        )
 
 
 def _from_curve(evidence: Evidence, samples: int, coverage: float, factor: float) -> Estimate:
@@ -205,10 +231,8 @@ def estimate_bias(evidence: Evidence, requirement: Requirement, limit: float) ->
     """Estimate the size of the mean of the log."""
     if not evidence.same_level:
         raise NotMeasurableError("the sensor was turned during the log, so its mean is no bias")
-    z = normal_quantile(0.5 + requirement.coverage / 2.0)
-    sd = (evidence.bias.upper - evidence.bias.lower) / (2.0 * z)
     because = "mean of this log; it does not tell the bias at the next turn-on"
-    return _normal(evidence.bias.value, sd, requirement.coverage, because, grows=True)
+    return _normal(evidence.bias.value, evidence.bias_error, requirement.coverage, because, grows=True)
 
 
 def estimate_drift(evidence: Evidence, requirement: Requirement, limit: float) -> Estimate:  # noqa: ARG001  same signature for all
@@ -222,36 +246,52 @@ def estimate_drift(evidence: Evidence, requirement: Requirement, limit: float) -
     first = record.runs[0]
     if samples < 1 or null < 1:
         raise NotMeasurableError("null or averaging time is shorter than one sample")
+    for words, count in ((requirement.seconds("averaging_time"), samples), (requirement.seconds("null"), null)):
+        _require_whole(words or 0.0, count, interval)
+    if any(finding.kind == "backward_stamps" for finding in record.findings):
+        raise NotMeasurableError("the stamps fall back during the log, so the time since the null is not known")
     if null + samples > first.n_samples:
         raise NotMeasurableError("the first run of the log is too short for the null and one average")
-    # Deviations from the first sample, so that a large offset costs no digits.
-    origin = record.values[first.first]
-    reference = float(np.mean(record.values[first.first : first.first + null] - origin))
     over = requirement.seconds("over")
-    stop = first.start + over if over is not None else np.inf
-    largest, when = 0.0, first.start
-    for number, run in enumerate(record.runs):
-        begin = run.first + (null if number == 0 else 0)
-        start = run.start + (null * interval if number == 0 else 0.0)
-        count = (run.last - begin) // samples
-        usable = np.clip(np.floor((stop - start) / (samples * interval) + 1e-9), 0, count)
-        blocks = (record.values[begin : begin + int(usable) * samples] - origin).reshape(-1, samples).mean(axis=1)
-        if blocks.size:
-            away = np.abs(blocks - reference)
-            if away.max() > abs(largest):
-                at = int(np.argmax(away))
-                largest, when = float(blocks[at] - reference), start + at * samples * interval
+    largest, when, formed = _largest_departure(record, null, samples, np.inf if over is None else first.start + over)
     white = evidence.fitted.fit.theta[evidence.fitted.bins.roles.index("white")]
-    covered = record.duration >= (over or 0.0) - samples * interval
+    end = over if over is not None else record.duration
+    due = max(1, int((end - null * interval) / (samples * interval) + 1e-9))
     because = (
         f"observed {when / 3600.0:.2f} h after the start; a bound for this log only, the next may go further (1 in 2)"
     )
-    if not covered:
-        because = f"{SHORT_OF_HORIZON}: {record.duration / 3600.0:.2f} h of {(over or 0.0) / 3600.0:.2f} h; {because}"
+    if formed < COVERED * due:
+        because = f"{SHORT_OF_HORIZON}: {formed} of {due} averages exist; {because}"
+    elif formed < due:
+        because += f"; {formed} of {due} averages exist"
     return _normal(largest, float(np.sqrt(white / null)), requirement.coverage, because, grows=False)
 
 
-SHORT_OF_HORIZON = "the log is shorter than the time the requirement speaks of"
+def _largest_departure(record: Record, null: int, samples: int, stop: float) -> tuple[float, float, int]:
+    """Return the largest departure of consecutive averages from the null, when it was, and how many averages there are.
+
+    Deviations are taken from the first sample, so that a large offset costs no digits.
+    """
+    first = record.runs[0]
+    interval = record.sample_interval
+    origin = record.values[first.first]
+    reference = float(np.mean(record.values[first.first : first.first + null] - origin))
+    largest, when, formed = 0.0, first.start, 0
+    for number, run in enumerate(record.runs):
+        skipped = null if number == 0 else 0
+        begin, start = run.first + skipped, run.start + skipped * interval
+        count = (run.last - begin) // samples
+        usable = int(np.clip(np.floor((stop - start) / (samples * interval) + 1e-9), 0, count))
+        blocks = (record.values[begin : begin + usable * samples] - origin).reshape(-1, samples).mean(axis=1)
+        formed += blocks.size
+        away = np.abs(blocks - reference)
+        if blocks.size and away.max() > abs(largest):
+            at = int(np.argmax(away))
+            largest, when = float(blocks[at] - reference), start + at * samples * interval
+    return largest, when, formed
+
+
+SHORT_OF_HORIZON = "the log does not cover the time the requirement speaks of"
 
 ESTIMATORS: dict[str, Callable[[Evidence, Requirement, float], Estimate]] = {
     "resolution": estimate_resolution,

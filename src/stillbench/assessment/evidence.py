@@ -20,21 +20,30 @@ class Evidence:
     fitted : FittedModel
     bias : Bias
         Statistical interval only.
+    bias_error : float
+        Its standard uncertainty.
     relative_uncertainty : float
         Standard, of the scale factor.
     trusted : bool
         False when the model does not explain the spectrum.
     same_level : bool
         False when the sensor was turned between runs.
+    clipped : bool
+        True when so many readings are saturated that the noise reads low.
+    coarse : bool
+        True when the converter does not resolve the white noise.
     """
 
     record: Record
     model: NoiseModel
     fitted: FittedModel
     bias: Bias
+    bias_error: float
     relative_uncertainty: float
     trusted: bool
     same_level: bool
+    clipped: bool = False
+    coarse: bool = False
 
 
 @dataclass(frozen=True)

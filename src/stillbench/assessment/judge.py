@@ -12,13 +12,13 @@ from pathlib import Path
 import numpy as np
 
 from stillbench.assessment.conformance import conformance_probability
-from stillbench.assessment.estimates import ESTIMATORS, SHORT_OF_HORIZON, NotMeasurableError, estimate_term
+from stillbench.assessment.estimates import ESTIMATORS, PRECISE, SHORT_OF_HORIZON, NotMeasurableError, estimate_term
 from stillbench.assessment.evidence import Estimate, Evidence
 from stillbench.assessment.uncertainty import normal_quantile, with_common_factor
 from stillbench.foundation.errors import UnitError, UsageError
 from stillbench.foundation.toml_source import load_toml
 from stillbench.foundation.units import parse_quantity, parse_unit
-from stillbench.vocabulary.quantity import QUANTITIES, Quantity, role_of
+from stillbench.vocabulary.quantity import QUANTITIES, Quantity, is_density, role_of
 from stillbench.vocabulary.specification import Requirement, Specification
 from stillbench.vocabulary.verdict import CONFORMS, FAILS, UNDECIDED, Verdict
 
@@ -53,7 +53,7 @@ def limit_in_si(requirement: Requirement, quantity: Quantity) -> tuple[float, st
     if unit.dimension != parse_unit(si).dimension:
         return None
     limit = value * unit.factor
-    if role == "white" and "Hz" in unit.text:
+    if is_density(requirement.quantity, unit.text):
         limit /= math.sqrt(2.0)
     return limit, si
 
@@ -158,9 +158,8 @@ def _judged(requirement: Requirement, evidence: Evidence, limit: float, unit: st
         if length is None:
             because += "; a longer log of this sensor would not decide it"
     _, spoken = parse_quantity(requirement.limit, "the limit")
-    if "Hz" in spoken.text:
+    if is_density(requirement.quantity, spoken.text):
         because += "; the limit is a one-sided spectral density, N = n/sqrt(2)"
-        spoken = parse_unit(unit if spoken.dimension != parse_unit(unit).dimension else spoken.text)
     return Verdict(
         requirement.id,
         requirement.clause,
@@ -225,12 +224,14 @@ def deciding_length(
         over = estimate.one_sided[1] / limit
         shortest, longest = duration * over, duration * over**2
     else:
-        need = normal_quantile(coverage) * at_limit + normal_quantile(POWER) * at_estimate
+        # Above 10 % the bound that decides is the two-sided one.
+        z_bound = normal_quantile(coverage if at_estimate <= PRECISE else 0.5 + coverage / 2.0)
+        need = z_bound * at_limit + normal_quantile(POWER) * at_estimate
         lengths = []
         for value in estimate.likely:
             distance = abs(math.log(value / limit)) if value > 0 else np.inf
             # What the scale factor takes of the distance no log can win back.
-            left = distance - normal_quantile(coverage) * relative
+            left = distance - z_bound * relative
             lengths.append(duration * (need / left) ** 2 if left > 0 else np.inf)
         shortest = min(lengths)
         longest = np.inf if estimate.likely[0] <= limit <= estimate.likely[1] else max(lengths)

@@ -53,6 +53,7 @@ def bound_deviation(
     sample_interval: float,
     run_lengths: Sequence[int],
     coverage: float = 0.95,
+    mixture: Mixture | None = None,
 ) -> DeviationCurve:
     """Add interval, degrees of freedom and model to a curve.
 
@@ -67,8 +68,12 @@ def bound_deviation(
         Samples in each run.
     coverage : float
         Two-sided.
+    mixture : Mixture, optional
+        The terms in unit samples, where the model withholds a figure that its curve needs.
     """
-    mixture = mixture_of(model, sample_interval)
+    mixture = mixture_of(model, sample_interval) if mixture is None else mixture
+    if not mixture.parts:
+        mixture = Mixture({"white": 1.0})  # nothing known: the degrees of freedom of white noise
     factors = np.rint(curve.tau / sample_interval).astype(np.int64)
     edf = curve_edf(mixture, factors, run_lengths)
     lower, upper = chi_square_limits(curve.deviation, edf, coverage)

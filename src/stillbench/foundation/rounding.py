@@ -34,6 +34,15 @@ def significant(value: float, digits: int = 3) -> str:
     return fixed(value, decimals_for(value, digits))
 
 
+def rounded_up(value: float, digits: int = 2) -> str:
+    """Write an upper bound with ``digits`` significant digits, never below the value."""
+    if value == 0 or not math.isfinite(value):
+        return significant(value)
+    decimals = decimals_for(value, digits)
+    step = 10.0**-decimals
+    return fixed(math.ceil(value / step * (1.0 - 1e-12)) * step, decimals)
+
+
 def plain(value: float, digits: int = 6) -> str:
     """Write a number that was given, not measured (a limit, a setting): as short as it was said."""
     return f"{value:.{digits}g}"
@@ -47,7 +56,7 @@ def with_interval(value: float, lower: float, upper: float) -> tuple[str, str, s
     sides = [abs(value - lower), abs(upper - value)]
     scale = min((side for side in sides if side > 0), default=0.0) / 2
     if scale == 0 or not math.isfinite(scale):
-        return significant(value), significant(lower), significant(upper)
+        return significant(value, 7), significant(lower, 7), significant(upper, 7)
     decimals = decimals_for(scale)
     return fixed(value, decimals), fixed(lower, decimals), fixed(upper, decimals)
 

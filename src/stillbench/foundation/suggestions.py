@@ -18,6 +18,11 @@ def did_you_mean(name: str, known: Iterable[str]) -> str:
     return f"did you mean {close!r}?" if close is not None else ""
 
 
+def plural(count: int, noun: str) -> str:
+    """Write a count with its noun: 1 row, 2 rows."""
+    return f"{count} {noun}" + ("" if count == 1 else "s")
+
+
 def listed(names: Iterable[str], most: int = 12) -> str:
     """Join quoted names with commas, at most ``most`` of them, saying how many more there are."""
     quoted = [repr(name) for name in names]

@@ -111,6 +111,7 @@ _SYMBOLS: dict[str, tuple[float, Dimension]] = {
     "mrad": (1e-3, ANGLE),
     "urad": (1e-6, ANGLE),
     "deg": (DEGREE, ANGLE),
+    "mdeg": (DEGREE * 1e-3, ANGLE),
     "arcmin": (DEGREE / 60.0, ANGLE),
     "arcsec": (DEGREE / 3600.0, ANGLE),
     "m": (1.0, _dimension(length=1)),
@@ -198,7 +199,7 @@ _SPELLINGS: dict[str, str] = {
     "percent": "%",
 }
 
-_COMPOUNDS = {"dps": "deg/s", "dph": "deg/h", "rps": "rad/s"}
+_COMPOUNDS = {"dps": "deg/s", "mdps": "mdeg/s", "dph": "deg/h", "rps": "rad/s"}
 
 _TOKEN = re.compile(
     r"\s*(?:(?P<root>sqrt|rt(?=\s*\()|\N{SQUARE ROOT})|(?P<open>\()|(?P<close>\))|(?P<times>\*(?!\*)|[\N{MIDDLE DOT}\N{DOT OPERATOR}])|(?P<over>/)"

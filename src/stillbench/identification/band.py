@@ -47,7 +47,7 @@ class Band:
 def _tested(bins: BinnedPowers, top: float, shapes: BoolArray) -> tuple[float, float, Fit]:
     part = bins.below(top)
     fit = maximise(part, shapes=shapes)
-    return droop_score(part, fit, top), goodness_of_fit(part, fit.spectrum), fit
+    return droop_score(part, fit, top), goodness_of_fit(part, fit), fit
 
 
 def largest_band(bins: BinnedPowers, shapes: BoolArray) -> Band:

@@ -4,7 +4,7 @@ The chain, each link only when the one before did not explain the spectrum: all 
 beside them; a low-pass of the sensor fitted by shape; the same on the band it lets through; the largest band that fits.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -92,7 +92,7 @@ def choose_model(bins: BinnedPowers, coverage: float) -> Choice:
     if 2.0 * (fit.objective - found.fit.objective) > FILTER_RATIO:
         for used in (found.bins, found.bins.chosen(found.gain() >= PASSED)):
             behind = maximise(used, shapes=shapes)
-            if goodness_of_fit(used, behind.spectrum) < LARGEST_MISFIT:
+            if goodness_of_fit(used, behind) < LARGEST_MISFIT:
                 shapes, ramp = with_ramp(used)
                 behind = maximise(used, shapes=shapes)
                 top = NYQUIST if used is found.bins else float(used.frequency.max())
@@ -104,9 +104,19 @@ def choose_model(bins: BinnedPowers, coverage: float) -> Choice:
     return Choice(bins, used, maximise(used, shapes=shapes), shapes, ramp, band)
 
 
+def white_alone(bins: BinnedPowers, coverage: float) -> Choice:
+    """Return the model of a log too short for more than its white noise."""
+    index = bins.roles.index("white")
+    only = replace(bins, basis=bins.basis[:, [index]], roles=("white",))
+    shapes = np.zeros(len(bins.shapes), dtype=bool)
+    fit = maximise(only, shapes=shapes)
+    ramp = shape_limits(only, bins.shapes.index("ramp"), likelihood_threshold(coverage))
+    return Choice(only, only, fit, shapes, ramp, _full_band(only, fit))
+
+
 def _full_band(bins: BinnedPowers, fit: Fit) -> Band:
     droop = droop_score(bins, fit, NYQUIST)
-    misfit = goodness_of_fit(bins, fit.spectrum)
+    misfit = goodness_of_fit(bins, fit)
     fits = abs(droop) < LARGEST_SCORE and misfit < LARGEST_MISFIT
     return Band(NYQUIST, full=True, fits=fits, droop=droop, misfit=misfit)
 

@@ -8,7 +8,7 @@ import numpy as np
 from stillbench.foundation.arrays import FloatArray
 from stillbench.foundation.progress import SILENT, Progress
 from stillbench.identification.band import CORNER_OVER_TOP, NYQUIST, Band
-from stillbench.identification.choice import RAMP_RATIO, Choice, choose_model
+from stillbench.identification.choice import RAMP_RATIO, Choice, choose_model, white_alone
 from stillbench.identification.second_opinion import curve_estimates
 from stillbench.identification.textbook import read_textbook
 from stillbench.likelihood.bins import BinnedPowers, bin_runs
@@ -21,7 +21,6 @@ from stillbench.likelihood.subsets import smallest_accepted
 from stillbench.likelihood.whitened import whitened_kurtosis
 from stillbench.terms.catalogue import BY_ROLE, FLUCTUATIONS, MEAN_SHAPES
 from stillbench.terms.correlated import CorrelatedNoise
-from stillbench.terms.mixture import Mixture
 from stillbench.vocabulary.deviation_curve import DeviationCurve
 from stillbench.vocabulary.finding import Finding
 from stillbench.vocabulary.noise_model import (
@@ -101,7 +100,8 @@ def identify_noise(
     terms = [BY_ROLE[role] for role in roles_of(record)]
     bins = bin_runs(record.pieces(), terms, MEAN_SHAPES)
     progress.step(0.2)
-    choice = choose_model(bins, coverage)
+    kurtosis = whitened_kurtosis(record.pieces())
+    choice = choose_model(bins, coverage) if longest_run(record) >= SHORT else white_alone(bins, coverage)
     progress.step(0.5)
     found = choice.correlation
     fitted = FittedModel(
@@ -111,6 +111,7 @@ def identify_noise(
         record.sample_interval,
         found.time if found else None,
         found.family if found else (),
+        max(0.0, kurtosis - 3.0) / record.n_samples,
     )
     accepted = [
         tuple(role for role in chosen if role != OUTPUT)
@@ -122,8 +123,7 @@ def identify_noise(
         )
     ]
     progress.step(0.7)
-    kurtosis = _kurtosis(record, fitted, choice)
-    made = _terms(fitted, accepted, coverage, kurtosis, record, quantity, choice)
+    made = _terms(fitted, accepted, coverage, record, quantity, choice)
     made = _observable(made, record, findings)
     readings = read_textbook(curve, record.duration)
     second = curve_estimates(record, fitted, coverage) if choice.low_pass is None and choice.band.full else {}
@@ -136,7 +136,7 @@ def identify_noise(
     ramp = choice.bins.shapes.index("ramp")
     if choice.shapes[ramp]:
         names = [(*chosen, quantity.terms["ramp"]) for chosen in names]
-    goodness = goodness_of_fit(choice.bins, choice.fit.spectrum)
+    goodness = goodness_of_fit(choice.bins, choice.fit)
     excess = _power_above(choice)
     model = NoiseModel(
         named,
@@ -153,19 +153,10 @@ def identify_noise(
     return Identification(model, tuple(_findings(model, choice, excess, record, quantity)), fitted)
 
 
-def _kurtosis(record: Record, fitted: FittedModel, choice: Choice) -> float:
-    """Kurtosis of the whitened log; 3 where the white noise at single samples is not in the model."""
-    if not choice.band.full or choice.low_pass is not None:
-        return 3.0
-    theta = dict(zip(fitted.bins.roles, fitted.fit.theta.tolist(), strict=True))
-    return whitened_kurtosis(max(record.pieces(), key=len), Mixture(theta, 0.0, fitted.correlation_time))
-
-
 def _terms(
     fitted: FittedModel,
     accepted: Sequence[tuple[str, ...]],
     coverage: float,
-    kurtosis: float,
     record: Record,
     quantity: Quantity,
     choice: Choice,
@@ -178,8 +169,6 @@ def _terms(
             continue
         weights = fitted.weights({role: 1.0})
         limits = fitted.limits(weights, threshold)
-        if role == "white":
-            limits = _widened(limits, fitted.amplitude(weights), float(fitted.bins.dof.sum()), kurtosis, threshold)
         made[role] = _term(role, fitted.amplitude(weights), limits, accepted, record, quantity)
     found = choice.correlation
     if found is not None:
@@ -201,23 +190,14 @@ def _terms(
     return made
 
 
+def longest_run(record: Record) -> int:
+    """Return the number of samples in the longest run."""
+    return max(run.n_samples for run in record.runs)
+
+
 def to_si(role: str, interval: float) -> float:
     """Return the factor from a unit-sample coefficient to SI."""
     return float(interval ** TIME_POWERS[role])
-
-
-def _widened(
-    limits: tuple[float, float], estimate: float, n_samples: float, kurtosis: float, threshold: float
-) -> tuple[float, float]:
-    """Widen the interval of the white noise by the variance (kurtosis - 3)/n of ln N^2 that heavy tails add."""
-    excess = max(0.0, kurtosis - 3.0) / n_samples
-    lower, upper = limits
-    if excess == 0 or estimate == 0:
-        return limits
-    added = threshold * excess / 4.0  # of ln N, at the coverage of the threshold
-    new_upper = estimate * np.exp(np.sqrt(np.log(upper / estimate) ** 2 + added))
-    new_lower = estimate * np.exp(-np.sqrt(np.log(estimate / lower) ** 2 + added)) if lower > 0 else 0.0
-    return float(new_lower), float(new_upper)
 
 
 def _term(
@@ -234,6 +214,12 @@ def _term(
     count = sum(role in chosen for chosen in accepted)
     if count == len(accepted) and lower > 0:
         state, because = RESOLVED, "the log cannot be explained without it"
+    elif count == len(accepted):
+        state, because = (
+            AMBIGUOUS,
+            "the log cannot be explained without it at 1 %, and its interval holds zero all the same",
+        )
+        lower = 0.0
     elif count:
         others = " or ".join(
             " + ".join(quantity.terms[name].replace("_", " ") for name in chosen) for chosen in accepted
@@ -273,12 +259,14 @@ def _observable(terms: Mapping[str, NoiseTerm], record: Record, findings: Sequen
 
     def blank(role: str, because: str) -> None:
         checked[role] = replace(
-            terms[role], coefficient=None, lower=None, upper=None, state=NOT_OBSERVABLE, because=because
+            checked[role], coefficient=None, lower=None, upper=None, state=NOT_OBSERVABLE, because=because
         )
 
-    longest = max(run.n_samples for run in record.runs)
+    longest = longest_run(record)
     if longest < SHORT:
+        missing = NoiseTerm(None, None, None, "", NOT_OBSERVABLE, "")
         for role in ("flicker", "walk", "ramp"):
+            checked[role] = replace(missing, unit=QUANTITIES[record.quantity].term_unit(role))
             blank(role, f"the longest run has {longest} samples, {SHORT} are needed to tell it from white noise")
     for finding in findings:
         if finding.kind == "coarse_converter" and finding.measure is not None and finding.measure < UNRESOLVED_STEPS:
@@ -380,8 +368,8 @@ def _findings(model: NoiseModel, choice: Choice, excess: float, record: Record, 
                 "Hz",
                 excluded=True,
                 because=(
-                    f"the spectrum falls towards the top of the band, to {100 * excess:.2g} % of what the terms give: a"
-                    f" low-pass in the sensor, corner about {corner:.2g} Hz, shape not known"
+                    f"the spectrum falls towards the top of the band, to {100 * excess:.2g} % of what the terms below give, as"
+                    f" behind a low-pass with its corner about {corner:.2g} Hz, or under correlated noise: the log cannot tell"
                     if drooping
                     else f"the terms do not explain the spectrum above {2 * top:.3g} Hz (goodness of fit {band.misfit:.1f};"
                     f" power in the top octave {excess:.3g} times theirs)"
@@ -404,7 +392,7 @@ def _findings(model: NoiseModel, choice: Choice, excess: float, record: Record, 
             )
         )
     findings += _disagreements(model)
-    longest = max(run.n_samples for run in record.runs)
+    longest = longest_run(record)
     if longest < SHORT:
         name = quantity.terms["flicker"].replace("_", " ")
         findings.append(

@@ -197,6 +197,12 @@ def maximise(
     return Fit(all_theta, all_beta, value, spectrum, information, beta_covariance)
 
 
+def residual_power(bins: BinnedPowers, fit: Fit) -> FloatArray:
+    """Return the mean powers that the mean shapes of a fit leave, shape (j,)."""
+    left = bins.power - 2.0 * bins.cross @ fit.beta + np.einsum("r,jrs,s->j", fit.beta, bins.gram, fit.beta)
+    return np.asarray(np.maximum(left, 0.0))
+
+
 def _smoothed(dof: FloatArray, power: FloatArray, least: float) -> FloatArray:
     """Powers averaged over neighbouring bins until some eight coefficients share in each, for first weights."""
     sums, counts = dof * power, dof.copy()

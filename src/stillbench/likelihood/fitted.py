@@ -10,7 +10,7 @@ from stillbench.likelihood.bins import BinnedPowers
 from stillbench.likelihood.fit import Fit
 from stillbench.likelihood.profile import profile_limits, shape_limits
 from stillbench.likelihood.response import OUTPUT
-from stillbench.terms.mixture import term_of
+from stillbench.terms.mixture import Mixture, term_of
 
 WALKERS = 32
 STEPS = 400
@@ -36,6 +36,8 @@ class FittedModel:
         Of the correlated term, samples.
     family : tuple of BinnedPowers
         The same data with other correlation times near the best one: intervals take the best of them at every point.
+    excess : float
+        (kurtosis - 3)/n of heavy tails: what they add to the variance of ln N^2.
     """
 
     bins: BinnedPowers
@@ -44,6 +46,22 @@ class FittedModel:
     sample_interval: float
     correlation_time: float | None = None
     family: tuple[BinnedPowers, ...] = ()
+    excess: float = 0.0
+
+    def mixture(self) -> Mixture:
+        """Return the random terms as a mixture (the white level of a filtered sensor as white noise)."""
+        theta = dict(zip(self.bins.roles, self.fit.theta.tolist(), strict=True))
+        theta["white"] = theta.get("white", 0.0) + theta.pop(OUTPUT, 0.0)
+        return Mixture(theta, 0.0, self.correlation_time)
+
+    def _tails(self, weights: FloatArray) -> float:
+        """Variance that heavy tails add to the logarithm of sqrt(weights @ theta)."""
+        total = float(weights @ self.fit.theta)
+        if self.excess == 0 or total <= 0:
+            return 0.0
+        white = np.array([role in ("white", OUTPUT) for role in self.bins.roles])
+        share = float((weights * white) @ self.fit.theta) / total
+        return self.excess * share**2 / 4.0
 
     def weights(self, by_role: Mapping[str, float]) -> FloatArray:
         """Return weights in the order of the terms; roles not in the model count nothing.
@@ -53,8 +71,8 @@ class FittedModel:
         level = {OUTPUT: by_role.get("white", 0.0), **by_role}
         return np.array([level.get(role, 0.0) for role in self.bins.roles])
 
-    def variance_weights(self, factor: int) -> FloatArray:
-        """Return the weights that give the Allan variance at an averaging factor."""
+    def variance_weights(self, factor: float) -> FloatArray:
+        """Return the weights that give the Allan variance at an averaging factor (samples, not whole ones only)."""
         at = np.array(float(factor))
         roles = [role for role in self.bins.roles if role != OUTPUT]
         return self.weights({role: float(term_of(role, self.correlation_time).allan_variance(at)) for role in roles})
@@ -64,8 +82,14 @@ class FittedModel:
         return float(np.sqrt(np.maximum(0.0, weights @ self.fit.theta)))
 
     def limits(self, weights: FloatArray, threshold: float) -> tuple[float, float]:
-        """Return the profile-likelihood interval of sqrt(weights @ theta)."""
-        return profile_limits(self.bins, self.fit, weights, threshold, shapes=self.shapes, family=self.family)
+        """Return the profile-likelihood interval of sqrt(weights @ theta), widened for heavy tails."""
+        lower, upper = profile_limits(self.bins, self.fit, weights, threshold, shapes=self.shapes, family=self.family)
+        added = threshold * self._tails(weights)
+        if added == 0:
+            return lower, upper
+        estimate = self.amplitude(weights)
+        low = estimate * np.exp(-np.hypot(np.log(estimate / lower), np.sqrt(added))) if lower > 0 else 0.0
+        return float(low), float(estimate * np.exp(np.hypot(np.log(upper / estimate), np.sqrt(added))))
 
     def shape_limits(self, role: str, threshold: float) -> tuple[float, float, float]:
         """Return estimate and interval of a mean shape, per sample."""
@@ -93,7 +117,9 @@ class FittedModel:
         scale = 1.0 / np.sqrt(np.diag(information))
         covariance = np.linalg.pinv(information * np.outer(scale, scale), hermitian=True) * np.outer(scale, scale)
         value = float(weights @ theta)
-        return float(np.sqrt(weights @ covariance @ weights) / (2.0 * value)) if value > 0 else np.inf
+        if value <= 0:
+            return np.inf
+        return float(np.hypot(np.sqrt(weights @ covariance @ weights) / (2.0 * value), np.sqrt(self._tails(weights))))
 
     def draw(self, flat_in_variance: Sequence[str] = (), seed: int = SEED) -> FloatArray:
         """Draw amplitudes from the posterior with a flat prior on them, or on the variance of the roles named.
@@ -142,4 +168,9 @@ class FittedModel:
                 density[own] = np.where(taken, new, density[own])
             if step >= SETTLING:
                 kept.append(walkers.copy())
-        return np.concatenate(kept)
+        draws = np.concatenate(kept)
+        if self.excess > 0:
+            tails = np.exp(np.sqrt(self.excess / 4.0) * generator.standard_normal(draws.shape[0]))
+            white = np.array([role in ("white", OUTPUT) for role in bins.roles])
+            draws[:, white] *= tails[:, None]
+        return draws

@@ -2,12 +2,11 @@
 
 import numpy as np
 
-from stillbench.foundation.arrays import FloatArray
 from stillbench.likelihood.bins import BinnedPowers
-from stillbench.likelihood.fit import Fit
+from stillbench.likelihood.fit import Fit, residual_power
 
 
-def goodness_of_fit(bins: BinnedPowers, spectrum: FloatArray) -> float:
+def goodness_of_fit(bins: BinnedPowers, fit: Fit) -> float:
     """Return a standard normal statistic of the deviance of binned powers; large means that the model is wrong.
 
     Z = sum (nu_j (P_j/S_j - 1 - ln(P_j/S_j)) - e_j) / sqrt(sum v_j), with e_j = nu_j (ln(nu_j/2) - psi(nu_j/2)) and
@@ -17,13 +16,13 @@ def goodness_of_fit(bins: BinnedPowers, spectrum: FloatArray) -> float:
     Parameters
     ----------
     bins : BinnedPowers
-    spectrum : (j,) float array
-        Fitted powers.
+    fit : Fit
+        Of the same bins; what its mean shapes explain is taken off first.
     """
     from scipy.special import polygamma, psi  # noqa: PLC0415  heavy imports stay inside functions
 
     half = bins.dof / 2.0
-    ratio = np.maximum(bins.power / spectrum, np.finfo(float).tiny)
+    ratio = np.maximum(residual_power(bins, fit) / fit.spectrum, np.finfo(float).tiny)
     deviance = bins.dof * (ratio - 1.0 - np.log(ratio))
     expected = bins.dof * (np.log(half) - psi(half))
     variance = bins.dof**2 * polygamma(1, half) - 2.0 * bins.dof
@@ -35,11 +34,11 @@ def droop_score(bins: BinnedPowers, fit: Fit, top: float) -> float:
 
     Strongly negative: the spectrum falls towards the top of the band, as behind a low-pass filter.
     """
-    extra = (bins.frequency / top) ** 2 * max(fit.theta[bins.roles.index("white")], np.finfo(float).tiny)
+    extra = (bins.frequency / top) ** 2 * float(np.mean(fit.spectrum))
     inverse = 1.0 / fit.spectrum**2
     present = fit.theta > 0
     basis = bins.basis[:, present]
-    gradient = 0.5 * float(np.sum(bins.dof * extra * (bins.power - fit.spectrum) * inverse))
+    gradient = 0.5 * float(np.sum(bins.dof * extra * (residual_power(bins, fit) - fit.spectrum) * inverse))
     weight = 0.5 * bins.dof * inverse
     own = float(np.sum(weight * extra**2))
     shared = basis.T @ (weight * extra)

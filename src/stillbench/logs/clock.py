@@ -4,6 +4,7 @@ Where most steps are near whole multiples of one interval, each row gets its pla
 Where they are not (stamps in bursts, or coarser than the interval), the rows are taken as even and only long gaps show.
 """
 
+import itertools
 from dataclasses import dataclass
 
 import numpy as np
@@ -16,7 +17,9 @@ from stillbench.vocabulary.sensor_log import SensorLog, Stamps
 NEAR = 0.25
 """A step counts as even when it lies within this share of an interval of a whole multiple."""
 EVEN_SHARE = 0.98
-COARSE_SHARE = 0.05
+COARSE_SHARE = 1.0 / 3.0
+"""Of the sampling interval: stamps written no finer than this do not tell a late row from a lost one."""
+REPEATED_SHARE = 0.05
 """Above this share of repeated stamps they are coarser than the sampling."""
 BACKWARD_SHARE = 0.2
 BURST_SHARE = 0.05
@@ -30,6 +33,7 @@ LARGEST_SHIFT = 14 * 3600.0
 LISTED_STEPS = 20
 GAP_INTERVALS = 20
 FEWEST_STAMPS = 3
+BLOCK = 64
 
 
 @dataclass(frozen=True)
@@ -113,7 +117,8 @@ def _audit_stamps(stamps: Stamps, rate: float | None) -> Grid:
     steps = np.diff(seconds)
     kept = np.ones(seconds.size, dtype=bool)
     repeated = np.append(False, steps == 0)
-    coarse = bool(np.count_nonzero(repeated) > COARSE_SHARE * steps.size)
+    by_row = float(np.median(_long_steps(seconds)))
+    coarse = stamps.resolution > COARSE_SHARE * by_row or bool(np.count_nonzero(repeated) > REPEATED_SHARE * steps.size)
     if repeated.any() and not coarse:
         kept = ~repeated
         where = seconds[repeated]
@@ -129,7 +134,7 @@ def _audit_stamps(stamps: Stamps, rate: float | None) -> Grid:
                 disposition="the later row of each pair is left out",
             )
         )
-    interval, index, even = _place(seconds, segment, kept)
+    interval, index, even = _place_by_row(seconds, segment, kept) if coarse else _place(seconds, segment, kept)
     jitter = _jitter(seconds, index, segment, kept, interval)
     if not even:
         findings.append(_uneven(stamps, interval, jitter, coarse=coarse, steps=steps))
@@ -231,30 +236,67 @@ def _slope(seconds: FloatArray, index: IntArray, group: IntArray) -> float:
     return slope
 
 
+def _long_steps(seconds: FloatArray) -> FloatArray:
+    """Mean steps over stretches of 64 rows, s; of all rows where there are fewer."""
+    reach = min(BLOCK, seconds.size - 1)
+    return np.asarray((seconds[reach:] - seconds[:-reach]) / reach)
+
+
 def _place(seconds: FloatArray, segment: IntArray, kept: BoolArray) -> tuple[float, IntArray, bool]:
     """Return the interval, the place of every row, and whether the stamps are even."""
     t, s = seconds[kept], segment[kept]
     steps = np.diff(t)
     inside = np.diff(s) == 0
     usual = float(np.median(steps[inside & (steps > 0)]))
+    # The mean of the single steps: coarse stamps make the median jump, lost and late rows would draw a mean of all.
+    single = inside & (np.abs(steps / usual - 1.0) < NEAR)
+    usual = float(steps[single].mean()) if single.any() else usual
     for _ in range(2):
         multiple = np.maximum(np.rint(steps / usual), 1.0)
-        near = (np.abs(steps / usual - multiple) < NEAR) & inside
-        short = multiple <= GAP_INTERVALS + 1
+        near = (np.abs(steps / usual - multiple) < NEAR) | ~inside
         # In bursts the usual step is that inside a packet: many steps are then long, and some are very long.
         mean_multiple = float(np.minimum(multiple, LONG_STEP).mean())
         bursts = np.count_nonzero(multiple > 1) > BURST_SHARE * steps.size and mean_multiple > BURST_MULTIPLE
-        even = np.count_nonzero(near) >= EVEN_SHARE * np.count_nonzero(inside) and not bursts
-        if not even:
+        if np.count_nonzero(near) < EVEN_SHARE * steps.size or bursts:
             return _place_by_row(seconds, segment, kept)
         multiple = np.where(inside, multiple, 1.0)
         place = np.append(0, np.cumsum(multiple)).astype(np.int64)
+        if not near.all():
+            place = _place_along_line(t, s, usual)
+        short = np.diff(place) <= GAP_INTERVALS + 1
         # Groups end at long gaps, over which an interval that is a little wrong counts too many or too few.
         group = np.append(0, np.cumsum(~(inside & short)))
         usual = _slope(t, place, group)
     index = np.zeros(seconds.size, dtype=np.int64)
     index[kept] = place
     return usual, index, True
+
+
+def _place_along_line(seconds: FloatArray, segment: IntArray, interval: float) -> IntArray:
+    """Return places as whole intervals along a line whose offset follows the median of each block of 64 rows.
+
+    A row that is stamped late stands where the line puts it, and the next one is not pushed on by it.
+    """
+    place = np.empty(seconds.size, dtype=np.int64)
+    last, offset = -1, seconds[0] / interval
+    bounds = np.unique(
+        np.concatenate([np.arange(0, seconds.size, BLOCK), np.flatnonzero(np.diff(segment)) + 1, [seconds.size]])
+    )
+    for first, stop in itertools.pairwise(bounds.tolist()):
+        turns = seconds[first:stop] / interval - offset
+        if first and segment[first] != segment[first - 1]:
+            shift = last + 1 - turns[0]  # the time between is not known: the next place will do
+            offset -= shift
+            turns = turns + shift
+        rows = np.arange(stop - first)
+        wanted = np.rint(turns).astype(np.int64)
+        # Places rise from row to row: a late row gives way to the one behind it, and none goes back behind the last.
+        wanted = np.minimum.accumulate((wanted - rows)[::-1])[::-1] + rows
+        wanted = np.maximum.accumulate(np.maximum(wanted - rows, last + 1)) + rows
+        place[first:stop] = wanted
+        offset += float(np.clip(np.median(turns - wanted), -NEAR, NEAR))
+        last = int(wanted[-1])
+    return place
 
 
 def _place_by_row(seconds: FloatArray, segment: IntArray, kept: BoolArray) -> tuple[float, IntArray, bool]:

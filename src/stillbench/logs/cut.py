@@ -6,10 +6,11 @@ from collections.abc import Sequence
 import numpy as np
 
 from stillbench.foundation.arrays import BoolArray
-from stillbench.foundation.errors import NothingToMeasureError, RecordTooShortError, UsageError
+from stillbench.foundation.errors import LogError, NothingToMeasureError, RecordTooShortError, UsageError
+from stillbench.foundation.suggestions import plural
 from stillbench.logs.clock import Grid, audit_clock
 from stillbench.logs.front_end import convert
-from stillbench.logs.runs import SHORTEST_RUN, build_runs, hole_limit
+from stillbench.logs.runs import CARRIED_SHARE, SHORTEST_RUN, build_runs, hole_limit
 from stillbench.logs.spans import Instants, within
 from stillbench.vocabulary.finding import Finding
 from stillbench.vocabulary.log_sheet import LogSheet
@@ -17,6 +18,9 @@ from stillbench.vocabulary.record import Clock, Record
 from stillbench.vocabulary.sensor_log import SensorLog
 
 LISTED_GAPS = 20
+NARROW = "; with so many lost, intervals are somewhat too narrow"
+LARGEST_READING = 1e100
+"""Squares of larger ones do not fit a number of the machine."""
 
 
 def cut_record(
@@ -83,11 +87,18 @@ def cut_record(
                 float(where.size),
                 "samples",
                 excluded=True,
-                because=f"{where.size} cells are empty, NaN or infinite",
+                because=f"{plural(where.size, 'cell')} empty, NaN or infinite",
                 disposition="treated as missing samples",
             )
         )
     use = wanted & finite
+    largest = float(np.abs(channel.values[use]).max())
+    if largest > LARGEST_READING:
+        raise LogError(
+            f"channel {label!r} holds a value of {largest:.3g}",
+            f"readings below {LARGEST_READING:g}",
+            'if it marks missing data, list it as missing = ["..."] under [log] in a log sheet',
+        )
     values, missing, runs, dropped = build_runs(
         conversion.apply(channel.values[use]),
         grid.index[use],
@@ -114,6 +125,7 @@ def cut_record(
         conversion.front_end,
         tuple(findings),
         conversion.limits,
+        log.source.rows,
     )
 
 
@@ -122,13 +134,14 @@ def _chosen(
 ) -> BoolArray:
     instants = Instants(grid.seconds, log.stamps)
     first = instants.instant(start) if start is not None else None
-    last = instants.instant(stop) if stop is not None else None
+    last = instants.end(stop) if stop is not None else None
     if first is not None and last is not None and not last > first:
         raise UsageError(f"--to {stop} is not after --from {start}", "a span that runs forwards")
     wanted = within(grid.seconds, first, last)
     if not wanted.any():
         raise UsageError(
-            f"nothing of the log lies between --from {start} and --to {stop}",
+            f"nothing of the log lies between {'its start' if start is None else f'--from {start}'} and"
+            f" {'its end' if stop is None else f'--to {stop}'}",
             f"instants between 0 and {grid.seconds[-1]:.6g} s",
         )
     end = float(grid.seconds[-1])
@@ -195,8 +208,9 @@ def _gap_findings(grid: Grid, wanted: BoolArray, dropped: int) -> list[Finding]:
                 float(holes[short].sum()),
                 "samples",
                 excluded=True,
-                because=f"{int(holes[short].sum())} rows are missing in {short.size} holes of at most {limit} samples",
-                disposition="carried as missing, filled by a conditional random draw so that the runs stay whole",
+                because=f"{plural(int(holes[short].sum()), 'row')} missing in {plural(short.size, 'hole')} of at most {limit} samples",
+                disposition="carried as missing, filled by a conditional random draw so that the runs stay whole"
+                + (NARROW if holes[short].sum() > CARRIED_SHARE * rows.size else ""),
             )
         )
     gaps = np.flatnonzero(holes > limit)
@@ -229,7 +243,9 @@ def _gap_findings(grid: Grid, wanted: BoolArray, dropped: int) -> list[Finding]:
             )
         )
     if dropped:
-        findings.append(
+        share = 100.0 * dropped / max(1, int(np.count_nonzero(wanted)))
+        findings.insert(
+            0,
             Finding(
                 "gap",
                 None,
@@ -237,8 +253,8 @@ def _gap_findings(grid: Grid, wanted: BoolArray, dropped: int) -> list[Finding]:
                 float(dropped),
                 "samples",
                 excluded=True,
-                because=f"{dropped} samples stand in stretches shorter than {SHORTEST_RUN} between gaps",
+                because=f"{plural(dropped, 'sample')} ({share:.2g} % of the log) in stretches shorter than {SHORTEST_RUN} between gaps",
                 disposition="left out",
-            )
+            ),
         )
     return findings

@@ -78,6 +78,12 @@ def convert(channel: Channel, front_end: FrontEnd | None, interval: float) -> Co
         When the unit is of a dimension that cannot be characterized, or front end and unit do not fit.
     """
     if channel.kind == "increment":
+        if front_end is not None:
+            raise UsageError(
+                f"channel {channel.label!r} holds increments and has a front end",
+                "one of them",
+                "correct the log sheet",
+            )
         return _increments(channel, interval)
     if front_end is not None and front_end.scale_factor is not None:
         return _through_front_end(channel, front_end)
@@ -109,8 +115,27 @@ def convert(channel: Channel, front_end: FrontEnd | None, interval: float) -> Co
                 disposition=f"all results stay in {channel.unit.text}; they say nothing of a rate",
             ),
         )
-    limits = _limits(front_end, channel.unit, channel.unit.factor, 0.0)
-    return Conversion(quantity, channel.unit.factor, 0.0, channel.unit, None, limits, findings)
+    zero, model = 0.0, None
+    if front_end is not None and (front_end.zero is not None or front_end.scale_factor_uncertainty is not None):
+        # A log already in its own unit: the zero is taken off, the uncertainty is a common factor all the same.
+        zero = _zero(front_end, channel.unit)
+        relative = _uncertainty(front_end.scale_factor_uncertainty)[0] if front_end.scale_factor_uncertainty else 0.0
+        text = f"zero {front_end.zero or 'not declared'}"
+        if front_end.scale_factor_uncertainty:
+            text += f", scale factor of standard uncertainty {front_end.scale_factor_uncertainty}"
+        model = FrontEndModel(zero, 1.0, relative, text)
+    limits = _limits(front_end, channel.unit, channel.unit.factor, -zero)
+    return Conversion(quantity, channel.unit.factor, -zero, channel.unit, model, limits, findings)
+
+
+def _zero(front_end: FrontEnd, unit: Unit) -> float:
+    """Return the declared zero in SI of the reading."""
+    if front_end.zero is None:
+        return 0.0
+    zero, given = parse_quantity(front_end.zero, "the zero")
+    if given.dimension != unit.dimension:
+        raise UnitError(given.text, f"the zero is {front_end.zero!r}", f"a unit like {unit.text}")
+    return zero * given.factor
 
 
 def _increments(channel: Channel, interval: float) -> Conversion:
@@ -136,12 +161,7 @@ def _through_front_end(channel: Channel, front_end: FrontEnd) -> Conversion:
             f"a reading in {channel.unit.text} over a scale factor of {front_end.scale_factor!r} is no rate",
             "a scale factor such as 48.2 mV/(deg/s) or 1.2 V/g, not zero",
         )
-    zero = 0.0
-    if front_end.zero is not None:
-        zero, zero_unit = parse_quantity(front_end.zero, "the zero")
-        if zero_unit.dimension != channel.unit.dimension:
-            raise UnitError(zero_unit.text, f"the zero is {front_end.zero!r}", f"a unit like {channel.unit.text}")
-        zero *= zero_unit.factor
+    zero = _zero(front_end, channel.unit)
     factor = scale * scale_unit.factor
     relative, findings = _uncertainty(front_end.scale_factor_uncertainty)
     degrees = "deg" in (front_end.scale_factor or "") or "\N{DEGREE SIGN}" in (front_end.scale_factor or "")
@@ -198,7 +218,10 @@ def _limits(front_end: FrontEnd | None, unit: Unit, gain: float, shift: float) -
         raise UsageError(f"the converter range is {front_end.range!r}", "'0 V to 5 V' or '+-10 V'")
     if given.dimension != unit.dimension or not ends[1] > ends[0]:
         raise UsageError(f"the converter range is {front_end.range!r}", f"two readings in a unit like {unit.text}")
+    # The highest code of a converter lies a step below its range; rounding must not hide it.
+    span = ends[1] - ends[0]
+    inset = 1.25 * span / 2.0**front_end.bits if front_end.bits else 1e-9 * span
     # ``gain`` takes a reading in SI to the quantity in SI.
     scale = gain / unit.factor if math.isclose(gain, unit.factor) else gain
-    first, second = (end * scale + shift for end in ends)
+    first, second = (end * scale + shift for end in (ends[0] + inset / 2.0, ends[1] - inset))
     return min(first, second), max(first, second)

@@ -5,7 +5,8 @@ from collections import Counter
 from collections.abc import Sequence
 from dataclasses import dataclass
 
-from stillbench.foundation.errors import LogError, UsageError
+from stillbench.foundation.errors import LogError, UnitError, UsageError
+from stillbench.foundation.units import parse_unit
 from stillbench.vocabulary.log_sheet import LogSection
 
 SAMPLE_BYTES = 1 << 18
@@ -54,7 +55,9 @@ class Layout:
         """The layout in words."""
         mark = "decimal comma" if self.decimal == "," else "decimal point"
         head = "with head" if self.heads else "no head"
-        return f"text, {self.encoding}, {DELIMITER_WORDS[self.delimiter]}, {mark}, {head}, {self.columns} columns"
+        split = f"{DELIMITER_WORDS[self.delimiter]}, " if self.columns > 1 else ""
+        columns = f"{self.columns} columns" if self.columns > 1 else "one column"
+        return f"text, {self.encoding}, {split}{mark}, {head}, {columns}"
 
 
 def find_encoding(sample: bytes, name: str) -> str:
@@ -212,15 +215,33 @@ def _find_head(
             if len(cells) == width and _is_row(cells, decimal):
                 break
         first += 1
+    units_row: list[str] | None = None
     for line in reversed(lines[:first]):
         stripped = line.strip().lstrip("#%!/").strip()
         if not stripped:
             continue
         cells = split_cells(stripped, delimiter)
         if len(cells) == width and not any(is_number(cell, decimal) for cell in cells) and any(cells):
+            if _are_units(cells) and units_row is None:
+                units_row = cells
+                continue
             return _distinct(cells), first
         break
-    return None, first
+    return (None if units_row is None else _distinct(units_row)), first
+
+
+def _are_units(cells: Sequence[str]) -> bool:
+    """Whether a line holds units only, as below the head of some loggers."""
+
+    def is_unit(cell: str) -> bool:
+        try:
+            parse_unit(cell.strip("[]() "))
+        except UnitError:
+            return False
+        return True
+
+    named = [cell for cell in cells if cell]
+    return len(named) > 1 and all(map(is_unit, named))
 
 
 def _distinct(cells: Sequence[str]) -> list[str]:
@@ -228,7 +249,7 @@ def _distinct(cells: Sequence[str]) -> list[str]:
     heads: list[str] = []
     for number, cell in enumerate(cells, start=1):
         head = cell or f"column {number}"
-        heads.append(head if head not in heads else f"{head} ({number})")
+        heads.append(head if list(cells).count(head) < 2 else f"{head} ({number})")  # noqa: PLR2004  twice or more
     return heads
 
 
@@ -236,13 +257,18 @@ def _not_a_table(
     body: Sequence[str], best: float, scored: Sequence[tuple[float, int, str, str]], name: str
 ) -> LogError:
     _, _, delimiter, decimal = max(scored, default=(0.0, 0, ",", "."))
+    if best == 0:
+        # Nothing fits: the commonest delimiter splits best.
+        delimiter = max(DELIMITERS, key=lambda d: sum(len(split_cells(line, d)) > 1 for line in body))
     odd = next(
         (line for line in body[len(body) // 3 :] if not _is_row(split_cells(line, delimiter), decimal)),
         body[0] if body else "",
     )
+    cell = next((cell for cell in split_cells(odd, delimiter) if not _is_value(cell, decimal)), odd)
     share = f"only {100 * best:.0f} % of its lines are alike" if best else "no line of it is a row of numbers"
     return LogError(
-        f"{name!r} is not a table of numbers: {share}; one that does not fit reads {odd.strip()[:60]!r}",
-        "rows of numbers with the same columns",
-        "cut the lines of one device into a file of their own, or export the log as CSV",
+        f"{name!r} is not a table of numbers: {share}; {cell.strip()[:40]!r} in the line {odd.strip()[:60]!r} is neither a"
+        " number nor an ISO date-time",
+        "rows of numbers with the same columns; stamps in s, ms, us, ns or like 2025-03-01 22:15:00.25",
+        "rewrite that column, or cut the lines of one device into a file of their own",
     )

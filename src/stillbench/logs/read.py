@@ -9,7 +9,7 @@ import numpy as np
 
 from stillbench.foundation.errors import ClockError, ColumnError, LogError, UnitError, UnitMissingError, UsageError
 from stillbench.foundation.progress import SILENT, Progress
-from stillbench.foundation.suggestions import did_you_mean, listed
+from stillbench.foundation.suggestions import did_you_mean, listed, plural
 from stillbench.foundation.units import Unit, parse_unit
 from stillbench.logs.arrays import NPY_MAGIC, ArrayTable, columns_of, read_arrays
 from stillbench.logs.contents import ZIP_MAGIC, open_contents
@@ -92,7 +92,7 @@ def _named(table: Table, name: str) -> tuple[str, int]:
 
 def _unit_for(label: str, head: str, sheet: LogSheet, units: Mapping[str, str]) -> Unit:
     section = sheet.channel.get(label)
-    text = units.get(label) or units.get(head) or (section.unit if section else None) or units.get("")
+    text = units.get(label) or units.get(head) or units.get("") or (section.unit if section else None)
     if text is None:
         offered = split_head(head)[1]
         try:
@@ -194,14 +194,13 @@ def read_log(
         time_index = table.index_of(column)
     else:
         time_index = find_time_column(table)
-    for key in units:
-        if key and key not in sheet.channel:
-            table.index_of(key)
+    # A column in --unit NAME=UNIT may be given by its number too.
+    units |= {table.heads[table.index_of(key)]: unit for key, unit in units.items() if key and key not in sheet.channel}
     chosen = _chosen(table, sheet, channels, units, time_index)
     spoken = {label: _unit_for(label, table.heads[index], sheet, units) for label, index in chosen}
-    stamps = None
+    stamps, present = None, None
     if time_index is not None:
-        stamps, sentence = read_stamps(table, time_index, time_unit or sheet.clock.unit)
+        stamps, present, sentence = read_stamps(table, time_index, time_unit or sheet.clock.unit)
         understood.append(sentence)
     elif rate is None:
         hint = "" if table.has_heads else " (the columns have no heads)"
@@ -212,6 +211,9 @@ def read_log(
         )
     _refuse_interleaved(table)
     columns = table.numbers([index for _, index in chosen])
+    if present is not None and not present.all():
+        columns = [column[present] for column in columns]
+        understood.append(f"{plural(int((~present).sum()), 'row')} without a stamp left out")
     rows = columns[0].size
     if rows < FEWEST_ROWS:
         raise LogError(f"the log has {rows} rows", f"at least {FEWEST_ROWS}", "log for longer")

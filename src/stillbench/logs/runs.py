@@ -11,10 +11,11 @@ from stillbench.vocabulary.record import Clock, Record, Run
 
 LONGEST_HOLE = 20
 """Samples; a longer gap splits the run."""
-CARRIED_SHARE = 0.02
-"""Of the record that holes may make up in all; beyond, the longest of them split."""
-SINGLES_SHARE = 0.05
-"""Of the record that single missing samples may make up in any case."""
+CARRIED_SHARE = 0.10
+"""Of the record that holes may make up in all; beyond, the longest of them split. Filled by the draw of screening/fill.py
+they leave estimates and coverage as they were up to that share (tests/calibration/test_holes.py)."""
+SINGLES_SHARE = 0.20
+"""Of the record that single missing samples may make up in any case: splitting at each would leave nothing of the log."""
 SHORTEST_RUN = 16
 """Samples; shorter stretches between gaps are left out."""
 
@@ -24,7 +25,6 @@ def hole_limit(holes: IntArray, n_samples: int) -> int:
     lost = np.bincount(holes[holes <= LONGEST_HOLE], minlength=LONGEST_HOLE + 1) * np.arange(LONGEST_HOLE + 1)
     within = np.flatnonzero(np.cumsum(lost) <= CARRIED_SHARE * n_samples)
     limit = int(within[-1])
-    # Splitting at every single lost row would leave nothing of a log; filled at random they do no harm up to 5 %.
     return 1 if limit == 0 and lost[1] <= SINGLES_SHARE * n_samples else limit
 
 

@@ -10,7 +10,7 @@ from stillbench.foundation.errors import UsageError
 from stillbench.vocabulary.sensor_log import Stamps
 
 _ROW = r"row:\d+"
-_DATE_TIME = r"\d{4}-\d{2}-\d{2}(?:[T ]\d{2}:\d{2}(?::\d{2}(?:\.\d+)?)?)?"
+_DATE_TIME = r"\d{4}-\d{2}-\d{2}(?:[T ]\d{2}:\d{2}(?::\d{2}(?:\.\d+)?)?(?:Z|[+-]\d{2}:\d{2})?)?"
 _TIME_OF_DAY = r"\d{1,2}:\d{2}(?::\d{2}(?:\.\d+)?)?"
 _SECONDS = r"\d+(?:\.\d*)?(?:[eE][-+]?\d+)?"
 _INSTANT = re.compile(f"(?:{_ROW}|{_DATE_TIME}|{_TIME_OF_DAY}|{_SECONDS})$")
@@ -27,7 +27,7 @@ def _fault(text: str, found: str) -> UsageError:
 
 
 class Instants:
-    """Turns what a user says into seconds from the first sample.
+    """Turns what a user says into seconds from the first sample; clock times are those of the log's own clock.
 
     Parameters
     ----------
@@ -40,6 +40,7 @@ class Instants:
     def __init__(self, seconds: FloatArray, stamps: Stamps | None) -> None:
         self.seconds = seconds
         self.origin = stamps.origin if stamps is not None else None
+        self.zone = stamps.zone if stamps is not None else 0.0
 
     def instant(self, text: str) -> float:
         """Return seconds from the first sample.
@@ -64,11 +65,30 @@ class Instants:
                 f"{text!r} is a clock time, and the stamps of this log do not tell one", "seconds or row:N"
             )
         if re.fullmatch(_DATE_TIME, text):
-            moment = datetime.fromisoformat(text).replace(tzinfo=UTC).timestamp()
-            return moment - self.origin
+            moment = datetime.fromisoformat(text)
+            if moment.tzinfo is not None:
+                return moment.timestamp() - self.origin
+            return moment.replace(tzinfo=UTC).timestamp() - self.zone - self.origin
         hours, minutes, *rest = text.split(":")
         of_day = int(hours) * 3600.0 + int(minutes) * 60.0 + (float(rest[0]) if rest else 0.0)
-        return (of_day - self.origin) % DAY
+        after = (of_day - self.zone - self.origin) % DAY
+        # A time of day just before the start is the start's own evening, not the next.
+        before_start = after > float(self.seconds[-1]) and DAY - after < DAY / 2.0
+        return after - DAY if before_start else after
+
+    def end(self, text: str) -> float:
+        """Return the instant at which a span ends that names it: after a row, at a time.
+
+        Raises
+        ------
+        UsageError
+            As for ``instant``.
+        """
+        at = self.instant(text)
+        if not text.strip().startswith("row:"):
+            return at
+        row = int(text.strip()[4:])
+        return float(self.seconds[row]) if row < self.seconds.size else float(self.seconds[-1]) + 1e-6
 
     def span(self, text: str) -> tuple[float, float]:
         """Return start and stop of ``T1:T2``.
@@ -86,11 +106,7 @@ class Instants:
         if len(readings) != 1:
             raise _fault(text, f"the span {text!r} cannot be read as T1:T2")
         first, second = next(iter(readings))
-        start, stop = self.instant(first), self.instant(second)
-        if second.startswith("row:"):
-            # A span of rows takes in its last row: half a step further is before the next.
-            row = int(second[4:])
-            stop = float(self.seconds[row]) if row < self.seconds.size else float(self.seconds[-1]) + 1e-9
+        start, stop = self.instant(first), self.end(second)
         if not stop > start:
             raise UsageError(f"the span {text!r} stops before it starts", "T1 before T2")
         return start, stop

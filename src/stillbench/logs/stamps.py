@@ -5,7 +5,7 @@ from datetime import UTC, datetime
 
 import numpy as np
 
-from stillbench.foundation.arrays import FloatArray
+from stillbench.foundation.arrays import BoolArray, FloatArray
 from stillbench.foundation.errors import ClockError, UnitError
 from stillbench.foundation.units import TIME, parse_unit
 from stillbench.logs.table import Table
@@ -17,6 +17,9 @@ UNIX_YEARS = (978_307_200.0, 2_145_916_800.0)
 """2001 to 2037: a bare number in this range can only be unix seconds."""
 
 RESOLUTION_SAMPLE = 10_000
+FEW_ABSENT = 3
+ABSENT_SHARE = 1e-3
+"""Rows without a stamp that are left out; with more the column is refused."""
 
 _SPLIT_HEAD = re.compile(r"^\s*(.*?)\s*(?:[\[(](.*?)[\])]|[_ ](s|ms|us|ns|sec|seconds|unix|utc))?\s*$", re.IGNORECASE)
 _ISO = re.compile(r"\s*\d{4}-\d{1,2}-\d{1,2}")
@@ -60,7 +63,7 @@ def unit_of_time(head: str) -> str | None:
     return unit.text if unit.dimension == TIME and unit.text in UNIT_SECONDS else None
 
 
-def read_stamps(table: Table, index: int, declared: str | None) -> tuple[Stamps, str]:
+def read_stamps(table: Table, index: int, declared: str | None) -> tuple[Stamps, BoolArray, str]:
     """Read the time column.
 
     Parameters
@@ -74,6 +77,9 @@ def read_stamps(table: Table, index: int, declared: str | None) -> tuple[Stamps,
     Returns
     -------
     Stamps
+        Of the rows that have one.
+    (rows,) bool array
+        Which rows those are.
     str
         One sentence on how it was understood, with the flag that overrides it.
 
@@ -89,12 +95,8 @@ def read_stamps(table: Table, index: int, declared: str | None) -> tuple[Stamps,
     (numbers,) = table.numbers([index])
     if not np.isfinite(numbers).any():
         raise ClockError(f"the time column {head!r} holds no numbers", "time stamps", "name another with --time")
-    if np.isnan(numbers).any():
-        raise ClockError(
-            f"the time column {head!r} is empty in row {int(np.flatnonzero(np.isnan(numbers))[0]) + 1}",
-            "a stamp in every row",
-            "use --time none --rate HZ if the rows are evenly spaced",
-        )
+    present = _present(~np.isnan(numbers), head)
+    numbers = numbers[present]
     said = "declared" if declared else f"its head says {unit}"
     if unit is None:
         unit, said = _guess_unit(numbers, head)
@@ -104,7 +106,24 @@ def read_stamps(table: Table, index: int, declared: str | None) -> tuple[Stamps,
     resolution = _resolution(numbers) * scale
     kind = "absolute" if unit == "unix" else "counter"
     stamps = Stamps(seconds, head, unit, kind, origin, resolution)  # type: ignore[arg-type]
-    return stamps, f"time from column {head!r} in {_unit_words(unit)} ({said}); override with --time and --time-unit"
+    return (
+        stamps,
+        present,
+        f"time from column {head!r} in {_unit_words(unit)} ({said}); override with --time and --time-unit",
+    )
+
+
+def _present(present: BoolArray, head: str) -> BoolArray:
+    """Return which rows have a stamp; refuse a column with many empty cells."""
+    absent = int(np.count_nonzero(~present))
+    if absent > max(FEW_ABSENT, ABSENT_SHARE * present.size):
+        first = int(np.flatnonzero(~present)[0]) + 1
+        raise ClockError(
+            f"the time column {head!r} is empty in {absent} of {present.size} rows, first in row {first}",
+            "a stamp in every row",
+            "name another column with --time, or use --time none --rate HZ if the rows are evenly spaced",
+        )
+    return present
 
 
 def _unit_words(unit: str) -> str:
@@ -142,11 +161,13 @@ def _resolution(numbers: FloatArray) -> float:
     return spacing
 
 
-def _read_dates(table: Table, index: int) -> tuple[Stamps, str]:
+def _read_dates(table: Table, index: int) -> tuple[Stamps, BoolArray, str]:
     import pandas as pd  # noqa: PLC0415  heavy, wanted only for date-times
 
     head = table.heads[index]
-    texts = table.texts(index)
+    cells = table.texts(index)
+    present = _present(np.array([bool(cell.strip()) and cell != "None" for cell in cells]), head)
+    texts = [cell for cell, there in zip(cells, present, strict=True) if there]
     zoned = bool(_ZONED.search(texts[0].strip())) and ":" in texts[0]
     try:
         times = pd.to_datetime(pd.Series(texts, dtype="str"), format="ISO8601", utc=True)
@@ -166,6 +187,8 @@ def _read_dates(table: Table, index: int) -> tuple[Stamps, str]:
     nanoseconds = times.astype("datetime64[ns, UTC]").astype("int64").to_numpy()
     seconds = (nanoseconds - nanoseconds[0]) / 1e9
     kind = "absolute" if zoned else "local"
-    stamps = Stamps(seconds, head, "iso", kind, float(nanoseconds[0]) * 1e-9, _resolution(seconds))  # type: ignore[arg-type]
-    zone = "with zone" if zoned else "local time, no zone given"
-    return stamps, f"time from column {head!r}, date-times {zone}; override with --time and --time-unit"
+    ahead = datetime.fromisoformat(texts[0].strip()).utcoffset() if zoned else None
+    offset = ahead.total_seconds() if ahead is not None else 0.0
+    stamps = Stamps(seconds, head, "iso", kind, float(nanoseconds[0]) * 1e-9, _resolution(seconds), offset)  # type: ignore[arg-type]
+    zone = f"with zone, the first {offset / 3600.0:+g} h of UTC" if zoned else "local time, no zone given"
+    return stamps, present, f"time from column {head!r}, date-times {zone}; override with --time and --time-unit"

@@ -10,6 +10,7 @@ import numpy as np
 
 from stillbench.foundation.arrays import FloatArray
 from stillbench.foundation.errors import CellError, LogError
+from stillbench.foundation.suggestions import plural
 from stillbench.logs.contents import Contents
 from stillbench.logs.layout import (
     SAMPLE_BYTES,
@@ -157,12 +158,14 @@ class TextTable(Table):
         line = next((number for number, found in self._lines() if found.strip() == text), misfits[0][0])
         if len(misfits) > max(MISFITS, MISFIT_SHARE * rows):
             raise LogError(
-                f"{len(misfits)} lines of {self.name!r} do not have {self.layout.columns} columns;"
+                f"{len(misfits)} lines of {self.name!r} do not have {plural(self.layout.columns, 'column')};"
                 f" the first is line {line}: {text[:60]!r}",
                 "rows with the same columns all through",
                 "cut the lines of one device into a file of their own, or remove the lines that are no data",
             )
-        remark = f"{len(misfits)} torn lines are taken as missing samples; the first is line {line}: {text[:40]!r}"
+        remark = (
+            f"{plural(len(misfits), 'torn line')} taken as missing samples; the first is line {line}: {text[:40]!r}"
+        )
         if remark not in self.remarks:
             self.remarks.append(remark)
         filled = []

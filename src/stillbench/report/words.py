@@ -3,11 +3,11 @@
 from collections.abc import Mapping
 from dataclasses import dataclass
 
-from stillbench.foundation.rounding import interval_text, plain, significant, with_interval
+from stillbench.foundation.rounding import interval_text, plain, rounded_up, significant, with_interval
 from stillbench.foundation.units import parse_unit
 from stillbench.vocabulary.characterization import ChannelResult
 from stillbench.vocabulary.noise_model import NOT_OBSERVABLE, RESOLVED, UPPER_BOUND, NoiseTerm
-from stillbench.vocabulary.quantity import QUANTITIES, role_of
+from stillbench.vocabulary.quantity import QUANTITIES, is_density, role_of
 from stillbench.vocabulary.verdict import CONFORMS, FAILS, UNDECIDED, Verdict
 
 SYMBOLS: Mapping[str, str] = {
@@ -61,7 +61,7 @@ def _numbers(term: NoiseTerm, factor: float) -> tuple[str, str]:
         return "-", "-"
     value, lower, upper = (number / factor for number in (term.coefficient, term.lower, term.upper))
     if term.state == UPPER_BOUND and term.lower == 0:
-        return f"< {significant(upper, 2)}", f"estimate {significant(value, 2)}"
+        return f"< {rounded_up(upper)}", f"estimate {significant(value, 2)}"
     middle, low, high = with_interval(value, lower, upper)
     return middle, f"{low} to {high}"
 
@@ -127,7 +127,7 @@ def verdict_row(verdict: Verdict) -> VerdictRow:
     """Return a verdict with its numbers in the unit of the requirement."""
     unit = parse_unit(verdict.spoken_unit)
     # A one-sided spectral density is spoken as such: n = N sqrt(2).
-    factor = unit.factor / 2.0**0.5 if "Hz" in unit.text else unit.factor
+    factor = unit.factor / 2.0**0.5 if is_density(verdict.quantity, unit.text) else unit.factor
     value, lower, upper = (
         None if number is None else number / factor for number in (verdict.value, verdict.lower, verdict.upper)
     )

@@ -39,14 +39,16 @@ def equal_runs(values: FloatArray) -> tuple[IntArray, IntArray]:
 def longest_chance_run(values: FloatArray) -> float:
     """Return the length of a stretch of equal values that chance exceeds once in a hundred logs.
 
-    With p the share of the commonest value in a block of 1024 samples, 1 + ln(0.01/(n (1-p)))/ln p: run lengths of a
+    With p the share of the commonest value in a block of 1024 samples, or of equal neighbours if that is more, 1 + ln(0.01/(n (1-p)))/ln p: run lengths of a
     repeated independent trial are geometric.
     """
     shares = []
     for first in range(0, max(1, values.size - BLOCK + 1), BLOCK):
         _, counts = np.unique(values[first : first + BLOCK], return_counts=True)
         shares.append(counts.max() / counts.sum())
-    p = min(float(np.quantile(shares, 0.9)), 1.0 - 1e-6)
+    # A filtered sensor repeats a value oftener than its commonest value would by itself.
+    ties = float(np.mean(values[1:] == values[:-1]))
+    p = min(max(float(np.quantile(shares, 0.9)), ties), 1.0 - 1e-6)
     return 1.0 + float(np.log(FALSE_ALARM / (values.size * (1.0 - p))) / np.log(p))
 
 

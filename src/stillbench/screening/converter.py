@@ -3,6 +3,7 @@
 import numpy as np
 
 from stillbench.foundation.arrays import FloatArray
+from stillbench.screening.level import level_of
 from stillbench.screening.outcome import Outcome, nothing
 from stillbench.vocabulary.finding import Finding
 from stillbench.vocabulary.record import Record
@@ -10,6 +11,7 @@ from stillbench.vocabulary.record import Record
 CONTINUOUS_SHARE = 8
 FINE = 0.6
 REFUSED = 0.4
+UNSEEN = 0.2
 
 
 def converter_step(values: FloatArray) -> float | None:
@@ -26,9 +28,12 @@ def converter_step(values: FloatArray) -> float | None:
 
 
 def sample_noise(record: Record) -> float:
-    """Return the standard deviation of single samples, from differences of neighbours; Sheppard's correction off."""
-    squares = np.concatenate([np.diff(piece) ** 2 for piece in record.pieces()])
-    return float(np.sqrt(np.nanmean(squares) / 2.0))
+    """Return the standard deviation of the samples about the course of some hundred of them.
+
+    What dithers a converter is all noise that is fast against the averages taken of it, filtered or not.
+    """
+    squares = np.concatenate([(piece - level_of(piece)) ** 2 for piece in record.pieces()])
+    return float(np.sqrt(np.nanmean(squares)))
 
 
 def check_converter(record: Record) -> Outcome:
@@ -52,7 +57,9 @@ def check_converter(record: Record) -> Outcome:
         ratio,
         "steps",
         excluded=False,
-        because=f"the noise of single samples is {ratio:.2g} steps of the converter",
+        because="the noise of single samples is "
+        + (f"{ratio:.2g} steps" if ratio > UNSEEN else f"below {UNSEEN:g} steps")
+        + " of the converter",
         disposition="the white noise is not resolved: no figure is given for it"
         if refused
         else "the rounding is no longer quite white: the white noise may be off by some percent",

@@ -6,6 +6,8 @@ import numpy as np
 
 from stillbench.foundation.arrays import BoolArray, FloatArray
 from stillbench.foundation.errors import NothingToMeasureError
+from stillbench.foundation.rounding import significant
+from stillbench.foundation.units import parse_unit
 from stillbench.logs.runs import sample_times
 from stillbench.screening.outcome import Outcome, nothing
 from stillbench.vocabulary.finding import Finding
@@ -84,6 +86,7 @@ def find_motion(record: Record) -> Outcome:
             "choose the still part with --from and --to",
         )
     times = sample_times(record)
+    unit = parse_unit(record.unit_text)
     findings = []
     for first, last in _stretches(wide):
         before = medians[first - 1] if first > 0 else np.nan
@@ -91,7 +94,8 @@ def find_motion(record: Record) -> Outcome:
         size = float(np.max(spreads[first:last]) / still)
         level = float(after - before)
         turned = np.isfinite(level) and abs(level) > LEVEL_JUMP * still
-        words = f"; the level afterwards differs by {level:.6g} (SI)" if turned else ""
+        shown = f"{significant(level / unit.factor)} {unit.text}"
+        words = f"; the level afterwards differs by {shown}" if turned else ""
         findings.append(
             Finding(
                 "motion",
@@ -100,7 +104,7 @@ def find_motion(record: Record) -> Outcome:
                 abs(level) / still if turned else size,
                 "times the still spread",
                 excluded=True,
-                because=f"the spread of the readings is up to {size:.3g} times that at rest{words}",
+                because=f"the spread of the readings is up to {significant(size, 2)} times that at rest{words}",
                 disposition="left out; the record is split there"
                 + (", each part has its own mean, and the bias is that of the longest part" if turned else ""),
             )

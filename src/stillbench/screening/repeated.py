@@ -14,7 +14,7 @@ from stillbench.vocabulary.finding import Finding
 from stillbench.vocabulary.record import Record, Run
 
 FAR_LAGS = (97, 131, 193, 257)
-FEWEST_SAMPLES = 1_000
+FEWEST_SAMPLES = 200
 HOLD_SCORE = 5.0
 SMALLEST_HOLD = 1.02
 COARSE_EVENTS = 2_000
@@ -38,7 +38,11 @@ def mean_hold(values: FloatArray) -> tuple[float, float, float]:
     """
     pairs = ~(np.isnan(values[1:]) | np.isnan(values[:-1]))
     changes = int(np.count_nonzero((values[1:] != values[:-1]) & pairs)) / max(1, int(np.count_nonzero(pairs)))
-    ties = float(np.mean([np.mean(values[lag:] == values[:-lag]) for lag in FAR_LAGS if lag < values.size // 2]))
+    ties = float(
+        np.mean(
+            [np.mean(values[lag:] == values[:-lag]) for lag in FAR_LAGS if lag <= max(values.size // 2, FAR_LAGS[0])]
+        )
+    )
     score = (1.0 - ties - changes) / np.sqrt(2.0 * ties * (1.0 - ties) / values.size + 1e-10)
     return (1.0 - ties) / changes if changes > 0 else np.inf, float(score), ties
 

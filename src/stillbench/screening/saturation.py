@@ -3,6 +3,7 @@
 import numpy as np
 
 from stillbench.foundation.arrays import FloatArray
+from stillbench.foundation.suggestions import plural
 from stillbench.logs.runs import sample_times
 from stillbench.screening.outcome import Outcome, nothing
 from stillbench.vocabulary.finding import Finding
@@ -66,6 +67,6 @@ def _finding(times: FloatArray, count: int, n_samples: int, where: str) -> Findi
         100.0 * count / n_samples,
         "%",
         excluded=False,
-        because=f"{count} samples lie {where}",
+        because=f"{plural(count, 'sample')} ({100.0 * count / n_samples:.2g} %) {where}",
         disposition="left in: the noise is clipped there, white noise reads low and the mean is drawn inwards",
     )

@@ -8,7 +8,7 @@ import numpy as np
 from stillbench.foundation.arrays import BoolArray
 from stillbench.foundation.errors import RecordTooShortError, UsageError
 from stillbench.foundation.progress import SILENT, Progress
-from stillbench.foundation.suggestions import did_you_mean
+from stillbench.foundation.suggestions import did_you_mean, plural
 from stillbench.logs.runs import SHORTEST_RUN, regroup
 from stillbench.screening.constant import find_stuck, require_movement
 from stillbench.screening.converter import check_converter
@@ -18,11 +18,12 @@ from stillbench.screening.outcome import Outcome
 from stillbench.screening.repeated import undo_repeats
 from stillbench.screening.saturation import find_saturation
 from stillbench.screening.spikes import find_spikes
+from stillbench.screening.variance import find_variance_change
 from stillbench.vocabulary.finding import FINDING_KINDS, Finding
 from stillbench.vocabulary.record import Record
 from stillbench.vocabulary.screened_record import ScreenedRecord
 
-CHECKS = (find_stuck, find_saturation, find_motion, find_spikes, check_converter)
+CHECKS = (find_stuck, find_saturation, find_motion, check_converter, find_spikes, find_variance_change)
 """In this order, each on what the ones before it left; repeated values come before all of them."""
 
 
@@ -57,7 +58,7 @@ def screen(
     keep = dict(keep or {})
     for kind in keep:
         if kind not in FINDING_KINDS:
-            hint = did_you_mean(kind, FINDING_KINDS) or "the kinds are listed in the report's findings"
+            hint = did_you_mean(kind, FINDING_KINDS) or f"the kinds are {', '.join(FINDING_KINDS)}"
             raise UsageError(f"there is no finding {kind!r}", "a kind of finding", hint)
     require_movement(record)
     slower, findings = undo_repeats(record)
@@ -67,18 +68,24 @@ def screen(
         slower = record
     else:
         found += list(findings)
-    offered = slower.n_samples
+    # Where values were repeated, what the log offers is the number of values of the sensor.
+    offered = max(slower.n_samples, round(record.n_rows * record.sample_interval / slower.sample_interval))
     plain, current = slower, slower
     for number, check in enumerate(CHECKS):
         outcome = check(current)
         progress.step((number + 1) / len(CHECKS))
         marked = _judged(outcome, found, keep, exclusions=exclusions)
         if marked.any():
+            before, left = current, int(np.count_nonzero(~(current.missing | marked)))
             current = regroup(current, current.missing | marked)
+            lost = left - int(np.count_nonzero(~current.missing))
+            if lost:
+                found.append(_short_stretches(before, lost))
             if not current.runs:
                 raise RecordTooShortError(
                     int(np.count_nonzero(~marked)), SHORTEST_RUN, "any estimate after the exclusions listed"
                 )
+            require_movement(current)
     used = int(np.count_nonzero(~current.missing))
     edited = current is not plain
     return ScreenedRecord(
@@ -87,6 +94,19 @@ def screen(
         offered,
         used,
         _filled(plain) if edited else None,
+    )
+
+
+def _short_stretches(record: Record, lost: int) -> Finding:
+    return Finding(
+        "gap",
+        None,
+        None,
+        float(lost),
+        "samples",
+        excluded=True,
+        because=f"{plural(lost, 'sample')} of {record.label} in stretches shorter than {SHORTEST_RUN} between what was left out",
+        disposition="left out",
     )
 
 

@@ -1,16 +1,15 @@
 """Isolated gross spikes: single samples far outside the noise."""
 
-import itertools
-
 import numpy as np
 
 from stillbench.foundation.arrays import BoolArray, FloatArray, IntArray
 from stillbench.logs.runs import sample_times
+from stillbench.screening.converter import converter_step
+from stillbench.screening.level import level_of
 from stillbench.screening.outcome import Outcome, nothing
 from stillbench.vocabulary.finding import Finding
 from stillbench.vocabulary.record import Record
 
-BLOCK = 64
 FALSE_ALARM = 1e-3
 MARGIN = 0.5
 SHOULDER = 0.75
@@ -21,18 +20,6 @@ FEWEST_NEIGHBOURS = 3
 SCALE_SAMPLE = 4_000
 LONGEST_SPIKE = 2
 """Samples; longer ones are bursts."""
-
-
-def level_of(values: FloatArray) -> FloatArray:
-    """Return the slow course of one run: medians of 64 samples, joined by straight lines; shape (n,)."""
-    block = min(BLOCK, max(8, values.size // 8))
-    count = max(1, values.size // block)
-    edges = np.linspace(0, values.size, count + 1).astype(int)
-    if (np.diff(edges) == block).all():
-        medians = np.nanmedian(values.reshape(count, block), axis=1)
-    else:
-        medians = np.array([np.nanmedian(values[a:b]) for a, b in itertools.pairwise(edges)])
-    return np.interp(np.arange(values.size), (edges[:-1] + edges[1:] - 1) / 2.0, medians)
 
 
 def threshold_of(n_samples: int) -> float:
@@ -74,14 +61,16 @@ def find_spikes(record: Record) -> Outcome:
     """Mark samples far from the slow course and from their neighbours, unless the noise as a whole has heavy tails."""
     residual = np.concatenate([piece - level_of(piece) for piece in record.pieces()])
     size = np.abs(residual)
-    scale = _robust(size)
+    # Readings in coarse steps have no spread of their own below a step.
+    step = converter_step(record.values[~record.missing]) or 0.0
+    scale = max(_robust(size), step)
     if scale == 0:
         return nothing(record)
     threshold = threshold_of(record.values.size)
     off = np.nan_to_num(size, nan=0.0) > SHOULDER * threshold * scale
     if not off.any():
         return nothing(record)
-    local = _local_scale(record)
+    local = max(_local_scale(record), step)
     contrast = np.zeros(record.values.size)
     for run in record.runs:
         places = np.flatnonzero(off[run.first : run.last])

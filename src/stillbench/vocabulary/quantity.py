@@ -155,6 +155,11 @@ def role_of(term: str) -> str | None:
     return None
 
 
+def is_density(quantity: str, unit: str) -> bool:
+    """Whether a limit on ``quantity`` in ``unit`` is a spectral density: white noise per root hertz, one-sided."""
+    return "Hz" in unit and role_of(quantity) == "white"
+
+
 def term_names() -> list[str]:
     """All term names, as written in a specification (with spaces)."""
     return sorted({name.replace("_", " ") for quantity in QUANTITIES.values() for name in quantity.terms.values()})

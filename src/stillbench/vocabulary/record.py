@@ -106,6 +106,8 @@ class Record:
         Of the clock and the reader.
     limits : (float, float) or None
         Lowest and highest value the converter can give, SI.
+    n_rows : int
+        Rows that the log offers for this channel, before anything is left out.
     """
 
     label: str
@@ -120,6 +122,7 @@ class Record:
     front_end: FrontEndModel | None = None
     findings: tuple[Finding, ...] = ()
     limits: tuple[float, float] | None = None
+    n_rows: int = 0
 
     @property
     def n_samples(self) -> int:

@@ -51,6 +51,8 @@ class Stamps:
         Unix seconds (UTC for ``absolute``, the reading of the wall clock for ``local``) of the first stamp.
     resolution : float
         Smallest step the stamps can show, s.
+    zone : float
+        Seconds that the clock of the log is ahead of UTC (0 where its stamps have no zone).
     """
 
     seconds: FloatArray
@@ -59,6 +61,7 @@ class Stamps:
     kind: StampKind
     origin: float | None
     resolution: float
+    zone: float = 0.0
 
 
 @dataclass(frozen=True)

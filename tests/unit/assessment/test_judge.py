@@ -67,9 +67,14 @@ def test_drift_is_the_largest_departure_from_the_null() -> None:
     # The average of ten samples at the bump, and the null, each with its white noise.
     assert verdict.value == pytest.approx(0.5, abs=4 * 0.1 / np.sqrt(10))
     assert verdict.decision == "does not conform"
+    gappy = log.copy()
+    gappy[3_600:34_000] = np.nan
+    verdict = judged(gappy, quantity="drift", limit="0.9 rad/s", averaging_time="1 s", null="60 s", over="1 h")
+    assert verdict.decision == "undecided"
+    assert "averages exist" in verdict.because
     short = judged(log[:18_000], quantity="drift", limit="0.4 rad/s", averaging_time="1 s", null="60 s", over="1 h")
     assert short.decision == "undecided"
-    assert "shorter" in short.because
+    assert "does not cover" in short.because
 
 
 def test_bias_limits_its_size() -> None:
@@ -85,6 +90,49 @@ def test_typical_is_no_limit_and_simple_acceptance_takes_the_estimate() -> None:
     assert verdict.decision == ("conforms" if verdict.value <= 0.3162 else "does not conform")
 
 
+def test_coverage_of_the_requirement_rules_whatever_the_table_has() -> None:
+    """The bound is z(coverage) standard errors off, for the requirement's coverage and not for --coverage."""
+    for coverage, z in ((0.95, 1.645), (0.99, 2.326), (0.8, 0.842)):
+        wanted = Requirement(id="r", quantity="bias", limit="9 rad/s", coverage=coverage)
+        for own in (0.95, 0.68):
+            result = characterize(
+                WHITE + 2.0, rate=10.0, unit="rad/s", coverage=own, specification=Specification(requirement=(wanted,))
+            )
+            verdict = result.channels[0].verdicts[0]
+            assert verdict.bound is not None
+            assert verdict.value is not None
+            assert verdict.bound - verdict.value == pytest.approx(z / np.sqrt(20_000), rel=0.05)
+
+
+def test_heavy_tails_reach_the_verdict() -> None:
+    heavy = np.random.default_rng(3).standard_t(5, 50_000)
+    verdict = judged(heavy, 1.0, quantity="angle random walk", limit="9 rad/sqrt(s)")
+    term = characterize(heavy, rate=1.0, unit="rad/s").channels[0].noise.terms["angle_random_walk"]
+    assert (verdict.lower, verdict.upper) == pytest.approx((term.lower, term.upper), rel=1e-6)
+
+
+def test_noise_that_the_converter_does_not_resolve_is_not_judged() -> None:
+    log = np.round(made_noise(60_000, 5, white=0.2) + 0.1)
+    log[::7_000] += 1.0  # a code is seen now and then
+    for quantity, more in (("angle random walk", {}), ("resolution", {"averaging_time": "1 s"})):
+        unit = "rad/sqrt(s)" if quantity.startswith("angle") else "rad/s"
+        assert judged(log, quantity=quantity, limit=f"9 {unit}", **more).decision == "undecided"
+
+
+def test_clipped_noise_is_not_judged() -> None:
+    log = np.clip(WHITE, -1.0, 1.0)
+    assert judged(log, quantity="angle random walk", limit="9 rad/sqrt(s)").decision == "undecided"
+
+
+def test_an_averaging_time_between_samples_is_scaled_by_the_model() -> None:
+    """Dt = 0.8 s, asked 1 s: white noise averages as 1/sqrt(tau), not as the nearest whole sample."""
+    verdict = judged(WHITE, 1.25, quantity="resolution", limit="9 rad/s", averaging_time="1 s")
+    assert verdict.value == pytest.approx(2.772 * np.sqrt(0.8), rel=4 / np.sqrt(2 * 20_000))
+    drift = judged(WHITE, 1.25, quantity="drift", limit="9 rad/s", averaging_time="1 s", null="60 s")
+    assert drift.decision == "undecided"
+    assert "whole number of samples" in drift.because
+
+
 def test_what_this_version_does_not_measure_is_undecided() -> None:
     verdict = judged(WHITE, quantity="warm-up time", limit="5 min")
     assert (verdict.decision, verdict.value) == ("undecided", None)
@@ -97,8 +145,9 @@ def test_undecided_names_the_log_that_would_decide() -> None:
     assert verdict.decision == "undecided"
     assert verdict.deciding_length is not None
     low, high = verdict.deciding_length
-    assert low >= 30_000
-    assert high is None or high > low
+    # Errors of the walk fall with the root of the length: at 8 % now, 5 % off the limit is seen at some twenty times it.
+    assert high is None or high > 100_000
+    assert low < 32 * 30_000
 
 
 def test_a_model_that_does_not_fit_gives_no_verdict_on_its_terms() -> None:
@@ -127,13 +176,16 @@ def test_common_factor() -> None:
 
 
 def test_false_acceptance_at_the_limit() -> None:
-    """150 sensors exactly at the limit of the walk (relative error about 15 %): at most 5 %, within the binomial bound."""
+    """300 sensors exactly at the limit of the walk (relative error about 15 %): at most 5 %, within the binomial bound.
+
+    The bound is taken at 99 %, so that the 8.9 % of an unadjusted threshold would pass one time in three only.
+    """
     accepted = 0
-    trials = 150
+    trials = 300
     for seed in range(trials):
         log = made_noise(8_192, 4_000 + seed, white=1.0, walk=0.02)
         accepted += judged(log, 1.0, quantity="rate random walk", limit="0.02 rad/s/sqrt(s)").decision == "conforms"
-    assert accepted <= stats.binom.ppf(0.999, trials, 0.05)
+    assert accepted <= stats.binom.ppf(0.99, trials, 0.05)
 
 
 def test_specification_file_of_the_examples(tmp_path: Path) -> None:

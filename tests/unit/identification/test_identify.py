@@ -43,8 +43,14 @@ def test_short_log_cannot_tell_flicker_from_walk() -> None:
     assert ambiguous >= 1
 
 
-def test_very_short_log() -> None:
-    result = result_of(made_noise(100, 5, white=1.0))
+@pytest.mark.parametrize("n_samples", [16, 40, 100])
+def test_very_short_log(n_samples: int) -> None:
+    result = result_of(made_noise(n_samples, 5, white=1.0))
+    white = result.noise.terms["angle_random_walk"]
+    assert white.state == "resolved"
+    assert result.noise.accepted == (("angle_random_walk",),)
+    # Four standard errors on each side of the mean hold the truth.
+    assert abs(result.bias.value) < 4 * (result.bias.upper - result.bias.lower) / (2 * 1.96)
     assert result.noise.terms["bias_instability"].state == "not observable"
     assert result.noise.terms["bias_instability"].coefficient is None
     assert "short_record" in {finding.kind for finding in result.findings}
@@ -64,6 +70,64 @@ def test_a_low_pass_in_the_sensor_is_recognised(corner: float) -> None:
     assert white.coefficient == pytest.approx(1.0, abs=0.03 + 4 / np.sqrt(2 * 200_000 * 2 * noise.band[1]))
     finding = next(f for f in result_of(log).findings if f.kind == "low_pass")
     assert "averaging times above" in finding.disposition
+
+
+def test_a_ramp_neither_spoils_the_fit_nor_hides_a_filter() -> None:
+    ramp = 1e-5 * np.arange(100_000)
+    noise = made_noise(100_000, 5, white=1.0)
+    assert abs(result_of(noise + ramp).noise.goodness - result_of(noise).noise.goodness) < 0.5
+    from scipy.signal import lfilter  # noqa: PLC0415
+
+    pole = np.exp(-2 * np.pi * 0.1)
+    model = result_of(lfilter([1 - pole], [1, -pole], noise) + ramp).noise
+    assert model.response is not None
+    assert model.terms["angle_random_walk"].coefficient == pytest.approx(1.0, abs=0.03)
+
+
+def test_correlated_noise_is_named_with_its_time() -> None:
+    from stillbench.terms.correlated import CorrelatedNoise  # noqa: PLC0415
+
+    generator = np.random.default_rng(4)
+    log = generator.standard_normal(131_072) + 0.1 * CorrelatedNoise(1_000.0).generate(131_072, generator)
+    model = result_of(log, 10.0).noise
+    term = model.terms["exponentially_correlated"]
+    assert term.state == "resolved"
+    assert term.lower is not None
+    assert term.upper is not None
+    assert term.lower < 0.1 < term.upper
+    assert term.parameters["correlation_time_lower_s"] < 100.0 < term.parameters["correlation_time_upper_s"]
+    assert all("exponentially_correlated" in chosen for chosen in model.accepted)
+    assert "exponentially_correlated" not in result_of(made_noise(131_072, 5, white=1.0)).noise.terms
+
+
+@pytest.mark.parametrize(
+    ("shape", "words"), [("pole", "one pole"), ("butter", "two poles"), ("average", "moving average")]
+)
+def test_the_low_pass_of_a_sensor_is_fitted_by_shape(shape: str, words: str) -> None:
+    """Corner at an eighth of the rate; white level within 1 % and its error, corner within 5 %."""
+    from scipy.signal import butter, lfilter  # noqa: PLC0415
+
+    pole = np.exp(-2 * np.pi / 8)
+    filters = {"pole": ([1 - pole], [1, -pole]), "butter": butter(2, 0.25), "average": (np.ones(4) / 4, [1.0])}
+    log = lfilter(*filters[shape], made_noise(131_072, 6, white=1.0, walk=1e-3))[100:]
+    noise = result_of(np.round(log / 0.05) * 0.05, 100.0).noise
+    assert noise.response is not None
+    assert noise.response.shape == words
+    corner = {"pole": 12.5, "butter": 12.5, "average": 0.443 * 100 / 4}[shape]
+    assert noise.response.corner == pytest.approx(corner, rel=0.05)
+    white = noise.terms["angle_random_walk"]
+    assert white.coefficient == pytest.approx(0.1, rel=0.01 + 3 * 0.0055)  # RMSE of the white level is some 0.5 %
+
+
+def test_the_second_opinion_agrees_on_clean_noise() -> None:
+    result = result_of(made_noise(131_072, 6, white=1.0, flicker=0.05, walk=2e-3))
+    for name in ("angle_random_walk", "bias_instability", "rate_random_walk"):
+        term = result.noise.terms[name]
+        second = term.curve_estimate
+        assert second is not None
+        assert term.coefficient is not None
+        assert second.lower < term.coefficient < second.upper
+    assert "methods_disagree" not in {finding.kind for finding in result.findings}
 
 
 def test_quantization_noise_is_tried_on_increments_only() -> None:

@@ -1,5 +1,7 @@
 """The clock audit on made stamps: each oddity is found, sized, and does not move the grid."""
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 
@@ -62,14 +64,15 @@ def test_missing_rows_keep_their_place() -> None:
     assert "missing_samples" in kinds
 
 
-def test_many_holes_are_carried_up_to_two_percent() -> None:
-    keep = np.random.default_rng(3).random(20_000) > 0.015
+def test_many_holes_are_carried() -> None:
+    keep = np.random.default_rng(3).random(20_000) > 0.08
     keep[0] = keep[-1] = True
     record = cut_record(log_of(even(20_000)[keep]), "x")
     assert len(record.runs) == 1
-    keep = np.random.default_rng(3).random(20_000) > 0.06
+    assert record.missing.sum() == 20_000 - keep.sum()
+    keep = np.random.default_rng(3).random(20_000) > 0.25
     record = cut_record(log_of(even(20_000)[keep]), "x")
-    assert record.missing.sum() <= 0.021 * record.n_samples
+    assert record.missing.sum() <= 0.21 * record.n_samples
 
 
 def test_bursts() -> None:
@@ -85,6 +88,27 @@ def test_coarse_stamps() -> None:
     grid, kinds = audit(np.floor(even() * 10) / 10)
     assert kinds == ["stamp_resolution"]
     assert grid.sample_interval == pytest.approx(INTERVAL, rel=1e-4)
+
+
+@pytest.mark.parametrize("interval", [0.98e-3, 1.0101e-3, 1.05e-3, 1.3e-3])
+def test_stamps_as_coarse_as_the_interval_invent_no_lost_rows(interval: float) -> None:
+    seconds = np.floor(np.arange(20_000) * interval * 1e3) * 1e-3
+    log = log_of(seconds)
+    assert log.stamps is not None
+    grid = audit_clock(replace(log, stamps=replace(log.stamps, resolution=1e-3)))
+    assert [finding.kind for finding in grid.findings] == ["stamp_resolution"]
+    assert grid.sample_interval == pytest.approx(interval, rel=1e-4)
+    assert grid.kept.all()
+    assert grid.index[-1] == 19_999
+
+
+def test_late_stamps_invent_no_lost_rows() -> None:
+    """Rows stamped 0.6 intervals late now and then: none is missing, at most a few in ten thousand are misplaced."""
+    late = np.random.default_rng(0).random(50_000) < 0.008
+    grid, kinds = audit(even(50_000) + np.where(late, 0.6 * INTERVAL, 0.0))
+    assert kinds == []
+    assert abs(int(grid.index[-1]) - 49_999) <= 10
+    assert grid.sample_interval == pytest.approx(INTERVAL, rel=3e-4)
 
 
 def test_duplicates_are_left_out() -> None:

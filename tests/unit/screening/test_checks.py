@@ -49,6 +49,20 @@ def test_clean_logs_are_left_alone(mix: str) -> None:
     assert alarms <= stats.binom.ppf(0.999, 40, 0.01)
 
 
+def test_repeated_values_in_a_short_log() -> None:
+    true = made_noise(450, 5, white=1.0)
+    screened = screen(record_of(np.repeat(true, 2)))
+    assert kinds(screened) == ["repeated_values"]
+    assert screened.record.sample_interval == pytest.approx(0.02)
+
+
+def test_noise_that_doubles_part_way() -> None:
+    values = made_noise(40_000, 5, white=1.0) * np.where(np.arange(40_000) < 10_000, 2.0, 1.0)
+    finding = next(f for f in screen(record_of(values)).findings if f.kind == "variance_change")
+    assert finding.measure == pytest.approx(0.5, rel=0.05)
+    assert finding.start == pytest.approx(100.0, abs=1.0)
+
+
 @pytest.mark.parametrize("hold", [1.05, 1.25, 1.6, 2.0, 2.5, 4.0, 20.4])
 def test_repeated_values(hold: float) -> None:
     true = made_noise(30_000, 5, white=1.0)
