@@ -85,6 +85,7 @@ def command(
     from stillbench.foundation.errors import OutputError, UsageError  # noqa: PLC0415
     from stillbench.logs.read import unit_flags  # noqa: PLC0415
     from stillbench.pipeline import characterize  # noqa: PLC0415
+    from stillbench.selfcheck.run import remembered_summary  # noqa: PLC0415
 
     if len(keep) != len(reasons) or not all(reason.strip() for reason in reasons):
         raise UsageError(
@@ -112,6 +113,7 @@ def command(
             made_at=made_at,
             exclusions=not no_exclusions,
             keep=dict(zip(keep, reasons, strict=True)),
+            selfcheck=remembered_summary(),
             progress=progress,
         )
         to_stdout = json_file == "-"

@@ -29,6 +29,7 @@ def command(out: Path, *, quiet: bool) -> int:
     from stillbench.pipeline import characterize  # noqa: PLC0415
     from stillbench.report.render import deviation_picture  # noqa: PLC0415
     from stillbench.report.words import ASCII_MARKS, verdict_row  # noqa: PLC0415
+    from stillbench.selfcheck.run import remembered_summary  # noqa: PLC0415
     from stillbench.simulation.launch import BENCHES, MADE_AT, SPECIFICATION, write_bench  # noqa: PLC0415
 
     began = time.monotonic()
@@ -44,7 +45,14 @@ def command(out: Path, *, quiet: bool) -> int:
             log, sheet = write_bench(bench, logs)
             if not quiet:
                 click.echo(f"characterizing {log} ...", err=True)
-            result = characterize(log, log_sheet=sheet, specification=specification, made_at=MADE_AT, progress=progress)
+            result = characterize(
+                log,
+                log_sheet=sheet,
+                specification=specification,
+                made_at=MADE_AT,
+                selfcheck=remembered_summary(),
+                progress=progress,
+            )
             folder = out / bench.name
             write_result(result, folder, None)
             write_whole({folder / PICTURE: deviation_picture(result.channels[0])})

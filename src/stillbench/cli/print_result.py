@@ -2,7 +2,7 @@
 
 from collections.abc import Sequence
 
-from stillbench.report.notes import deviation_notes
+from stillbench.report.notes import POOR, deviation_notes
 from stillbench.report.words import (
     ASCII_MARKS,
     bias_text,
@@ -22,7 +22,18 @@ SIGNS = {
     "\N{DOT OPERATOR}": "*",
 }
 WRAP = 100
-LISTED = 12
+ALIKE = 3
+GRAVE = (
+    "poor_fit",
+    "motion",
+    "saturation",
+    "coarse_converter",
+    "variance_change",
+    "methods_disagree",
+    "repeated_values",
+    "low_pass",
+    "scale_factor_unknown",
+)
 
 
 def ascii_text(text: str) -> str:
@@ -71,6 +82,8 @@ def _channel_text(channel: ChannelResult) -> str:
     rows = [[row.name, row.symbol, row.value, row.interval, row.unit, row.state] for row in term_rows(channel)]
     rows.append(["bias", "", bias_text(channel), "", "", "mean of this log"])
     percent = f"{100 * channel.curve.coverage:g} % interval"
+    if channel.noise.goodness > POOR:
+        blocks.append("! the model does not explain this log: the terms below are not to be relied on")
     bias = rows.pop()
     blocks.append(
         table(["noise term", "", "coefficient", percent, "unit", "state"], rows, right=(2,))
@@ -98,14 +111,23 @@ def _channel_text(channel: ChannelResult) -> str:
         blocks.append("\n".join([text, *notes]))
     blocks.append("\n".join(wrapped(f"{lead} {text}", "") for lead, text in deviation_notes(channel)))
     if channel.findings:
-        told = ["findings"]
-        for finding in channel.findings[:LISTED]:
-            when = f" at {instant_text(finding.start)}" if finding.start is not None else ""
-            mark = "left out" if finding.excluded else "kept"
-            told.append(
-                wrapped(f"{finding.kind.replace('_', ' ')}{when} ({mark}): {finding.because}; {finding.disposition}")
-            )
-        if len(channel.findings) > LISTED:
-            told.append(f"  and {len(channel.findings) - LISTED} more, all in the report")
-        blocks.append("\n".join(told))
+        blocks.append("\n".join(["findings", *_finding_lines(channel)]))
     return "\n\n".join(blocks)
+
+
+def _finding_lines(channel: ChannelResult) -> list[str]:
+    """Return findings by kind, those that touch every number first; of many alike the first few."""
+    kinds = sorted({finding.kind for finding in channel.findings}, key=lambda kind: (kind not in GRAVE, kind))
+    lines = []
+    for kind in kinds:
+        alike = [finding for finding in channel.findings if finding.kind == kind]
+        for finding in alike[:ALIKE]:
+            when = f" at {instant_text(finding.start)}" if finding.start is not None else ""
+            if finding.start is not None and finding.stop is not None and finding.stop > finding.start:
+                when += f" to {instant_text(finding.stop)}"
+            mark = "band cut" if kind in ("low_pass", "poor_fit") else "left out"
+            mark = mark if finding.excluded else "kept"
+            lines.append(wrapped(f"{kind.replace('_', ' ')}{when} ({mark}): {finding.because}; {finding.disposition}"))
+        if len(alike) > ALIKE:
+            lines.append(f"  and {len(alike) - ALIKE} more of the kind {kind.replace('_', ' ')}, all in the report")
+    return lines

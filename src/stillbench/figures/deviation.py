@@ -5,7 +5,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from stillbench.figures.style import GREY, INK, PETROL, SHADE, label_decade_steps, logarithmic, with_halo
+from stillbench.figures.style import GREY, INK, PETROL, SHADE, bracketed, label_decade_steps, logarithmic, with_halo
 from stillbench.foundation.arrays import FloatArray
 from stillbench.foundation.units import parse_unit
 from stillbench.terms.catalogue import SHAPE_BY_ROLE
@@ -100,7 +100,7 @@ def draw_deviation(
                 solid_capstyle="butt",
                 zorder=5,
             )
-            places.put(text, (at, value / unit.factor), MARK_PLACES, 7.5, number)
+            places.put(text, (at, value / unit.factor), MARK_PLACES, 7.5, number, lead=True)
     if tau[-1] > few:
         axes.text(
             np.sqrt(few * tau[-1] * 1.25),
@@ -112,7 +112,7 @@ def draw_deviation(
             va="top",
         )
     axes.set_xlabel("averaging time \N{GREEK SMALL LETTER TAU} / s")
-    axes.set_ylabel(f"Allan deviation / ({unit.printed})")
+    axes.set_ylabel(f"Allan deviation / {bracketed(unit.printed)}")
     label_decade_steps(axes, "y")
 
 
@@ -164,10 +164,11 @@ RISING_PLACES = tuple(place for place in _RING if place[1] < 0) + _RING
 MARK_PLACES: tuple[Place, ...] = (
     (16.0, 0.0, "left", "center"),
     (-16.0, 0.0, "right", "center"),
-    (16.0, 9.0, "left", "bottom"),
-    (-16.0, -9.0, "right", "top"),
-    *_RING,
+    (0.0, 5.0, "center", "bottom"),
+    (0.0, -5.0, "center", "top"),
+    *((dx, dy, "left" if dx > 0 else "right", "center") for dy in (14.0, -14.0, 28.0, -28.0) for dx in (24.0, -24.0)),
 )
+LEAD = {"arrowstyle": "-", "color": GREY, "linewidth": 0.5, "shrinkA": 1, "shrinkB": 1}
 
 
 class Places:
@@ -184,7 +185,14 @@ class Places:
         self._boxes: list[tuple[float, float, float, float]] = []
 
     def put(
-        self, text: str, anchor: tuple[float, float], candidates: tuple[Place, ...], size: float, number: int
+        self,
+        text: str,
+        anchor: tuple[float, float],
+        candidates: tuple[Place, ...],
+        size: float,
+        number: int,
+        *,
+        lead: bool = False,
     ) -> None:
         """Write ``text`` near ``anchor`` (data coordinates), at the candidate that covers least."""
         best, least = candidates[0], float("inf")
@@ -196,12 +204,14 @@ class Places:
                 best, least = place, cost
             if cost == 0:
                 break
-        told = self._annotate(text, anchor, best, size)
+        told = self._annotate(text, anchor, best, size, lead=lead and abs(best[1]) > size)
         with_halo(told, number)
         left, bottom, right, top = told.get_window_extent(self._renderer).extents
         self._boxes.append((float(left), float(bottom), float(right), float(top)))
 
-    def _annotate(self, text: str, anchor: tuple[float, float], place: Place, size: float) -> "Annotation":
+    def _annotate(
+        self, text: str, anchor: tuple[float, float], place: Place, size: float, *, lead: bool = False
+    ) -> "Annotation":
         dx, dy, horizontal, vertical = place
         return self._axes.annotate(
             text,
@@ -213,6 +223,7 @@ class Places:
             va=vertical,
             linespacing=1.25,
             zorder=6,
+            arrowprops=LEAD if lead else None,
         )
 
     def _cost(self, box: tuple[float, float, float, float]) -> float:

@@ -115,6 +115,11 @@ def label_decade_steps(axes: "Axes", which: str) -> None:
         getattr(axes, f"{which}axis").set_minor_formatter(FuncFormatter(step))
 
 
+def bracketed(unit: str) -> str:
+    """Put a compound unit in brackets, so that quantity / unit reads as one quotient."""
+    return f"({unit})" if any(sign in unit for sign in "/\N{DOT OPERATOR}\N{SQUARE ROOT}") else unit
+
+
 def with_halo(text: "Text", number: int) -> None:
     """Mark a text to be drawn with a rim of paper colour, so that it stays readable over curves (done by the page's CSS)."""
     text.set_gid(f"halo-{number}")

@@ -4,7 +4,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from stillbench.figures.style import GREY, INK, PETROL, SHADE, time_unit, with_halo
+from stillbench.figures.style import GREY, INK, PETROL, SHADE, bracketed, time_unit, with_halo
 from stillbench.foundation.arrays import FloatArray
 from stillbench.foundation.units import parse_unit
 
@@ -16,6 +16,10 @@ if TYPE_CHECKING:
 WIDE_SHARE = 0.004
 """Of the axis: shorter exclusions are marked by a tick at the foot."""
 OUTLIER_ROOM = 1.2
+LABEL_SHARE = 0.09
+"""Of the axis that a word takes: nearer ones are not written twice."""
+SCATTERED = ("missing_samples", "duplicate_stamps", "not_finite")
+"""Their span is that from the first to the last, not what was left out."""
 
 
 def draw_timeline(axes: "Axes", channel: "ChannelResult") -> None:
@@ -44,30 +48,27 @@ def draw_timeline(axes: "Axes", channel: "ChannelResult") -> None:
     for part in np.split(np.arange(time.size), np.asarray(gap, dtype=int) + 1):
         axes.fill_between(time[part], low[part], high[part], color=PETROL, alpha=0.22, linewidth=0, rasterized=False)
         axes.plot(time[part], mean[part], color=PETROL, linewidth=0.9)
-    bottom, top = _limits(low, mean, high)
+    spans = _spans(channel, divisor, float(time[0]), float(time[-1]))
+    still = np.ones(time.size, dtype=bool)
+    for left, right, _ in spans:
+        still &= (time < left) | (time > right)
+    # The axis is that of what is used; what was left out may reach beyond it.
+    shown_part = still if still.any() else ~still
+    bottom, top = _limits(low[shown_part], mean[shown_part], high[shown_part])
     axes.set_ylim(bottom, top)
     axes.set_xlim(0 if time[0] < 0.02 * time[-1] else time[0], (duration + np.median(np.diff(timeline.time))) / divisor)
     span = axes.get_xlim()[1] - axes.get_xlim()[0]
-    for finding in channel.findings:
-        if not finding.excluded or finding.start is None or finding.stop is None:
-            continue
-        if finding.kind in ("missing_samples", "duplicate_stamps", "not_finite"):
-            continue
-        left, right = finding.start / divisor, finding.stop / divisor
+    last = -np.inf
+    for left, right, word in spans:
         if right - left > WIDE_SHARE * span:
             axes.axvspan(left, right, color=SHADE, linewidth=0, zorder=0)
-            axes.text(
-                (left + right) / 2,
-                top,
-                finding.kind.replace("_", " "),
-                color=GREY,
-                fontsize=7,
-                ha="center",
-                va="bottom",
-            )
+            middle = (left + right) / 2
+            if middle - last > LABEL_SHARE * span:
+                axes.text(middle, top, word, color=GREY, fontsize=7, ha="center", va="bottom")
+                last = middle
         else:
             axes.plot([left], [top], marker="v", color=INK, markersize=4, clip_on=False, linestyle="none")
-    shown = f"{channel.quantity} / ({unit.printed})"
+    shown = f"{channel.quantity} / {bracketed(unit.printed)}"
     if offset:
         shown = f"{channel.quantity} less {offset:.6g} / {unit.printed}"
     axes.set_ylabel(shown)
@@ -84,6 +85,20 @@ def draw_timeline(axes: "Axes", channel: "ChannelResult") -> None:
         )
         with_halo(told, 1)
     axes.margins(x=0)
+
+
+def _spans(channel: "ChannelResult", divisor: float, first: float, last: float) -> list[tuple[float, float, str]]:
+    """Return what was left out within the axis: start, stop and a word, in the unit of the axis."""
+    spans = []
+    for finding in channel.findings:
+        if not finding.excluded or finding.start is None or finding.stop is None or finding.kind in SCATTERED:
+            continue
+        left, right = max(first, finding.start / divisor), min(last, finding.stop / divisor)
+        if right < first or left > last:
+            continue
+        word = "left out" if "on request" in finding.because else finding.kind.replace("_", " ")
+        spans.append((left, right, word))
+    return spans
 
 
 def _limits(low: FloatArray, mean: FloatArray, high: FloatArray) -> tuple[float, float]:

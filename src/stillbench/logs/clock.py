@@ -18,7 +18,10 @@ NEAR = 0.25
 """A step counts as even when it lies within this share of an interval of a whole multiple."""
 EVEN_SHARE = 0.98
 COARSE_SHARE = 1.0 / 3.0
-"""Of the sampling interval: stamps written no finer than this do not tell a late row from a lost one."""
+"""Of the sampling interval: with stamps written no finer than this, rows that seem lost or doubled may be a beat."""
+FEWEST_BEATS = 4
+BEAT_SPREAD = 0.3
+"""Standard deviation over mean of the distances between odd steps: a beat is regular, chance gives 1."""
 REPEATED_SHARE = 0.05
 """Above this share of repeated stamps they are coarser than the sampling."""
 BACKWARD_SHARE = 0.2
@@ -118,7 +121,8 @@ def _audit_stamps(stamps: Stamps, rate: float | None) -> Grid:
     kept = np.ones(seconds.size, dtype=bool)
     repeated = np.append(False, steps == 0)
     by_row = float(np.median(_long_steps(seconds)))
-    coarse = stamps.resolution > COARSE_SHARE * by_row or bool(np.count_nonzero(repeated) > REPEATED_SHARE * steps.size)
+    coarse = bool(np.count_nonzero(repeated) > REPEATED_SHARE * steps.size)
+    coarse = coarse or (stamps.resolution > COARSE_SHARE * by_row and _beats(steps, by_row))
     if repeated.any() and not coarse:
         kept = ~repeated
         where = seconds[repeated]
@@ -234,6 +238,15 @@ def _slope(seconds: FloatArray, index: IntArray, group: IntArray) -> float:
             break
         use &= np.abs(residual) <= 4.0 * scale
     return slope
+
+
+def _beats(steps: FloatArray, interval: float) -> bool:
+    """Whether double and zero steps come at regular distances, as when coarse stamps beat against the interval."""
+    odd = np.flatnonzero((steps == 0) | ((steps > (1.0 + 2.0 * NEAR) * interval) & (steps < 3.0 * interval)))
+    if odd.size < FEWEST_BEATS:
+        return False
+    distance = np.diff(odd)
+    return bool(distance.std() < BEAT_SPREAD * distance.mean())
 
 
 def _long_steps(seconds: FloatArray) -> FloatArray:

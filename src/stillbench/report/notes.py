@@ -96,7 +96,7 @@ def timeline_notes(channel: ChannelResult) -> list[Note]:
     notes.append((f"{lead[0].upper()}{lead[1:]}", f"samples are used, in {runs} run{'s' if runs > 1 else ''}."))
     kinds: dict[str, int] = {}
     for finding in channel.findings:
-        if finding.excluded and finding.start is not None:
+        if finding.excluded and finding.start is not None and finding.kind != "gap":
             kinds[finding.kind] = kinds.get(finding.kind, 0) + 1
     if kinds:
         told = ", ".join(f"{kind.replace('_', ' ')} ({count})" for kind, count in kinds.items())
@@ -107,7 +107,9 @@ def timeline_notes(channel: ChannelResult) -> list[Note]:
     if longest > 0:
         notes.append(("Longest gap", f"{duration_text(longest)}; no average crosses it."))
     if any(finding.kind == "motion" for finding in channel.findings):
-        notes.append(("The sensor was moved.", "This is not one still log; what is used are its still parts."))
+        moved = channel.quantity in ("angular rate", "acceleration")
+        lead = "The sensor was moved." if moved else "The reading was disturbed."
+        notes.append((lead, "This is not one still log; what is used are its still parts."))
     return notes
 
 

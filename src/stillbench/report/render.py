@@ -16,6 +16,7 @@ from stillbench.figures.timeline import draw_timeline
 from stillbench.foundation.rounding import significant
 from stillbench.foundation.units import Unit, parse_unit
 from stillbench.report import notes as margin
+from stillbench.report.notes import POOR
 from stillbench.report.strip import strip
 from stillbench.report.words import (
     bias_text,
@@ -42,11 +43,13 @@ THRESHOLD = 1.959963984540054 * 2.0**0.5
 SEEN_90 = (1.959963984540054 + 1.2815515655446004) * 2.0**0.5
 TABLE_PER_DECADE = 3
 MOST_TIMELINE_ROWS = 14
+BAND_KINDS = ("low_pass", "poor_fit")
+"""Findings that leave frequencies out, not samples."""
 NO_JITTER = 1e-6
 """Of an interval: rounding of the stamps as numbers."""
 
 IDENTIFICATION_LABELS = {
-    "designation": "unit",
+    "designation": "sensor",
     "serial": "serial number",
     "kind": "kind",
     "axis": "axis",
@@ -107,9 +110,9 @@ def specification_marks(verdicts: tuple[Verdict, ...], channel: ChannelResult) -
         role = role_of(name)
         if role is None or name not in channel.noise.terms:
             continue
-        at = {"white": 1.0, "walk": 3.0, "quantization": 3.0**0.5, "ramp": 2.0**0.5}.get(
-            role, channel.curve.tau[-1] ** 0.5
-        )
+        # White noise at its reading time; slower terms where their lines come into the figure.
+        last = float(channel.curve.tau[-1])
+        at = {"white": 1.0, "quantization": 3.0**0.5, "walk": last / 4.0, "ramp": last / 3.0}.get(role, last**0.5)
         at = float(np.clip(at, channel.curve.tau[0] * 1.5, channel.curve.tau[-1] / 1.5))
         course = term_course(role, verdict.limit, np.array([at]), channel.sample_interval)
         marks.append((at, float(course[0]), f"limit {limit} ({words.split(' (')[0]})"))
@@ -249,7 +252,11 @@ def _finding_row(finding: Finding) -> dict[str, str]:
         "kind": finding.kind.replace("_", " "),
         "when": when or "whole log",
         "size": size,
-        "excluded": "yes" if finding.excluded else "no",
+        "excluded": "band cut"
+        if finding.kind in BAND_KINDS and finding.excluded
+        else "yes"
+        if finding.excluded
+        else "no",
         "because": finding.because,
         "disposition": finding.disposition,
     }
@@ -259,8 +266,11 @@ def _strip_facts(result: Characterization) -> list[tuple[str, str]]:
     sensor = result.identification.get("sensor", {})
     channel = result.channels[0]
     facts = []
-    if sensor.get("kind"):
-        facts.append(("Unit", " ".join(str(sensor[key]) for key in ("designation", "kind") if sensor.get(key))))
+    parts = [str(sensor[key]) for key in ("designation", "kind") if sensor.get(key)]
+    if sensor.get("serial"):
+        parts.append(f"serial {sensor['serial']}")
+    if parts:
+        facts.append(("Sensor", " ".join(parts)))
     if channel.front_end:
         facts.append(("Output", channel.front_end))
     facts.append(
@@ -343,6 +353,7 @@ def _channel_content(channel: ChannelResult, key: str, first: int) -> dict[str, 
         "with_plain": bool(channel.unscreened),
         "figures": _figures(channel, key, first),
         "findings": [_finding_row(finding) for finding in channel.findings],
+        "poor": channel.noise.goodness > POOR,
         "bias": bias_text(channel).replace(unit.text, unit.printed),
         "coverage": f"{100 * channel.curve.coverage:g} %",
         "scale": f"{100 * channel.scale_factor_uncertainty:.2g} %" if channel.scale_factor_uncertainty else "",

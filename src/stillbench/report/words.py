@@ -32,6 +32,8 @@ class TermRow:
     value, interval, unit : str
         ``unit`` ASCII; ``printed_unit`` with signs.
     printed_unit : str
+    curve : str
+        Second opinion from the curve, with its interval, or a dash.
     textbook, textbook_how : str
     plain_value : str
         Without the exclusions, or empty.
@@ -45,6 +47,7 @@ class TermRow:
     printed_unit: str
     state: str
     because: str
+    curve: str
     textbook: str
     textbook_how: str
     plain_value: str
@@ -66,6 +69,14 @@ def _numbers(term: NoiseTerm, factor: float) -> tuple[str, str]:
     return middle, f"{low} to {high}"
 
 
+def _second(term: NoiseTerm, factor: float) -> str:
+    second = term.curve_estimate
+    if second is None:
+        return "-"
+    numbers = [number / factor for number in (second.coefficient, second.lower, second.upper)]
+    return f"< {rounded_up(numbers[2])}" if second.lower == 0 else interval_text(*numbers)
+
+
 def term_rows(channel: ChannelResult) -> list[TermRow]:
     """Return the noise-term table of a channel."""
     rows = []
@@ -84,6 +95,7 @@ def term_rows(channel: ChannelResult) -> list[TermRow]:
                 unit.printed,
                 term.state,
                 "" if term.state == RESOLVED and role_of(name) != "ramp" else term.because,
+                _second(term, unit.factor),
                 significant(reading / unit.factor) if reading is not None else "-",
                 term.textbook.how if term.textbook else "",
                 _numbers(other, unit.factor)[0] if other is not None else "",

@@ -114,9 +114,10 @@ def test_heavy_tails_reach_the_verdict() -> None:
 def test_noise_that_the_converter_does_not_resolve_is_not_judged() -> None:
     log = np.round(made_noise(60_000, 5, white=0.2) + 0.1)
     log[::7_000] += 1.0  # a code is seen now and then
-    for quantity, more in (("angle random walk", {}), ("resolution", {"averaging_time": "1 s"})):
+    cases: list[tuple[str, dict[str, object]]] = [("angle random walk", {}), ("resolution", {"averaging_time": "1 s"})]
+    for quantity, more in cases:
         unit = "rad/sqrt(s)" if quantity.startswith("angle") else "rad/s"
-        assert judged(log, quantity=quantity, limit=f"9 {unit}", **more).decision == "undecided"
+        assert judged(log, quantity=quantity, limit=f"9 {unit}", rate=10.0, **more).decision == "undecided"
 
 
 def test_clipped_noise_is_not_judged() -> None:

@@ -90,6 +90,17 @@ def test_coarse_stamps() -> None:
     assert grid.sample_interval == pytest.approx(INTERVAL, rel=1e-4)
 
 
+def test_stamps_as_coarse_as_the_interval_still_show_lost_rows() -> None:
+    """Whole seconds at 1 Hz, some rows lost by chance: no beat, so the grid has a place for each."""
+    keep = np.random.default_rng(1).random(20_000) > 0.01
+    seconds = np.arange(20_000.0)[keep]
+    log = log_of(seconds)
+    assert log.stamps is not None
+    grid = audit_clock(replace(log, stamps=replace(log.stamps, resolution=1.0)))
+    assert grid.sample_interval == pytest.approx(1.0, rel=1e-9)
+    assert np.array_equal(grid.index - grid.index[0], (seconds - seconds[0]).astype(int))
+
+
 @pytest.mark.parametrize("interval", [0.98e-3, 1.0101e-3, 1.05e-3, 1.3e-3])
 def test_stamps_as_coarse_as_the_interval_invent_no_lost_rows(interval: float) -> None:
     seconds = np.floor(np.arange(20_000) * interval * 1e3) * 1e-3

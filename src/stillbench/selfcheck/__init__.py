@@ -1,0 +1,1 @@
+"""Published cases, shipped with the package and computed on the machine it runs on."""
