@@ -8,7 +8,7 @@ WORKERS ?= 2
 export OMP_NUM_THREADS ?= 1
 export OPENBLAS_NUM_THREADS ?= 1
 
-.PHONY: help demo test check format lock clean
+.PHONY: help demo test check format calibrate bench lock clean
 
 help: ## list the words
 	@grep -hE '^[a-z]+:.*##' $(MAKEFILE_LIST) | sed 's/:[^#]*## /\t/' | expand -t 12
@@ -42,6 +42,12 @@ check: $(VENV)/dev.done ## format, lint, types, who imports whom
 format: $(VENV)/dev.done ## let ruff rewrite the layout
 	$(BIN)/ruff format .
 	$(BIN)/ruff check --fix .
+
+calibrate: $(VENV)/dev.done ## made logs of known noise against the claims, hours; resumable; writes reference/calibration.md
+	$(BIN)/python bench/calibrate.py --workers $(WORKERS)
+
+bench: $(VENV)/dev.done ## speed and memory as ratios, minutes; writes bench/results.md
+	$(BIN)/python bench/bench.py
 
 lock: ## pin the requirements again (needs uv)
 	for set in "run:--group pyproject.toml:build" "dev:--group pyproject.toml:build --group pyproject.toml:dev"; do \

@@ -60,7 +60,7 @@ class Scenario:
 
     def ramp(self, n_samples: int) -> float:
         """Ramp per sample: so many times K/sqrt(n), the error of a ramp under a walk."""
-        return self.ramp_in_errors * self.theta.get("walk", 0.0) / np.sqrt(n_samples)
+        return float(self.ramp_in_errors * self.theta.get("walk", 0.0) / np.sqrt(n_samples))
 
 
 SCENARIOS = (
@@ -95,7 +95,7 @@ def other_flicker(n_samples: int, generator: np.random.Generator) -> FloatArray:
 def made(scenario: Scenario, n_samples: int, seed: int) -> FloatArray:
     """One made log."""
     generator = np.random.default_rng([zlib.crc32(scenario.name.encode()), n_samples, seed])
-    log = scenario.ramp(n_samples) * np.arange(n_samples)
+    log: FloatArray = scenario.ramp(n_samples) * np.arange(n_samples, dtype=np.float64)
     for role, strength in scenario.theta.items():
         if role == "correlated":
             log += strength * CorrelatedNoise(scenario.correlation_time).generate(n_samples, generator)
@@ -105,7 +105,7 @@ def made(scenario: Scenario, n_samples: int, seed: int) -> FloatArray:
             log += strength * generator.standard_t(5, n_samples) * np.sqrt(3.0 / 5.0)
         else:
             log += strength * BY_ROLE[role].generate(n_samples, generator)
-    return np.round(log / scenario.step) * scenario.step if scenario.step else log
+    return np.asarray(np.round(log / scenario.step) * scenario.step, dtype=np.float64) if scenario.step else log
 
 
 def terms_of(scenario: Scenario) -> list[str]:

@@ -86,3 +86,19 @@ def test_exact_arithmetic_agrees_to_nine_digits(log: FloatArray, factor: int, of
     exact = exact_overlapping_variance(given_log, factor)
     assume(exact > 1e-6)
     assert deviation([given_log], factor) ** 2 == pytest.approx(float(exact), rel=2e-9)
+
+
+def test_the_number_of_threads_does_not_change_a_bit() -> None:
+    log = np.random.default_rng(2).standard_normal(1_200_000)
+    taken = np.array([1, 3, 100, 9_999, 400_000])
+    one, two = (pooled_deviation([log], taken, threads=threads)[0] for threads in (1, 2))
+    assert np.array_equal(one, two)
+
+
+@pytest.mark.parametrize("offset", [0.0, 1e8])
+def test_nine_digits_against_exact_fractions_at_all_averaging_times(offset: float) -> None:
+    """Log relative error of at least nine (NIST StRD practice), the inputs taken as the binary numbers they are."""
+    log = offset + np.random.default_rng(3).standard_normal(300)
+    for factor in range(1, 101):
+        exact = float(exact_overlapping_variance(log, factor))
+        assert -np.log10(max(abs(deviation([log], factor) ** 2 / exact - 1.0), 1e-16)) >= 9.0

@@ -1,6 +1,8 @@
 """Overlapping Allan deviation, pooled over runs, in blocks that stay in the cache."""
 
+import os
 from collections.abc import Sequence
+from concurrent.futures import ThreadPoolExecutor
 
 import numpy as np
 
@@ -12,6 +14,8 @@ from stillbench.vocabulary.deviation_curve import DeviationCurve
 from stillbench.vocabulary.record import Record
 
 BLOCK = 8_192
+CHUNK = 1 << 19
+MOST_THREADS = 4
 """Second differences handled at a time; the block, its buffer and the slices it reads fit the second-level cache."""
 
 
@@ -27,14 +31,14 @@ def _angle(rate: FloatArray) -> FloatArray:
     return angle
 
 
-def _sums_of_squares(angle: FloatArray, factors: IntArray, progress: Progress, done: float, share: float) -> FloatArray:
-    """Sum of squared second differences of ``angle`` at each averaging factor, all factors in the inner loop."""
+def _chunk_sums(angle: FloatArray, factors: IntArray, begin: int, end: int) -> FloatArray:
+    """Sum of squared second differences that start in ``begin`` to ``end``, for each factor, in blocks, all factors inside."""
     sums = np.zeros(factors.size)
     buffer = np.empty(BLOCK)
-    most = angle.size - 2 * int(factors[0])
-    for first in range(0, most, BLOCK):
+    for first in range(begin, end, BLOCK):
+        stop = min(first + BLOCK, end)
         for i, factor in enumerate(factors):
-            last = min(first + BLOCK, angle.size - 2 * factor)
+            last = min(stop, angle.size - 2 * factor)
             if last <= first:
                 break  # factors increase, so no longer one has pairs here either
             difference = buffer[: last - first]
@@ -43,12 +47,39 @@ def _sums_of_squares(angle: FloatArray, factors: IntArray, progress: Progress, d
             difference -= middle
             difference += angle[first:last]
             sums[i] += difference @ difference
-        progress.step(done + share * min(1.0, (first + BLOCK) / most))
     return sums
 
 
+def _sums_of_squares(
+    angle: FloatArray, factors: IntArray, progress: Progress, done: float, share: float, threads: int
+) -> FloatArray:
+    """Sum of squared second differences of ``angle`` at each averaging factor.
+
+    Chunks are the same whatever the number of threads, and are added in their order: so are the bits of the result.
+    """
+    most = angle.size - 2 * int(factors[0])
+    begins = range(0, most, CHUNK)
+
+    def work(begin: int) -> FloatArray:
+        return _chunk_sums(angle, factors, begin, min(begin + CHUNK, most))
+
+    sums = np.zeros(factors.size)
+    with ThreadPoolExecutor(max_workers=threads) as pool:
+        parts = pool.map(work, begins) if threads > 1 and len(begins) > 1 else map(work, begins)
+        for begin, part in zip(begins, parts, strict=True):
+            sums += part
+            progress.step(done + share * min(1.0, (begin + CHUNK) / most))
+    return sums
+
+
+def usable_threads() -> int:
+    """Return how many threads the curve uses by default: the processors this process may run on, at most four."""
+    affinity = getattr(os, "sched_getaffinity", None)
+    return min(MOST_THREADS, len(affinity(0)) if affinity else (os.cpu_count() or 1))
+
+
 def pooled_deviation(
-    pieces: Sequence[FloatArray], factors: IntArray, progress: Progress = SILENT
+    pieces: Sequence[FloatArray], factors: IntArray, progress: Progress = SILENT, threads: int | None = None
 ) -> tuple[FloatArray, IntArray]:
     """Return the overlapping Allan deviation of several runs, and the number of pairs, at each averaging factor.
 
@@ -62,6 +93,8 @@ def pooled_deviation(
         Increasing averaging factors, samples.
     progress : Progress
         Told the fraction done.
+    threads : int, optional
+        As many as there are processors by default; the result does not depend on it.
 
     Returns
     -------
@@ -82,7 +115,9 @@ def pooled_deviation(
         usable = factors[2 * factors <= piece.size]
         if usable.size:
             share = piece.size / total
-            sums[: usable.size] += _sums_of_squares(_angle(piece), usable, progress, done, share)
+            sums[: usable.size] += _sums_of_squares(
+                _angle(piece), usable, progress, done, share, usable_threads() if threads is None else threads
+            )
             pairs[: usable.size] += piece.size - 2 * usable + 1
             done += share
     with np.errstate(invalid="ignore", divide="ignore"):
