@@ -40,6 +40,7 @@ CHUNK = 50
 COVERAGE = 0.95
 CERTAINTY = 0.999
 LENGTHS = (131_072, 16_384)
+SHOWN_TIMES = 50.0
 ROLES = ("quantization", "white", "flicker", "walk", "correlated")
 SYMBOLS = {"quantization": "Q", "white": "N", "flicker": "B", "walk": "K", "correlated": "G", "ramp": "R"}
 
@@ -57,6 +58,10 @@ class Scenario:
     step: float = 0.0
     other_flicker: bool = False
     lengths: tuple[int, ...] = field(default=LENGTHS)
+
+    def shows_correlation(self, n_samples: int) -> bool:
+        """Whether a log is long enough (fifty times Tc) for correlated noise to be told from flicker and walk at all."""
+        return n_samples >= SHOWN_TIMES * self.correlation_time
 
     def ramp(self, n_samples: int) -> float:
         """Ramp per sample: so many times K/sqrt(n), the error of a ramp under a walk."""
@@ -249,7 +254,9 @@ def summary_of(scenario: Scenario, n_samples: int, rows: list[dict[str, object]]
     accepted = int(np.sum(ramps[:, 3] > RAMP_RATIO))
     covered = int(np.sum((ramps[:, 1] <= slope) & (slope <= ramps[:, 2])))
     cut = sum(not row["band"] or bool(row["filter"]) for row in rows)
-    claim = verdict(false, max(1, len(single)), 0.0, 0.05)
+    claim = (
+        verdict(false, max(1, len(single)), 0.0, 0.05) if scenario.shows_correlation(n_samples) else "(log too short)"
+    )
     ramp_claim = "" if slope else " " + verdict(accepted, len(rows), 0.0, 0.02)
     cells = [
         scenario.name,
@@ -288,7 +295,8 @@ def write_table(scenarios: tuple[Scenario, ...], logs: int) -> None:
         "Claims: RMSE <= 1.10 of the bound (1.15 with the other flicker generator); 95 % intervals cover 94 to 97 % for\n"
         "resolved terms, at least 94 % for the others; a false term in at most 5 % of unambiguous answers with the correlated\n"
         f"term offered (accepted at a likelihood ratio of {CORRELATED_RATIO:g}); a ramp that is not there in at most 2 %\n"
-        f"(ratio {RAMP_RATIO:g}).\n\n"
+        f"(ratio {RAMP_RATIO:g}). A log shorter than fifty correlation times does not show correlated noise at that ratio: it is\n"
+        "then named flicker or walk, and no claim is made.\n\n"
         "## Coefficients\n\n"
         "| scenario | samples | term | truth | logs | bound (of the coefficient) | RMSE over bound | 95 % interval covers |\n"
         "|---|---|---|---|---|---|---|---|\n" + "\n".join(terms) + "\n\n"
