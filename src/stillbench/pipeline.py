@@ -20,7 +20,8 @@ from stillbench.foundation.errors import NothingToMeasureError, RecordTooShortEr
 from stillbench.foundation.progress import SILENT, Progress
 from stillbench.foundation.toml_source import load_toml
 from stillbench.foundation.units import parse_unit
-from stillbench.identification.identify import POOR_FIT, Identification, identify_noise
+from stillbench.identification.identify import Identification, identify_noise
+from stillbench.identification.remarks import POOR_FIT
 from stillbench.logs.clock import Grid, audit_clock
 from stillbench.logs.cut import cut_record
 from stillbench.logs.front_end import convert
@@ -271,6 +272,7 @@ def _characterize_record(
         run_lengths=[run.n_samples for run in used.runs],
         coverage=coverage,
         mixture=replace(found.fitted.mixture(), slope=mixture_of(found.model, used.sample_interval).slope),
+        variance=found.fitted.allan_variance(np.rint(curve.tau / used.sample_interval).astype(np.int64)),
     )
     same_level = not levels_differ(screened.findings)
     bias, bias_error = _bias(used, found, z, same_level=same_level)

@@ -36,6 +36,8 @@ FULL_BAND = 0.499
 """Top of the band over the sampling rate that counts as all of it."""
 WHOLE = 0.01
 """Relative difference of an averaging time from a whole number of samples that is let pass."""
+SETTLED = 15.0
+"""Averaging time times 2 pi corner from which the filter of a sensor no longer lowers the deviation."""
 COVERED = 0.98
 """Share of the averages due in the horizon that must exist for a drift to be judged."""
 
@@ -163,7 +165,9 @@ def deviation_at(evidence: Evidence, tau: float, limit: float, coverage: float, 
     if 2 * samples > longest:
         raise NotMeasurableError(f"the log has no two averages of {tau:g} s in one run")
     top = evidence.model.band[1]
-    if evidence.trusted and (top * interval > FULL_BAND or tau * top >= 1.0):
+    low_pass = evidence.fitted.low_pass
+    settled = low_pass is None or 2.0 * np.pi * low_pass.corner * tau / interval >= SETTLED
+    if evidence.trusted and settled and (top * interval > FULL_BAND or tau * top >= 1.0):
         weights = evidence.fitted.variance_weights(tau / interval)
         return _functional(evidence, weights, factor, limit, coverage, "amplitude", "from the fitted model")
     _require_whole(tau, samples, interval)
@@ -201,7 +205,7 @@ def _from_curve(evidence: Evidence, samples: int, coverage: float, factor: float
         tuple(draws.tolist()),
         None,
         (error, error),
-        "from the curve itself, since the model does not hold there",
+        "from the curve itself, where the model does not hold or a filter is felt",
     )
 
 

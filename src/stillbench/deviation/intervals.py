@@ -54,6 +54,7 @@ def bound_deviation(
     run_lengths: Sequence[int],
     coverage: float = 0.95,
     mixture: Mixture | None = None,
+    variance: FloatArray | None = None,
 ) -> DeviationCurve:
     """Add interval, degrees of freedom and model to a curve.
 
@@ -70,6 +71,8 @@ def bound_deviation(
         Two-sided.
     mixture : Mixture, optional
         The terms in unit samples, where the model withholds a figure that its curve needs.
+    variance : (k,) float array, optional
+        Allan variance of the random terms at the points of the curve, where a filter of the sensor shapes it.
     """
     mixture = mixture_of(model, sample_interval) if mixture is None else mixture
     if not mixture.parts:
@@ -77,5 +80,6 @@ def bound_deviation(
     factors = np.rint(curve.tau / sample_interval).astype(np.int64)
     edf = curve_edf(mixture, factors, run_lengths)
     lower, upper = chi_square_limits(curve.deviation, edf, coverage)
-    course = np.sqrt(mixture.allan_variance(factors))
+    ramp = replace(mixture, theta={})
+    course = np.sqrt(mixture.allan_variance(factors) if variance is None else variance + ramp.allan_variance(factors))
     return replace(curve, lower=lower, upper=upper, edf=edf, model=course, coverage=coverage)

@@ -5,11 +5,11 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from stillbench.foundation.arrays import BoolArray, FloatArray
+from stillbench.foundation.arrays import BoolArray, FloatArray, IntArray
 from stillbench.likelihood.bins import BinnedPowers
 from stillbench.likelihood.fit import Fit
 from stillbench.likelihood.profile import profile_limits, shape_limits
-from stillbench.likelihood.response import OUTPUT
+from stillbench.likelihood.response import OUTPUT, FilterFit
 from stillbench.terms.mixture import Mixture, term_of
 
 WALKERS = 32
@@ -17,6 +17,8 @@ STEPS = 400
 SETTLING = 100
 STRETCH = 2.0
 SEED = 90_173
+FELT = 32.0
+"""Averaging time times corner below which the filter of a sensor shows in the curve."""
 
 
 @dataclass(frozen=True)
@@ -36,6 +38,8 @@ class FittedModel:
         Of the correlated term, samples.
     family : tuple of BinnedPowers
         The same data with other correlation times near the best one: intervals take the best of them at every point.
+    low_pass : FilterFit or None
+        Of the sensor.
     excess : float
         (kurtosis - 3)/n of heavy tails: what they add to the variance of ln N^2.
     """
@@ -47,6 +51,32 @@ class FittedModel:
     correlation_time: float | None = None
     family: tuple[BinnedPowers, ...] = ()
     excess: float = 0.0
+    low_pass: FilterFit | None = None
+
+    def allan_variance(self, factors: IntArray) -> FloatArray:
+        """Return the Allan variance of the random terms at averaging factors, behind the filter of the sensor if any.
+
+        sigma^2(m) = 4 integral_0^(1/2) S(f) sin^4(pi f m)/(m sin(pi f))^2 df, by quadrature on each lobe, where the filter
+        is felt; the closed forms elsewhere.
+        """
+        mixture = self.mixture()
+        variance = mixture.allan_variance(factors)
+        if self.low_pass is None:
+            return variance
+        nodes, weights = np.polynomial.legendre.leggauss(12)
+        behind = float(self.fit.theta[self.bins.roles.index(OUTPUT)])
+        for i in np.flatnonzero(factors * self.low_pass.corner < FELT):
+            factor = int(factors[i])
+            edges = np.linspace(0.0, 0.5, factor + 1)
+            half = np.diff(edges)[:, None] / 2.0
+            frequency = edges[:-1, None] + half * (nodes + 1.0)
+            window = np.sin(np.pi * frequency * factor) ** 4 / (factor * np.sin(np.pi * frequency)) ** 2
+            spectrum = sum(
+                (square * term.spectrum(frequency) for square, term in mixture.parts), np.zeros(frequency.shape)
+            )
+            passed = (spectrum - behind) * self.low_pass.shape.gain(frequency, self.low_pass.parameter) + behind
+            variance[i] = 4.0 * float(np.sum(passed * window * weights * half))
+        return variance
 
     def mixture(self) -> Mixture:
         """Return the random terms as a mixture (the white level of a filtered sensor as white noise)."""

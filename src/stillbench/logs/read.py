@@ -223,6 +223,8 @@ def read_log(
     )
     source = Source(source.name, source.bytes, source.sha256, rows, source.format)
     understood += table.remarks
+    if sheet.side:
+        understood.append(f"side channels of the log sheet ({', '.join(sheet.side)}) are not read by this version")
     return SensorLog(source, made, stamps, rate, tuple(understood))
 
 

@@ -115,6 +115,10 @@ def test_the_low_pass_of_a_sensor_is_fitted_by_shape(shape: str, words: str) -> 
     assert noise.response.shape == words
     corner = {"pole": 12.5, "butter": 12.5, "average": 0.443 * 100 / 4}[shape]
     assert noise.response.corner == pytest.approx(corner, rel=0.05)
+    # The model line of the curve is that behind the filter: short averages lie on it too.
+    curve = result_of(np.round(log / 0.05) * 0.05, 100.0).curve
+    assert curve.model is not None
+    assert np.max(np.abs(np.log(curve.deviation[:20] / curve.model[:20]))) < 0.03
     white = noise.terms["angle_random_walk"]
     assert white.coefficient == pytest.approx(0.1, rel=0.01 + 3 * 0.0055)  # RMSE of the white level is some 0.5 %
 

@@ -6,10 +6,12 @@ import numpy as np
 import pytest
 from scipy import integrate, stats
 
+from stillbench.deviation.overlapping import pooled_deviation
 from stillbench.likelihood.bins import bin_run, bin_starts, cosine_transform
 from stillbench.terms.base import Fluctuation
 from stillbench.terms.catalogue import BY_ROLE, FLUCTUATIONS, SHAPE_BY_ROLE
-from stillbench.terms.covariance import curve_edf, pair_covariance
+from stillbench.terms.correlated import CorrelatedNoise
+from stillbench.terms.covariance import curve_covariance, curve_edf, pair_covariance
 from stillbench.terms.flicker import mean_correction
 from stillbench.terms.mixture import Mixture
 
@@ -137,3 +139,53 @@ def test_pooled_degrees_of_freedom_of_equal_runs_add() -> None:
     one = curve_edf(Mixture({"white": 1.0, "walk": 1e-4}), np.array([20]), [1_000])[0]
     four = curve_edf(Mixture({"white": 1.0, "walk": 1e-4}), np.array([20]), [1_000] * 4)[0]
     assert four == pytest.approx(4 * one, rel=1e-12)
+
+
+@pytest.mark.parametrize("time", [3.0, 50.0, 1_000.0])
+def test_cosine_powers_of_correlated_noise_are_exact(time: float) -> None:
+    """The closed form against the dense covariance p^|i-j|, every coefficient."""
+    n_samples = 150
+    covariance = np.exp(-np.abs(np.subtract.outer(np.arange(n_samples), np.arange(n_samples))) / time)
+    k = np.arange(1, n_samples)
+    vectors = np.sqrt(2 / n_samples) * np.cos(np.pi * np.outer(k, np.arange(n_samples) + 0.5) / n_samples)
+    dense = np.einsum("ki,ij,kj->k", vectors, covariance, vectors)
+    assert np.allclose(CorrelatedNoise(time).cosine_power(k.astype(float), n_samples) / dense, 1.0, atol=1e-9)
+
+
+@pytest.mark.parametrize("factor", [1, 3, 50])
+def test_allan_variance_of_correlated_noise(factor: int) -> None:
+    """Against the dense covariance; and continuous across the change to its series."""
+    for time in (3.0, 50.0, 1_000.0):
+        lags = np.abs(np.subtract.outer(np.arange(2 * factor), np.arange(2 * factor)))
+        weights = np.concatenate([-np.ones(factor), np.ones(factor)]) / factor
+        dense = weights @ np.exp(-lags / time) @ weights / 2
+        assert float(CorrelatedNoise(time).allan_variance(np.array(float(factor)))) == pytest.approx(dense, rel=1e-6)
+    slow = CorrelatedNoise(1e5)
+    below, above = (float(slow.allan_variance(np.array(float(m)))) / m for m in (99, 101))
+    assert above / below == pytest.approx(1.0, abs=1e-4)
+
+
+def test_peak_of_correlated_noise() -> None:
+    """Peak 0.6174 of the standard deviation at 1.8926 Tc: IEEE Std 952 annex C, computed from its formula (from memory)."""
+    term = CorrelatedNoise(10_000.0)
+    factors = np.arange(15_000, 23_000, 10).astype(float)
+    sigma = np.sqrt(term.allan_variance(factors))
+    assert f"{sigma.max():.4f}" == "0.6174"
+    assert factors[np.argmax(sigma)] / 10_000 == pytest.approx(1.8926, abs=0.002)
+
+
+def test_covariance_between_points_of_the_curve() -> None:
+    """Against 1500 simulated curves: standard deviations to 4 standard errors, correlations to 0.08."""
+    factors = np.array([1, 2, 4, 8, 16, 32])
+    for theta in ({"white": 1.0, "walk": 1e-3}, {"quantization": 1.0, "white": 0.05}):
+        generator = np.random.default_rng(5)
+        curves = []
+        for _ in range(1_500):
+            log = sum(np.sqrt(square) * BY_ROLE[role].generate(600, generator) for role, square in theta.items())
+            curves.append(pooled_deviation([np.asarray(log)], factors)[0] ** 2)
+        seen = np.cov(np.array(curves).T)
+        expected = curve_covariance(Mixture(theta), factors, [600])
+        ratio = np.sqrt(np.diag(seen) / np.diag(expected))
+        assert np.all(np.abs(ratio - 1) < 4 * np.sqrt(1.0 / 1_500) + 0.02)
+        root = np.sqrt(np.diag(expected))
+        assert np.max(np.abs(np.corrcoef(np.array(curves).T) - expected / np.outer(root, root))) < 0.08
