@@ -9,7 +9,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from stillbench.foundation.arrays import BoolArray
-from stillbench.identification.band import LARGEST_MISFIT, LARGEST_SCORE, NYQUIST, Band, largest_band
+from stillbench.identification.band import LARGEST_MISFIT, NYQUIST, Band, largest_band
 from stillbench.likelihood.bins import BinnedPowers
 from stillbench.likelihood.correlation import CorrelationFit, fit_correlation
 from stillbench.likelihood.fit import Fit, maximise
@@ -21,6 +21,10 @@ RAMP_RATIO = 9.0
 """Likelihood ratio from which a ramp is accepted; a Wald ratio is not safe, a random walk looks like a trend."""
 CORRELATED_RATIO = 11.0
 FILTER_RATIO = 15.0
+FULL_SCORE = 4.0
+FULL_MISFIT = 3.5
+"""Droop and misfit up to which the whole band is kept: clean logs pass all but once in a thousand, and a filter that costs the
+white noise more than its error goes far beyond."""
 PASSED = 0.2
 """Squared magnitude of a filter above which its band is used when the whole band does not fit."""
 LIKE_A_FILTER = 41.0
@@ -117,7 +121,7 @@ def white_alone(bins: BinnedPowers, coverage: float) -> Choice:
 def _full_band(bins: BinnedPowers, fit: Fit) -> Band:
     droop = droop_score(bins, fit, NYQUIST)
     misfit = goodness_of_fit(bins, fit)
-    fits = abs(droop) < LARGEST_SCORE and misfit < LARGEST_MISFIT
+    fits = abs(droop) < FULL_SCORE and misfit < FULL_MISFIT
     return Band(NYQUIST, full=True, fits=fits, droop=droop, misfit=misfit)
 
 

@@ -12,7 +12,7 @@ from stillbench.vocabulary.record import Record
 
 SETTLED = 15.0
 """Averaging time times 2 pi corner above which a low-pass lowers the deviation by less than 2 %."""
-POOR_FIT = 3.0
+POOR_FIT = 3.5
 DROOPING = 0.8
 """Power in the top octave, over what the terms give, below which the sensor is taken to be filtered."""
 SHORT = 256
@@ -89,7 +89,8 @@ def remarks(model: NoiseModel, choice: Choice, excess: float, record: Record, qu
                 " residuals for a line, a bump or a drift",
             )
         )
-    findings += _disagreements(model)
+    if goodness <= POOR_FIT:  # where nothing fits, two wrong figures differ as a matter of course
+        findings += _disagreements(model)
     longest = longest_run(record)
     if longest < SHORT:
         name = quantity.terms["flicker"].replace("_", " ")

@@ -13,7 +13,7 @@ Note = tuple[str, str]
 
 COUNTS = ("No", "One", "Two", "Three", "Four", "Five")
 GOOD = 2.0
-POOR = 3.0
+POOR = 3.5
 
 
 def _joined(names: list[str]) -> str:
@@ -36,10 +36,10 @@ def deviation_notes(channel: ChannelResult) -> list[Note]:
         notes.append(
             (
                 "The model does not explain this log.",
-                f"Goodness of fit {noise.goodness:.1f}, where 3 is already rare: terms and intervals are not to be relied on.",
+                f"Goodness of fit {noise.goodness:.1f}, where 3.5 is already rare: terms and intervals are not to be relied on.",
             )
         )
-    if ambiguous:
+    if ambiguous and not poor:
         notes.append(
             (
                 f"{_joined(ambiguous).capitalize()}:",
@@ -47,7 +47,7 @@ def deviation_notes(channel: ChannelResult) -> list[Note]:
             )
         )
     bounded = [name for name in observed_terms(channel, UPPER_BOUND) if not name.endswith("ramp")]
-    if bounded:
+    if bounded and not poor:
         verb = "is an upper bound" if len(bounded) == 1 else "are upper bounds"
         text = f"{verb} only: the log is explained without."
         flicker = next((name for name in bounded if name in ("bias instability", "flicker noise")), None)

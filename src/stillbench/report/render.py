@@ -131,7 +131,7 @@ def _figures(channel: ChannelResult, key: str, first: int) -> dict[str, _Figure]
     labels = {name: term_label(channel, name) for name in channel.noise.terms}
     marks = specification_marks(channel.verdicts, channel)
     percent = f"{100 * channel.curve.coverage:g} %"
-    label = channel.label
+    label = f"channel {channel.label}" if channel.label.isdecimal() else channel.label
     return {
         "deviation": _Figure(
             _drawn(
