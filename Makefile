@@ -43,7 +43,7 @@ format: $(VENV)/dev.done ## let ruff rewrite the layout
 	$(BIN)/ruff format .
 	$(BIN)/ruff check --fix .
 
-calibrate: $(VENV)/dev.done ## made logs of known noise against the claims, hours; resumable; writes reference/calibration.md
+calibrate: $(VENV)/dev.done ## made logs of known noise against the claims, half an hour; resumable; writes reference/calibration.md
 	$(BIN)/python bench/calibrate.py --workers $(WORKERS)
 
 bench: $(VENV)/dev.done ## speed and memory as ratios, minutes; writes bench/results.md
