@@ -26,7 +26,6 @@ from stillbench.logs.clock import Grid, audit_clock
 from stillbench.logs.cut import cut_record
 from stillbench.logs.front_end import convert
 from stillbench.logs.read import read_log
-from stillbench.logs.runs import sample_times
 from stillbench.screening.converter import REFUSED
 from stillbench.screening.screen import levels_differ, screen
 from stillbench.version import __version__
@@ -165,33 +164,45 @@ def characterize(
     grid = audit_clock(sensor_log)
     quantities = [_quantity_of(sensor_log, channel.label, sheet, grid) for channel in sensor_log.channels]
     require_applicable(spec, quantities)
+    labels = tuple(channel.label for channel in sensor_log.channels)
+    spoken = tuple(channel.unit.text for channel in sensor_log.channels)
     if report_unit is not None:
         for quantity in quantities:
             report_unit = spoken_unit(report_unit, quantity)
     results: list[ChannelResult] = []
     skipped: list[str] = []
-    for channel in sensor_log.channels:
+    # Channels are let go one by one, so that a long log with many of them needs the memory of few.
+    waiting = list(sensor_log.channels)
+    sensor_log = replace(sensor_log, channels=())
+    for label in labels:
         try:
             record = cut_record(
-                sensor_log, channel.label, sheet=sheet, start=first, stop=last, exclude=exclude, grid=grid
+                replace(sensor_log, channels=(waiting.pop(0),)),
+                label,
+                sheet=sheet,
+                start=first,
+                stop=last,
+                exclude=exclude,
+                grid=grid,
             )
             screened = screen(record, exclusions=exclusions, keep=keep, progress=progress)
         except (NothingToMeasureError, RecordTooShortError) as error:
             # Asked for by name a dead channel is an error; among all of them it is a remark.
             if "all" not in channels:
                 raise
-            skipped.append(f"channel {channel.label!r} left out: {error.found}")
+            skipped.append(f"channel {label!r} left out: {error.found}")
             continue
         results.append(
             _characterize_record(record, screened, spec, coverage=coverage, report_unit=report_unit, progress=progress)
         )
+        del record, screened
     if not results:
         raise NothingToMeasureError(
             f"no channel can be characterized ({'; '.join(skipped)})", "a signal with noise in it"
         )
     settings: dict[str, Setting] = {
-        "channels": tuple(channel.label for channel in sensor_log.channels),
-        "units": tuple(channel.unit.text for channel in sensor_log.channels),
+        "channels": labels,
+        "units": spoken,
         "understood": (*sensor_log.understood, *skipped),
         "from": first,
         "to": last,
@@ -352,19 +363,36 @@ def _widened(model: NoiseModel, relative: float, z: float) -> NoiseModel:
 
 def _timeline(record: Record) -> Timeline:
     """Extremes and mean of 900 equal spans of all samples of the record, those left out later included."""
-    times = sample_times(record)
-    use = ~record.missing
-    times, values = times[use], record.values[use]
-    count = min(TIMELINE_SPANS, values.size)
-    edges = np.linspace(times[0], times[-1] + record.sample_interval, count + 1)
-    starts = np.searchsorted(times, edges[:-1])
-    filled = np.append(starts[1:], values.size) > starts
-    starts = starts[filled]
-    middle = ((edges[:-1] + edges[1:]) / 2.0)[filled]
-    sizes = np.diff(np.append(starts, values.size))
-    origin = values[0]
-    mean = origin + np.add.reduceat(values - origin, starts) / sizes
-    return Timeline(middle, np.minimum.reduceat(values, starts), mean, np.maximum.reduceat(values, starts))
+    interval = record.sample_interval
+    first, last = record.runs[0], record.runs[-1]
+    end = last.start + last.n_samples * interval
+    width = (end - first.start) / min(TIMELINE_SPANS, record.values.size)
+    parts = []
+    for run in record.runs:
+        values = record.values[run.first : run.last]
+        # The spans of the whole log that this run takes part in; a run makes at least one of its own.
+        edges = np.arange(
+            np.floor((run.start - first.start) / width),
+            np.ceil((run.start + values.size * interval - first.start) / width),
+        )
+        starts = np.unique(
+            np.clip(np.ceil((first.start + edges * width - run.start) / interval - 1e-9), 0, values.size - 1).astype(
+                np.int64
+            )
+        )
+        counts = np.diff(np.append(starts, values.size))
+        middle = run.start + (starts + (counts - 1) / 2.0) * interval
+        absent = record.missing[run.first : run.last]
+        low, high, known = values, values, counts
+        if absent.any():
+            low, high = np.where(absent, np.inf, values), np.where(absent, -np.inf, values)
+            known = np.add.reduceat((~absent).astype(np.int64), starts)
+            values = np.where(absent, 0.0, values)
+        filled = known > 0
+        mean = np.add.reduceat(values, starts)[filled] / known[filled]
+        columns = (np.minimum.reduceat(low, starts)[filled], mean, np.maximum.reduceat(high, starts)[filled])
+        parts.append((middle[filled], *columns))
+    return Timeline(*(np.concatenate([part[i] for part in parts]) for i in range(4)))
 
 
 def _identification(sheet: LogSheet) -> dict[str, dict[str, Setting]]:

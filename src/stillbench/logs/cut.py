@@ -92,18 +92,16 @@ def cut_record(
             )
         )
     use = wanted & finite
-    largest = float(np.abs(channel.values[use]).max())
+    largest = max(float(channel.values.max(where=use, initial=0.0)), -float(channel.values.min(where=use, initial=0.0)))
     if largest > LARGEST_READING:
         raise LogError(
             f"channel {label!r} holds a value of {largest:.3g}",
             f"readings below {LARGEST_READING:g}",
             'if it marks missing data, list it as missing = ["..."] under [log] in a log sheet',
         )
+    chosen = slice(None) if use.all() else use  # all of it needs no copy
     values, missing, runs, dropped = build_runs(
-        conversion.apply(channel.values[use]),
-        grid.index[use],
-        grid.segment[use],
-        grid.seconds[use],
+        conversion.apply(channel.values[chosen]), grid.index[chosen], grid.segment[chosen], grid.seconds[chosen]
     )
     if not runs:
         raise RecordTooShortError(int(np.count_nonzero(use)), SHORTEST_RUN, "any estimate")
@@ -180,8 +178,19 @@ def _chosen(
     return wanted
 
 
+def _whole(grid: Grid) -> bool:
+    """Whether every place of the grid has its row."""
+    return bool(
+        grid.kept.all()
+        and grid.index[-1] - grid.index[0] == grid.index.size - 1
+        and grid.segment[-1] == grid.segment[0]
+    )
+
+
 def _absent(grid: Grid, wanted: BoolArray) -> int:
     """Grid places without a row between the first and last row wanted, within segments."""
+    if _whole(grid):
+        return 0
     rows = np.flatnonzero(grid.kept)
     rows = rows[(rows >= np.argmax(wanted)) & (rows <= wanted.size - 1 - np.argmax(wanted[::-1]))]
     steps = np.diff(grid.index[rows])
@@ -191,6 +200,8 @@ def _absent(grid: Grid, wanted: BoolArray) -> int:
 
 def _gap_findings(grid: Grid, wanted: BoolArray, dropped: int) -> list[Finding]:
     """Gaps and holes that are in the log itself, not those that the user made."""
+    if _whole(grid):
+        return []
     rows = np.flatnonzero(grid.kept)
     rows = rows[(rows >= np.argmax(wanted)) & (rows <= wanted.size - 1 - np.argmax(wanted[::-1]))]
     steps = np.diff(grid.index[rows]) - 1

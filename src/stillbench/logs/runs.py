@@ -48,6 +48,9 @@ def build_runs(
     """
     if not values.size:
         return np.empty(0), np.empty(0, dtype=bool), (), 0
+    if values.size >= SHORTEST_RUN and index[-1] - index[0] == values.size - 1 and segment[0] == segment[-1]:
+        # Nothing is missing: the values are their own run.
+        return values, np.zeros(values.size, dtype=bool), (Run(0, values.size, float(seconds[0])),), 0
     steps = np.diff(index)
     apart = np.diff(segment) != 0
     limit = hole_limit((steps - 1)[(steps > 1) & ~apart], values.size)

@@ -2,9 +2,9 @@
 
 import io
 import itertools
+import mmap
 import re
 from collections.abc import Iterator, Sequence
-from typing import TYPE_CHECKING
 
 import numpy as np
 
@@ -24,9 +24,6 @@ from stillbench.logs.layout import (
 )
 from stillbench.logs.table import Table
 from stillbench.vocabulary.log_sheet import LogSection
-
-if TYPE_CHECKING:
-    import mmap
 
 NULLS = ("", "nan", "NaN", "NAN", "-nan", "-NaN", "null", "NULL", "None", "NA", "N/A", "n/a", "#N/A", "-", "--")
 _BLANKS = re.compile(rb"[ \t]+")
@@ -234,11 +231,16 @@ class TextTable(Table):
     def numbers(self, indices: Sequence[int]) -> list[FloatArray]:
         import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
 
+        columns = self._convert(indices, as_text=False)
+        if isinstance(self._bytes, mmap.mmap) and hasattr(mmap, "MADV_DONTNEED"):
+            self._bytes.madvise(mmap.MADV_DONTNEED)  # its pages have been read; the system may have them back
         arrays = []
-        for column in self._convert(indices, as_text=False):
+        while columns:  # each is let go before the next is copied
+            column = columns.pop(0)
             if not isinstance(column, pa.ChunkedArray):
                 raise TypeError(type(column))
             arrays.append(np.asarray(column.to_numpy(), dtype=np.float64))
+        pa.default_memory_pool().release_unused()
         return arrays
 
     def texts(self, index: int) -> Sequence[str]:

@@ -21,7 +21,7 @@ def require_movement(record: Record) -> None:
     ------
     NothingToMeasureError
     """
-    values = record.values[~record.missing]
+    values = record.present()
     if values.size and np.ptp(values) == 0:
         raise NothingToMeasureError(
             f"all {values.size} values of channel {record.label!r} are equal ({values[0]:.9g} in SI)",
@@ -55,7 +55,7 @@ def longest_chance_run(values: FloatArray) -> float:
 def find_stuck(record: Record) -> Outcome:
     """Mark stretches of equal values too long for chance."""
     use = ~record.missing
-    values = record.values[use]
+    values = record.present()
     threshold = max(4.0, longest_chance_run(values))
     starts, lengths = equal_runs(values)
     stuck = np.flatnonzero(lengths >= threshold)

@@ -42,7 +42,7 @@ def check_converter(record: Record) -> Outcome:
     White rounding noise of step^2/12 adds to the white noise; below 0.6 steps it is no longer white, below 0.4 the white
     noise cannot be told (W. R. Bennett, Bell Syst. Tech. J. 27 (1948) 446; figures by simulation).
     """
-    step = converter_step(record.values[~record.missing])
+    step = converter_step(record.present())
     if step is None:
         return nothing(record)
     noise = np.sqrt(max(0.0, sample_noise(record) ** 2 - step**2 / 12.0))

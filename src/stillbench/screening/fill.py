@@ -57,13 +57,13 @@ def _holes(missing: BoolArray) -> list[tuple[int, int]]:
 
 
 def fill_holes(record: Record) -> FloatArray:
-    """Return the values with every missing sample drawn at random given its neighbours; shape (n,).
+    """Return the values with every missing sample drawn at random given its neighbours; shape (n,), not a copy if none is.
 
     The draw has a fixed seed: the same log gives the same numbers.
     """
-    filled = record.values.copy()
     if not record.missing.any():
-        return filled
+        return record.values
+    filled = record.values.copy()
     generator = np.random.default_rng(SEED)
     white, walk = local_strengths(record.pieces())
     white = max(white, np.finfo(float).tiny)

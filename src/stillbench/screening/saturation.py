@@ -35,7 +35,7 @@ def find_saturation(record: Record) -> Outcome:
     Saturated samples stay in: leaving out one side would bias the rest. The finding says that the noise is clipped.
     """
     use = ~record.missing
-    values = record.values[use]
+    values = record.present()
     times = sample_times(record)[use]
     findings = []
     if record.limits is not None:

@@ -62,7 +62,7 @@ def find_spikes(record: Record) -> Outcome:
     residual = np.concatenate([piece - level_of(piece) for piece in record.pieces()])
     size = np.abs(residual)
     # Readings in coarse steps have no spread of their own below a step.
-    step = converter_step(record.values[~record.missing]) or 0.0
+    step = converter_step(record.present()) or 0.0
     scale = max(_robust(size), step)
     if scale == 0:
         return nothing(record)

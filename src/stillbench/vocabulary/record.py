@@ -137,6 +137,10 @@ class Record:
         last = self.runs[-1]
         return last.start + last.n_samples * self.sample_interval - self.runs[0].start
 
+    def present(self) -> FloatArray:
+        """Return the values that are not missing; no copy where none is."""
+        return self.values[~self.missing] if self.missing.any() else self.values
+
     def pieces(self) -> list[FloatArray]:
         """Return the values of each run, as views."""
         return [self.values[run.first : run.last] for run in self.runs]
