@@ -240,6 +240,7 @@ class TextTable(Table):
             if not isinstance(column, pa.ChunkedArray):
                 raise TypeError(type(column))
             arrays.append(np.asarray(column.to_numpy(), dtype=np.float64))
+            del column
         pa.default_memory_pool().release_unused()
         return arrays
 
