@@ -16,7 +16,7 @@ class _BarProgress:
         self._task = task
 
     def stage(self, name: str) -> None:
-        self._bar.update(self._task, description=name, completed=0.0)  # type: ignore[attr-defined]
+        self._bar.update(self._task, description=name, completed=0.0, refresh=True)  # type: ignore[attr-defined]
 
     def step(self, fraction: float) -> None:
         self._bar.update(self._task, completed=fraction)  # type: ignore[attr-defined]
