@@ -16,7 +16,9 @@ class _BarProgress:
         self._task = task
 
     def stage(self, name: str) -> None:
-        self._bar.update(self._task, description=name, completed=0.0, refresh=True)  # type: ignore[attr-defined]
+        from rich.markup import escape  # noqa: PLC0415  wanted on a terminal only
+
+        self._bar.update(self._task, description=escape(name), completed=0.0, refresh=True)  # type: ignore[attr-defined]
 
     def step(self, fraction: float) -> None:
         self._bar.update(self._task, completed=fraction)  # type: ignore[attr-defined]
@@ -29,14 +31,10 @@ def progress_line(*, quiet: bool) -> Iterator[Progress]:
         yield SILENT
         return
     from rich.console import Console  # noqa: PLC0415  wanted on a terminal only
-    from rich.markup import escape  # noqa: PLC0415
     from rich.progress import BarColumn, Progress, TaskProgressColumn, TextColumn, TimeElapsedColumn  # noqa: PLC0415
 
     console = Console(stderr=True, no_color=bool(os.environ.get("NO_COLOR")))
     columns = (TextColumn("{task.description:<28}"), BarColumn(), TaskProgressColumn(), TimeElapsedColumn())
     with Progress(*columns, console=console, transient=True) as bar:
-        task = bar.add_task(escape("starting"), total=1.0)
-        line = _BarProgress(bar, task)
-        stage = line.stage
-        line.stage = lambda name: stage(escape(name))  # type: ignore[method-assign]
-        yield line
+        task = bar.add_task("starting", total=1.0)
+        yield _BarProgress(bar, task)
