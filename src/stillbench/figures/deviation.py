@@ -5,7 +5,17 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from stillbench.figures.style import GREY, INK, PETROL, SHADE, bracketed, label_decade_steps, logarithmic, with_halo
+from stillbench.figures.style import (
+    GREY,
+    INK,
+    PETROL,
+    RINGS,
+    SHADE,
+    bracketed,
+    label_decade_steps,
+    logarithmic,
+    with_halo,
+)
 from stillbench.foundation.arrays import FloatArray
 from stillbench.foundation.units import parse_unit
 from stillbench.terms.catalogue import SHAPE_BY_ROLE
@@ -75,12 +85,9 @@ def draw_deviation(
     axes.plot(
         tau[positive],
         deviation[positive],
-        linestyle="none",
-        marker="o",
         markersize=3.0,
-        markerfacecolor="none",
-        markeredgecolor=PETROL,
         markeredgewidth=0.9,
+        **RINGS,
         zorder=3,
     )
     low, high = _range(deviation[positive], None if curve.upper is None else curve.upper / unit.factor)

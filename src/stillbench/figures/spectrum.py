@@ -4,7 +4,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from stillbench.figures.style import GREY, INK, PETROL, SHADE, label_decade_steps, logarithmic
+from stillbench.figures.style import GREY, INK, PETROL, RINGS, SHADE, label_decade_steps, logarithmic
 from stillbench.foundation.arrays import FloatArray
 from stillbench.foundation.units import parse_unit
 
@@ -34,12 +34,9 @@ def draw_spectrum(axes: "Axes", channel: "ChannelResult") -> None:
     axes.plot(
         bins.frequency[many],
         density[many],
-        linestyle="none",
-        marker="o",
         markersize=2.8,
-        markerfacecolor="none",
-        markeredgecolor=PETROL,
         markeredgewidth=0.8,
+        **RINGS,
     )
     model = np.sqrt(bins.model) / unit.factor
     axes.plot(bins.frequency, model, color=INK)
@@ -77,12 +74,9 @@ def draw_residuals(axes: "Axes", channel: "ChannelResult") -> None:
     axes.plot(
         frequency[inside],
         scores[inside],
-        linestyle="none",
-        marker="o",
         markersize=2.8,
-        markerfacecolor="none",
-        markeredgecolor=PETROL,
         markeredgewidth=0.8,
+        **RINGS,
     )
     for sign, marker in ((1, "^"), (-1, "v")):
         off = ~inside & (np.sign(scores) == sign)

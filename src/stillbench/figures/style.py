@@ -63,6 +63,9 @@ SETTINGS: dict[str, Any] = {
     "path.simplify": True,
 }
 
+RINGS: dict[str, Any] = {"linestyle": "none", "marker": "o", "markerfacecolor": "none", "markeredgecolor": PETROL}
+"""How measured points are drawn, everywhere."""
+
 
 @contextmanager
 def sheet(height: float, width: float = WIDTH) -> "Iterator[tuple[Figure, Axes]]":
