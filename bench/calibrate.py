@@ -290,7 +290,7 @@ def curve_lines(logs: int = 4_000, n_samples: int = 1_200) -> list[str]:
         edf = curve_edf(mixture, factors, [n_samples])
         covered = np.zeros(factors.size, dtype=int)
         for _ in range(logs):
-            sigma, _ = pooled_deviation([BY_ROLE[role].generate(n_samples, generator)], factors, threads=1)
+            sigma, _ = pooled_deviation([BY_ROLE[role].generate(n_samples, generator)], factors, processes=1)
             lower, upper = chi_square_limits(sigma, edf, COVERAGE)
             covered += (lower <= truth) & (truth <= upper)
         cells = [f"{100 * count / logs:.1f} {verdict(int(count), logs, 0.935, 0.975)}" for count in covered]

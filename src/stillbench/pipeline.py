@@ -339,11 +339,14 @@ def _bias(record: Record, found: Identification, z: float, *, same_level: bool) 
     by root two times this.
     """
     runs = record.runs if same_level else (max(record.runs, key=lambda run: run.n_samples),)
-    parts = [record.values[run.first : run.last][~record.missing[run.first : run.last]] for run in runs]
-    values = np.concatenate(parts)
-    origin = values[0]
-    mean = float(origin + np.mean(values - origin))
-    error = found.fitted.amplitude(found.fitted.variance_weights(values.size))
+    origin, total, count = record.values[runs[0].first], 0.0, 0
+    for run in runs:
+        values, absent = record.values[run.first : run.last], record.missing[run.first : run.last]
+        values = values[~absent] if absent.any() else values
+        total += float(np.sum(values - origin))
+        count += values.size
+    mean = float(origin + total / count)
+    error = found.fitted.amplitude(found.fitted.variance_weights(count))
     return Bias(mean, mean - z * error, mean + z * error), error
 
 

@@ -1,12 +1,14 @@
 """What must hold for the Allan deviation of any log."""
 
+import sys
+
 import numpy as np
 import pytest
 from hypothesis import assume, example, given
 from hypothesis import strategies as st
 from hypothesis.extra import numpy as hnp
 
-from stillbench.deviation.overlapping import pooled_deviation
+from stillbench.deviation.overlapping import HELPED_FROM, pooled_deviation
 from stillbench.deviation.plain import exact_overlapping_variance, plain_overlapping_deviation
 from stillbench.foundation.arrays import FloatArray
 
@@ -88,11 +90,20 @@ def test_exact_arithmetic_agrees_to_nine_digits(log: FloatArray, factor: int, of
     assert deviation([given_log], factor) ** 2 == pytest.approx(float(exact), rel=2e-9)
 
 
-def test_the_number_of_threads_does_not_change_a_bit() -> None:
-    log = np.random.default_rng(2).standard_normal(1_200_000)
+def test_a_helper_process_does_not_change_a_bit() -> None:
+    log = np.random.default_rng(2).standard_normal(HELPED_FROM + 1_000)
     taken = np.array([1, 3, 100, 9_999, 400_000])
-    one, two = (pooled_deviation([log], taken, threads=threads)[0] for threads in (1, 2))
+    one, two = (pooled_deviation([log], taken, processes=processes)[0] for processes in (1, 2))
     assert np.array_equal(one, two)
+
+
+def test_the_chunks_of_a_helper_that_cannot_run_are_done_all_the_same(monkeypatch: pytest.MonkeyPatch) -> None:
+    log = np.random.default_rng(2).standard_normal(HELPED_FROM + 1_000)
+    taken = np.array([1, 3, 100])
+    whole = pooled_deviation([log], taken, processes=1)[0]
+    for program in ("/bin/false", "/no/such/program"):
+        monkeypatch.setattr(sys, "executable", program)
+        assert np.array_equal(pooled_deviation([log], taken, processes=2)[0], whole)
 
 
 @pytest.mark.parametrize("offset", [0.0, 1e8])

@@ -1,86 +1,80 @@
-"""Overlapping Allan deviation, pooled over runs, in blocks that stay in the cache."""
+"""Overlapping Allan deviation, pooled over runs, from one running sum of the log."""
 
 import os
 from collections.abc import Sequence
-from concurrent.futures import ThreadPoolExecutor
+from contextlib import ExitStack, suppress
 
 import numpy as np
 
 from stillbench.deviation.averaging import averaging_factors
+from stillbench.deviation.kernel import CHUNK, chunk_sums, helper, shared_array
 from stillbench.foundation.arrays import FloatArray, IntArray
 from stillbench.foundation.errors import RecordTooShortError
 from stillbench.foundation.progress import SILENT, Progress
 from stillbench.vocabulary.deviation_curve import DeviationCurve
 from stillbench.vocabulary.record import Record
 
-BLOCK = 65_536
-"""Second differences handled at a time; the block, its buffer and the slices it reads fit a second-level cache of 2 MiB.
-Shorter blocks make two threads slower than one: each operation is then over before the interpreter lock changes hands."""
-CHUNK = 1 << 19
-MOST_THREADS = 4
+HELPED_FROM = 1 << 21
+"""Samples of a run from which a second process is worth its start (a tenth of a second)."""
 
 
-def _angle(rate: FloatArray) -> FloatArray:
-    """Return the running sum of the mean-free rate, both ends of every sample, shape (n+1,), float64 whatever came in."""
+def _angle(rate: FloatArray, angle: FloatArray) -> None:
+    """Put the running sum of the mean-free rate, both ends of every sample, into ``angle``, shape (n+1,)."""
     rate = np.asarray(rate)
-    angle = np.empty(rate.size + 1)
     angle[0] = 0.0
     # Offset first: a value of the log itself, so that this subtraction is exact; then the small mean that is left.
     np.subtract(rate, rate[rate.size // 2], out=angle[1:], dtype=np.float64)
     angle[1:] -= angle[1:].mean()
     np.cumsum(angle[1:], out=angle[1:])
-    return angle
-
-
-def _chunk_sums(angle: FloatArray, factors: IntArray, begin: int, end: int) -> FloatArray:
-    """Sum of squared second differences that start in ``begin`` to ``end``, for each factor, in blocks, all factors inside."""
-    sums = np.zeros(factors.size)
-    buffer = np.empty(BLOCK)
-    for first in range(begin, end, BLOCK):
-        stop = min(first + BLOCK, end)
-        for i, factor in enumerate(factors):
-            last = min(stop, angle.size - 2 * factor)
-            if last <= first:
-                break  # factors increase, so no longer one has pairs here either
-            difference = buffer[: last - first]
-            middle = angle[first + factor : last + factor]
-            np.subtract(angle[first + 2 * factor : last + 2 * factor], middle, out=difference)
-            difference -= middle
-            difference += angle[first:last]
-            sums[i] += difference @ difference
-    return sums
 
 
 def _sums_of_squares(
-    angle: FloatArray, factors: IntArray, progress: Progress, done: float, share: float, threads: int
+    rate: FloatArray, factors: IntArray, progress: Progress, done: float, share: float, processes: int
 ) -> FloatArray:
-    """Sum of squared second differences of ``angle`` at each averaging factor.
+    """Sum of squared second differences of the angle of one run at each averaging factor.
 
-    Chunks are the same whatever the number of threads, and are added in their order: so are the bits of the result.
+    Chunks are the same whatever the number of processes, and are added in their order: so are the bits of the result.
     """
-    most = angle.size - 2 * int(factors[0])
-    begins = range(0, most, CHUNK)
+    from threadpoolctl import threadpool_limits  # noqa: PLC0415  wanted only where a curve is computed
 
-    def work(begin: int) -> FloatArray:
-        return _chunk_sums(angle, factors, begin, min(begin + CHUNK, most))
-
+    helped = processes > 1 and rate.size >= HELPED_FROM
+    angle, descriptor = shared_array(rate.size + 1) if helped else (np.empty(rate.size + 1), None)
+    ladder = factors.tolist()
+    most = angle.size - 2 * ladder[0]
+    starts = range(0, most, CHUNK)
+    parts: dict[int, FloatArray] = {}
+    with threadpool_limits(1), ExitStack() as stack:
+        process = None
+        if descriptor is not None:
+            stack.callback(os.close, descriptor)
+            process = stack.enter_context(helper(descriptor, ladder))
+        _angle(rate, angle)
+        if process is not None and process.stdin and process.stdout:
+            with suppress(OSError):
+                process.stdin.write(f"{CHUNK} {most} {2 * CHUNK}\n".encode())
+                process.stdin.flush()
+        for start in starts[:: 2 if process else 1]:
+            parts[start] = chunk_sums(angle, ladder, start)
+            progress.step(done + share * (start + CHUNK) / (most + CHUNK))
+        for start in starts[1::2] if process else ():
+            found = process.stdout.read(8 * len(ladder)) if process and process.stdout else b""
+            whole = len(found) == 8 * len(ladder)  # a helper that was killed leaves its chunks to us
+            parts[start] = np.frombuffer(found) if whole else chunk_sums(angle, ladder, start)
     sums = np.zeros(factors.size)
-    with ThreadPoolExecutor(max_workers=threads) as pool:
-        parts = pool.map(work, begins) if threads > 1 and len(begins) > 1 else map(work, begins)
-        for begin, part in zip(begins, parts, strict=True):
-            sums += part
-            progress.step(done + share * min(1.0, (begin + CHUNK) / most))
+    for start in starts:
+        sums += parts[start]
+    progress.step(done + share)
     return sums
 
 
-def usable_threads() -> int:
-    """Return how many threads the curve uses by default: the processors this process may run on, at most four."""
+def usable_processes() -> int:
+    """Return how many processes the curve uses by default: two where this process may run on two processors."""
     affinity = getattr(os, "sched_getaffinity", None)
-    return min(MOST_THREADS, len(affinity(0)) if affinity else (os.cpu_count() or 1))
+    return min(2, len(affinity(0)) if affinity else (os.cpu_count() or 1))
 
 
 def pooled_deviation(
-    pieces: Sequence[FloatArray], factors: IntArray, progress: Progress = SILENT, threads: int | None = None
+    pieces: Sequence[FloatArray], factors: IntArray, progress: Progress = SILENT, processes: int | None = None
 ) -> tuple[FloatArray, IntArray]:
     """Return the overlapping Allan deviation of several runs, and the number of pairs, at each averaging factor.
 
@@ -94,8 +88,8 @@ def pooled_deviation(
         Increasing averaging factors, samples.
     progress : Progress
         Told the fraction done.
-    threads : int, optional
-        As many as there are processors by default; the result does not depend on it.
+    processes : int, optional
+        One, or two (on long runs; by default where there are two processors); the result does not depend on it.
 
     Returns
     -------
@@ -117,7 +111,7 @@ def pooled_deviation(
         if usable.size:
             share = piece.size / total
             sums[: usable.size] += _sums_of_squares(
-                _angle(piece), usable, progress, done, share, usable_threads() if threads is None else threads
+                piece, usable, progress, done, share, usable_processes() if processes is None else processes
             )
             pairs[: usable.size] += piece.size - 2 * usable + 1
             done += share

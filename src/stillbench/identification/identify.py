@@ -121,7 +121,7 @@ def identify_noise(
     made = _terms(fitted, accepted, coverage, record, quantity, choice)
     made = _observable(made, record, findings)
     readings = read_textbook(curve, record.duration)
-    second = curve_estimates(record, fitted, coverage) if choice.low_pass is None and choice.band.full else {}
+    second = curve_estimates(record, curve, fitted, coverage) if choice.low_pass is None and choice.band.full else {}
     named = {
         quantity.terms[role]: replace(term, textbook=readings.get(role), curve_estimate=second.get(role))
         for role, term in made.items()

@@ -3,12 +3,13 @@
 import numpy as np
 
 from stillbench.deviation.overlapping import pooled_deviation
-from stillbench.foundation.arrays import FloatArray
+from stillbench.foundation.arrays import IntArray
 from stillbench.likelihood.fitted import FittedModel
 from stillbench.likelihood.quadratic import solve_nonnegative
-from stillbench.terms.covariance import curve_covariance
-from stillbench.terms.mixture import Mixture, term_of
+from stillbench.terms.covariance import curve_products
+from stillbench.terms.mixture import term_of
 from stillbench.terms.ramp import Ramp
+from stillbench.vocabulary.deviation_curve import DeviationCurve
 from stillbench.vocabulary.noise_model import CurveEstimate
 from stillbench.vocabulary.quantity import TIME_POWERS
 from stillbench.vocabulary.record import Record
@@ -18,12 +19,15 @@ FEWEST_POINTS = 3
 ROUNDS = 4
 
 
-def octave_factors(longest_run: int) -> FloatArray:
-    """Return averaging factors 1, 2, 4, ... up to a tenth of the longest run."""
-    return 2.0 ** np.arange(0.0, np.log2(max(1.0, longest_run / USABLE_SHARE)) + 1e-9)
+def octave_points(factors: IntArray, longest_run: int) -> IntArray:
+    """Return which averaging factors stand nearest to 1, 2, 4, ... up to a tenth of the longest run."""
+    octaves = np.arange(0.0, np.log2(max(1.0, longest_run / USABLE_SHARE)) + 1e-9)
+    return np.unique(np.abs(np.log2(factors)[:, None] - octaves).argmin(axis=0))
 
 
-def curve_estimates(record: Record, fitted: FittedModel, coverage: float) -> dict[str, CurveEstimate]:
+def curve_estimates(
+    record: Record, curve: DeviationCurve, fitted: FittedModel, coverage: float
+) -> dict[str, CurveEstimate]:
     """Estimate the random terms from octave points of the Allan variance.
 
     A resolved ramp is taken off the record first. The covariance of the points is that of the terms themselves, so it is
@@ -32,6 +36,8 @@ def curve_estimates(record: Record, fitted: FittedModel, coverage: float) -> dic
     Parameters
     ----------
     record : Record
+    curve : DeviationCurve
+        Of the same record.
     fitted : FittedModel
         Its terms are the ones tried; its estimate is where the covariance starts.
     coverage : float
@@ -48,23 +54,27 @@ def curve_estimates(record: Record, fitted: FittedModel, coverage: float) -> dic
     from scipy.special import ndtri  # noqa: PLC0415  heavy imports stay inside functions
 
     lengths = [run.n_samples for run in record.runs]
-    factors = octave_factors(max(lengths)).astype(np.int64)
+    factors = np.rint(curve.tau / record.sample_interval).astype(np.int64)
+    points = octave_points(factors, max(lengths))
+    factors = factors[points]
     roles = fitted.bins.roles
     if factors.size < max(FEWEST_POINTS, len(roles)):
         return {}
-    pieces = record.pieces()
     slope = float(fitted.fit.beta[0]) if fitted.shapes.any() else 0.0
     if slope:
-        pieces = [piece - slope * Ramp().shape(piece.size) for piece in pieces]
-    variance = pooled_deviation(pieces, factors)[0] ** 2
+        pieces = [piece - slope * Ramp().shape(piece.size) for piece in record.pieces()]
+        variance = pooled_deviation(pieces, factors)[0] ** 2
+    else:
+        variance = curve.deviation[points] ** 2
     samples = factors.astype(np.float64)
-    design = np.column_stack([term_of(role, fitted.correlation_time).allan_variance(samples) for role in roles])
+    terms = tuple(term_of(role, fitted.correlation_time) for role in roles)
+    design = np.column_stack([term.allan_variance(samples) for term in terms])
+    products = curve_products(terms, tuple(factors.tolist()), tuple(lengths))
     theta = fitted.fit.theta.copy()
     for _ in range(ROUNDS):
-        mixture = Mixture(dict(zip(roles, theta.tolist(), strict=True)), 0.0, fitted.correlation_time)
-        if not mixture.parts:
+        if not (theta > 0).any():
             return {}
-        weight = np.linalg.inv(curve_covariance(mixture, factors, lengths))
+        weight = np.linalg.inv(np.einsum("s,t,stij->ij", theta, theta, products))
         information = design.T @ weight @ design
         scale = 1.0 / np.sqrt(np.diag(information))
         linear = scale * (design.T @ (weight @ variance))

@@ -5,6 +5,7 @@ import hashlib
 import mmap
 import zipfile
 import zlib
+from concurrent.futures import Future, ThreadPoolExecutor
 from dataclasses import dataclass
 from pathlib import Path
 from typing import IO
@@ -36,8 +37,8 @@ class Contents:
         The expanded content.
     file_bytes : int
         Size on disk.
-    sha256 : str
-        Of the file on disk.
+    hashing : future of str
+        SHA-256 of the file on disk, worked out while the file is read.
     wrapping : str
         ``''``, ``gzip`` or ``zip``.
     """
@@ -45,7 +46,7 @@ class Contents:
     name: str
     data: bytes | mmap.mmap
     file_bytes: int
-    sha256: str
+    hashing: Future[str]
     wrapping: str
 
 
@@ -72,8 +73,7 @@ def open_contents(path: Path) -> Contents:
     try:
         with path.open("rb") as stream:
             magic = stream.read(8)
-            stream.seek(0)
-            digest = hashlib.file_digest(stream, "sha256").hexdigest()
+            digest = _hash_in_background(path)
             if magic.startswith(OLD_SPREADSHEET_MAGIC):
                 raise _spreadsheet(path.name)
             if magic.startswith(ZIP_MAGIC) and path.suffix.lower() != ".npz":
@@ -92,6 +92,17 @@ def open_contents(path: Path) -> Contents:
         raise LogError(
             f"{path.name!r} is damaged or cannot be expanded ({error})", "a whole file", "fetch the log again"
         ) from error
+
+
+def _hash_in_background(path: Path) -> Future[str]:
+    def digest() -> str:
+        with path.open("rb") as stream:
+            return hashlib.file_digest(stream, "sha256").hexdigest()
+
+    pool = ThreadPoolExecutor(max_workers=1)
+    future = pool.submit(digest)
+    pool.shutdown(wait=False)
+    return future
 
 
 def _spreadsheet(name: str) -> LogError:

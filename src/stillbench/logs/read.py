@@ -1,7 +1,7 @@
 """read_log: from a file, or an array, to a SensorLog."""
 
 import hashlib
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
@@ -23,15 +23,16 @@ FEWEST_ROWS = 16
 SPREADSHEET_SUFFIXES = (".xlsx", ".xls", ".ods", ".xlsm")
 
 
-def _open_table(path: Path, sheet: LogSheet) -> tuple[Table, Source]:
+def _open_table(path: Path, sheet: LogSheet) -> tuple[Table, Callable[[int], Source]]:
+    """Return the table of a file, and what names its source once its rows are counted."""
     contents = open_contents(path)
     head = bytes(contents.data[:8])
     binary = head.startswith((NPY_MAGIC, ZIP_MAGIC))
     table: Table = read_arrays(contents) if binary else TextTable(contents, sheet.log)
-    return table, Source(path.name, contents.file_bytes, contents.sha256, 0, table.format)
+    return table, lambda rows: Source(path.name, contents.file_bytes, contents.hashing.result(), rows, table.format)
 
 
-def _wrap_array(data: Any, name: str) -> tuple[Table, Source]:  # noqa: ANN401  arrays, series, frames, mappings
+def _wrap_array(data: Any, name: str) -> tuple[Table, Callable[[int], Source]]:  # noqa: ANN401  arrays, series, frames, mappings
     if isinstance(data, Mapping):
         columns = {str(key): np.asarray(value) for key, value in data.items()}
     elif hasattr(data, "columns") and hasattr(data, "to_numpy"):
@@ -49,7 +50,7 @@ def _wrap_array(data: Any, name: str) -> tuple[Table, Source]:  # noqa: ANN401  
     size = sum(int(np.asarray(column).nbytes) for column in columns.values())
     named = not all(key.isdecimal() for key in columns)
     table = ArrayTable(columns, "array in memory", has_heads=named)
-    return table, Source(name, size, digest.hexdigest(), 0, table.format)
+    return table, lambda rows: Source(name, size, digest.hexdigest(), rows, table.format)
 
 
 def _chosen(
@@ -182,9 +183,9 @@ def read_log(
                 "a text file of numbers",
                 "open it where it was made, save the sheet as CSV (UTF-8), and give that; check that no digits were cut",
             )
-        table, source = _open_table(path, sheet)
+        table, source_of = _open_table(path, sheet)
     else:
-        table, source = _wrap_array(log, name)
+        table, source_of = _wrap_array(log, name)
     understood = [table.format]
     column = time if time is not None else sheet.clock.column
     time_index: int | None
@@ -199,6 +200,7 @@ def read_log(
     chosen = _chosen(table, sheet, channels, units, time_index)
     spoken = {label: _unit_for(label, table.heads[index], sheet, units) for label, index in chosen}
     stamps, present = None, None
+    table.expect([index for _, index in chosen])
     if time_index is not None:
         stamps, present, sentence = read_stamps(table, time_index, time_unit or sheet.clock.unit)
         understood.append(sentence)
@@ -221,11 +223,10 @@ def read_log(
     made = tuple(
         Channel(label, values, spoken[label], kinds[label]) for (label, _), values in zip(chosen, columns, strict=True)
     )
-    source = Source(source.name, source.bytes, source.sha256, rows, source.format)
     understood += table.remarks
     if sheet.side:
         understood.append(f"side channels of the log sheet ({', '.join(sheet.side)}) are not read by this version")
-    return SensorLog(source, made, stamps, rate, tuple(understood))
+    return SensorLog(source_of(rows), made, stamps, rate, tuple(understood))
 
 
 def unit_flags(flags: Sequence[str], columns: Sequence[str] = ()) -> dict[str, str]:

@@ -96,7 +96,7 @@ def read_stamps(table: Table, index: int, declared: str | None) -> tuple[Stamps,
     if not np.isfinite(numbers).any():
         raise ClockError(f"the time column {head!r} holds no numbers", "time stamps", "name another with --time")
     present = _present(~np.isnan(numbers), head)
-    numbers = numbers[present]
+    numbers = numbers if present.all() else numbers[present]
     said = "declared" if declared else f"its head says {unit}"
     if unit is None:
         unit, said = _guess_unit(numbers, head)

@@ -29,6 +29,9 @@ class Table(ABC):
         self.format = format_
         self.remarks: list[str] = []
 
+    def expect(self, indices: Sequence[int]) -> None:  # noqa: B027  most readers need not know
+        """Say which columns will be asked for as numbers, so that a reader may take them in one pass over the file."""
+
     @abstractmethod
     def numbers(self, indices: Sequence[int]) -> list[FloatArray]:
         """Return columns as float64, empty cells as NaN."""

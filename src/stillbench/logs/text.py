@@ -71,6 +71,8 @@ class TextTable(Table):
         super().__init__(heads, self.layout.words + wrapping, has_heads=self.layout.heads is not None)
         self._missing = (*NULLS, *section.missing)
         self._body = self._find_body()
+        self._expected: list[int] = []
+        self._waiting: dict[int, object] = {}
         self._clean = False
         self._numbered = False
         self._sample = lines[self.layout.body_line : SAMPLE_LINES]
@@ -228,10 +230,20 @@ class TextTable(Table):
                         raise CellError(self.heads[index], number, cell, decimal=self.layout.decimal) from error
         raise LogError(f"{self.name!r} cannot be read as a table ({error})", "rows of numbers") from error
 
+    def expect(self, indices: Sequence[int]) -> None:
+        self._expected = list(indices)
+
     def numbers(self, indices: Sequence[int]) -> list[FloatArray]:
         import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
 
-        columns = self._convert(indices, as_text=False)
+        early = [index for index in self._expected if index not in indices]
+        fresh = [index for index in indices if index not in self._waiting]
+        if fresh:
+            self._waiting |= dict(zip([*fresh, *early], self._convert([*fresh, *early], as_text=False), strict=True))
+        self._expected = []
+        columns = [self._waiting[index] for index in indices]
+        for index in set(indices):
+            del self._waiting[index]
         if isinstance(self._bytes, mmap.mmap) and hasattr(mmap, "MADV_DONTNEED"):
             self._bytes.madvise(mmap.MADV_DONTNEED)  # its pages have been read; the system may have them back
         arrays = []

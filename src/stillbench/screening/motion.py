@@ -10,6 +10,7 @@ from stillbench.foundation.rounding import significant
 from stillbench.foundation.units import parse_unit
 from stillbench.logs.runs import sample_times
 from stillbench.screening.outcome import Outcome, nothing
+from stillbench.screening.view import RecordView
 from stillbench.vocabulary.finding import Finding
 from stillbench.vocabulary.record import Record
 
@@ -18,6 +19,8 @@ SHORTEST_BLOCK = 32
 FEWEST_BLOCKS = 8
 RESTLESS = 8.0
 """A block moves when its quartile spread is this many times the still one; a pure random walk reaches five."""
+MOST_LOOKED_AT = 1_024
+"""Samples of a block, spread evenly: they tell its spread to some percent."""
 LEVEL_JUMP = 30.0
 SHORTEST_REST = 4
 """Blocks."""
@@ -38,17 +41,20 @@ def _block_statistics(record: Record) -> tuple[FloatArray, FloatArray, list[tupl
     medians = np.empty(len(bounds))
     spreads = np.empty(len(bounds))
     for i, (first, last) in enumerate(bounds):
-        block = record.values[first:last]
-        medians[i] = np.nanmedian(block)
+        block = record.values[first : last : max(1, (last - first) // MOST_LOOKED_AT)]
+        block = block[~np.isnan(block)]
+        if not block.size:
+            medians[i] = spreads[i] = np.nan
+            continue
         # A slow drift (a warm-up) is no motion: the straight course between the ends of the block is taken off.
         third = max(1, block.size // 3)
-        slope = (np.nanmedian(block[-third:]) - np.nanmedian(block[:third])) / max(1, block.size - third)
-        low, high = np.nanpercentile(block - slope * np.arange(block.size), (25.0, 75.0))
-        spreads[i] = (high - low) / QUARTILES
+        slope = (np.median(block[-third:]) - np.median(block[:third])) / max(1, block.size - third)
+        low, high = np.percentile(block - slope * np.arange(block.size), (25.0, 75.0))
+        medians[i], spreads[i] = np.median(block), (high - low) / QUARTILES
     return medians, spreads, bounds
 
 
-def find_motion(record: Record) -> Outcome:
+def find_motion(view: RecordView) -> Outcome:
     """Mark blocks that move, with one block on each side.
 
     Raises
@@ -56,6 +62,7 @@ def find_motion(record: Record) -> Outcome:
     NothingToMeasureError
         When less than a tenth of the log is at rest.
     """
+    record = view.record
     medians, spreads, bounds = _block_statistics(record)
     positive = spreads[spreads > 0]
     if len(bounds) < FEWEST_BLOCKS or positive.size < FEWEST_BLOCKS:

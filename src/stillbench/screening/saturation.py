@@ -2,15 +2,14 @@
 
 import numpy as np
 
-from stillbench.foundation.arrays import FloatArray
+from stillbench.foundation.arrays import BoolArray, FloatArray
 from stillbench.foundation.suggestions import plural
 from stillbench.logs.runs import sample_times
 from stillbench.screening.outcome import Outcome, nothing
+from stillbench.screening.view import CONTINUOUS_SHARE, RecordView
 from stillbench.vocabulary.finding import Finding
 from stillbench.vocabulary.record import Record
 
-CONTINUOUS_SHARE = 8
-"""With more distinct values than an eighth of the samples the readings count as continuous."""
 FEWEST_EQUAL = 3
 
 
@@ -29,22 +28,24 @@ def _piled_up(levels: FloatArray, counts: FloatArray, n_samples: int, sigma: flo
     return bool(counts[-1] > expected + 5.0 * np.sqrt(expected) + 5.0 * spread + 5.0)
 
 
-def find_saturation(record: Record) -> Outcome:
+def find_saturation(view: RecordView) -> Outcome:
     """Find readings at the declared limits, or an extreme value that is taken too often.
 
     Saturated samples stay in: leaving out one side would bias the rest. The finding says that the noise is clipped.
     """
-    use = ~record.missing
+    record = view.record
     values = record.present()
-    times = sample_times(record)[use]
     findings = []
     if record.limits is not None:
         low, high = record.limits
         at = (values <= low) | (values >= high)
         if at.any():
             findings.append(
-                _finding(times[at], int(np.count_nonzero(at)), values.size, "at the end of the declared range")
+                _finding(_times(record, at), int(np.count_nonzero(at)), values.size, "at the end of the declared range")
             )
+    # Fewer than three samples at an extreme are never piled up, whatever the tail before it.
+    if max(np.count_nonzero(values == values.min()), np.count_nonzero(values == values.max())) < FEWEST_EQUAL:
+        return Outcome(tuple(findings), nothing(record).marked)
     levels, counts = np.unique(values, return_counts=True)
     sigma = float(np.std(values))
     for side, sign in (("highest", 1), ("lowest", -1)):
@@ -53,10 +54,17 @@ def find_saturation(record: Record) -> Outcome:
             at = values == sign * ordered[-1]
             findings.append(
                 _finding(
-                    times[at], int(how_often[-1]), values.size, f"at the {side} value, more than its tail explains"
+                    _times(record, at),
+                    int(how_often[-1]),
+                    values.size,
+                    f"at the {side} value, more than its tail explains",
                 )
             )
-    return Outcome(tuple(findings), nothing(record).marked) if findings else nothing(record)
+    return Outcome(tuple(findings), nothing(record).marked)
+
+
+def _times(record: Record, at: BoolArray) -> FloatArray:
+    return sample_times(record)[~record.missing][at]
 
 
 def _finding(times: FloatArray, count: int, n_samples: int, where: str) -> Finding:

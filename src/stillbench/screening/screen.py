@@ -19,6 +19,7 @@ from stillbench.screening.repeated import undo_repeats
 from stillbench.screening.saturation import find_saturation
 from stillbench.screening.spikes import find_spikes
 from stillbench.screening.variance import find_variance_change
+from stillbench.screening.view import RecordView
 from stillbench.vocabulary.finding import FINDING_KINDS, Finding
 from stillbench.vocabulary.record import Record
 from stillbench.vocabulary.screened_record import ScreenedRecord
@@ -70,9 +71,9 @@ def screen(
         found += list(findings)
     # Where values were repeated, what the log offers is the number of values of the sensor.
     offered = max(slower.n_samples, round(record.n_rows * record.sample_interval / slower.sample_interval))
-    plain, current = slower, slower
+    plain, current, view = slower, slower, RecordView(slower)
     for number, check in enumerate(CHECKS):
-        outcome = check(current)
+        outcome = check(view)
         progress.step((number + 1) / len(CHECKS))
         marked = _judged(outcome, found, keep, exclusions=exclusions)
         if marked.any():
@@ -86,6 +87,8 @@ def screen(
                     int(np.count_nonzero(~marked)), SHORTEST_RUN, "any estimate after the exclusions listed"
                 )
             require_movement(current)
+            view = RecordView(current)
+    del view
     used = int(np.count_nonzero(~current.missing))
     edited = current is not plain
     return ScreenedRecord(

@@ -4,9 +4,9 @@ import numpy as np
 
 from stillbench.foundation.arrays import BoolArray, FloatArray, IntArray
 from stillbench.logs.runs import sample_times
-from stillbench.screening.converter import converter_step
-from stillbench.screening.level import level_of
+from stillbench.screening.level import row_medians
 from stillbench.screening.outcome import Outcome, nothing
+from stillbench.screening.view import RecordView
 from stillbench.vocabulary.finding import Finding
 from stillbench.vocabulary.record import Record
 
@@ -31,15 +31,19 @@ def threshold_of(n_samples: int) -> float:
 
 def _contrast(values: FloatArray, places: IntArray) -> FloatArray:
     """Return each sample at ``places`` less the median of its neighbours, 16 on each side; slow courses drop out."""
-    contrast = np.empty(places.size)
-    for i, place in enumerate(places):
-        half = min(NEIGHBOURS, int(place), values.size - 1 - int(place))
+    around = np.append(np.arange(-NEIGHBOURS, 0), np.arange(1, NEIGHBOURS + 1))
+    inner = (places >= NEIGHBOURS) & (places < values.size - NEIGHBOURS)
+    course = np.empty(places.size)
+    course[inner] = row_medians(values[places[inner][:, None] + around])
+    for i in np.flatnonzero(~inner):
+        place = int(places[i])
+        half = min(place, values.size - 1 - place)
         if half >= FEWEST_NEIGHBOURS:
-            around = np.concatenate([values[place - half : place], values[place + 1 : place + half + 1]])
+            near = np.concatenate([values[place - half : place], values[place + 1 : place + half + 1]])
         else:  # at an end of the run there is one side only
-            around = values[1 : 2 * FEWEST_NEIGHBOURS] if place < half + 1 else values[-2 * FEWEST_NEIGHBOURS : -1]
-        contrast[i] = values[place] - np.nanmedian(around)
-    return contrast
+            near = values[1 : 2 * FEWEST_NEIGHBOURS] if place < half + 1 else values[-2 * FEWEST_NEIGHBOURS : -1]
+        course[i] = row_medians(near[None, :])[0]
+    return np.asarray(values[places] - course)
 
 
 def _local_scale(record: Record) -> float:
@@ -53,21 +57,21 @@ def _local_scale(record: Record) -> float:
 
 
 def _robust(sizes: FloatArray) -> float:
-    scale = 1.4826 * float(np.nanmedian(sizes))
-    return scale if scale > 0 else 1.2533 * float(np.nanmean(sizes))
+    known = sizes[~np.isnan(sizes)]
+    scale = 1.4826 * float(np.median(known, overwrite_input=True))
+    return scale if scale > 0 else 1.2533 * float(np.mean(known))
 
 
-def find_spikes(record: Record) -> Outcome:
+def find_spikes(view: RecordView) -> Outcome:
     """Mark samples far from the slow course and from their neighbours, unless the noise as a whole has heavy tails."""
-    residual = np.concatenate([piece - level_of(piece) for piece in record.pieces()])
-    size = np.abs(residual)
+    record, size = view.record, np.abs(view.residual)
     # Readings in coarse steps have no spread of their own below a step.
-    step = converter_step(record.present()) or 0.0
+    step = view.step or 0.0
     scale = max(_robust(size), step)
     if scale == 0:
         return nothing(record)
     threshold = threshold_of(record.values.size)
-    off = np.nan_to_num(size, nan=0.0) > SHOULDER * threshold * scale
+    off = size > SHOULDER * threshold * scale
     if not off.any():
         return nothing(record)
     local = max(_local_scale(record), step)

@@ -9,8 +9,8 @@ import numpy as np
 
 from stillbench.logs.runs import sample_times
 from stillbench.screening.outcome import Outcome, nothing
+from stillbench.screening.view import RecordView
 from stillbench.vocabulary.finding import Finding
-from stillbench.vocabulary.record import Record
 
 THRESHOLD = 1.75
 """Of max |C_t/C_n - t/n| sqrt(n/(kurtosis - 1)); under constant noise 1.63 is passed once in a hundred logs (Kolmogorov)."""
@@ -19,22 +19,19 @@ MATTERS = 0.05
 """Relative change of the noise below which it is of no concern."""
 
 
-def find_variance_change(record: Record) -> Outcome:
+def find_variance_change(view: RecordView) -> Outcome:
     """Find whether the noise of single samples changes during the log, from differences of separate pairs of samples."""
-    squares, places = [], []
-    for run in record.runs:
-        piece = record.values[run.first : run.last]
-        count = piece.size // 2
-        squares.append(np.diff(piece[: 2 * count].reshape(count, 2), axis=1)[:, 0] ** 2)
-        places.append(run.first + 2 * np.arange(count))
-    square, place = np.concatenate(squares), np.concatenate(places)
+    record = view.record
+    square = np.concatenate([(piece[1::2] - piece[: piece.size // 2 * 2 : 2]) ** 2 for piece in record.pieces()])
     known = np.isfinite(square)
-    square, place = square[known], place[known]
+    square = square if known.all() else square[known]
     n = square.size
     if n < FEWEST or square.sum() == 0:
         return nothing(record)
-    kurtosis = float(np.mean(square**2) / np.mean(square) ** 2)
-    course = np.cumsum(square) / square.sum() - np.arange(1, n + 1) / n
+    kurtosis = float(square @ square / n / np.mean(square) ** 2)
+    course = np.cumsum(square)
+    course /= course[-1]
+    course -= np.arange(1, n + 1) / n
     at = int(np.argmax(np.abs(course)))
     statistic = float(np.abs(course[at])) * np.sqrt(n / max(kurtosis - 1.0, 0.1))
     before, after = (
@@ -43,7 +40,8 @@ def find_variance_change(record: Record) -> Outcome:
     )
     if statistic <= THRESHOLD or before == 0 or abs(after / before - 1.0) < MATTERS:
         return nothing(record)
-    when = float(sample_times(record)[place[at]])
+    places = np.concatenate([run.first + 2 * np.arange(run.n_samples // 2) for run in record.runs])
+    when = float(sample_times(record)[places[known][at]])
     finding = Finding(
         "variance_change",
         when,

@@ -11,6 +11,7 @@ C. A. Greenhall, "Recipes for degrees of freedom of frequency stability estimato
 """
 
 from collections.abc import Sequence
+from functools import lru_cache
 
 import numpy as np
 
@@ -118,50 +119,76 @@ def curve_edf(mixture: Mixture, factors: IntArray, run_lengths: Sequence[int]) -
     return edf
 
 
-def cross_covariance(
-    parts: Sequence[tuple[float, Fluctuation]], first: int, second: int, lag: FloatArray
-) -> FloatArray:
-    """Return the covariance of normalised second differences at averaging factors ``first`` and ``second``.
+def cross_covariance(term: Fluctuation, first: int, second: int, lag: FloatArray) -> FloatArray:
+    """Return the covariance of normalised second differences at averaging factors ``first`` and ``second``, unit coefficient.
 
     R(l) = sum_ab c_a c_b G(l + a m_1 - b m_2)/(2 m_1 m_2), c = (1, -2, 1), the second difference of ``second`` starting
     ``lag`` samples before that of ``first``.
     """
     total = np.zeros(np.shape(lag))
-    for square, term in parts:
-        for a, weight_a in enumerate((1.0, -2.0, 1.0)):
-            for b, weight_b in enumerate((1.0, -2.0, 1.0)):
-                total += square * weight_a * weight_b * term.covariance(lag + a * first - b * second)
+    for a, weight_a in enumerate((1.0, -2.0, 1.0)):
+        for b, weight_b in enumerate((1.0, -2.0, 1.0)):
+            total += weight_a * weight_b * term.covariance(lag + a * first - b * second)
     return total / (2.0 * first * second)
 
 
-def curve_covariance(mixture: Mixture, factors: IntArray, run_lengths: Sequence[int]) -> FloatArray:
-    """Return the covariance between the points of an overlapping Allan variance pooled over runs, shape (k, k).
+@lru_cache(maxsize=4)
+def curve_products(
+    terms: tuple[Fluctuation, ...], factors: tuple[int, ...], run_lengths: tuple[int, ...]
+) -> FloatArray:
+    """Return what the covariance between the points of the curve is made of, for any strengths of the terms.
 
-    V_ij = 2/(M_i M_j) sum over runs and lags of (number of pairs at that lag) R_ij(l)^2. Lags are strided by a twelfth of
-    the shorter factor and reach eight of the longer beyond the ends of both differences.
+    The covariance R of two second differences is a sum over terms, linear in their squared coefficients theta, so that
+
+    V_ij = sum_st theta_s theta_t C_stij,  C_stij = 2/(M_i M_j) sum over runs and lags of (pairs at that lag) R_s,ij(l) R_t,ij(l).
+
+    Lags are strided by a twelfth of the shorter factor and reach eight of the longer beyond the ends of both differences.
+
+    Parameters
+    ----------
+    terms : tuple of ``a`` terms
+    factors : tuple of ``k`` int
+        Averaging factors.
+    run_lengths : tuple of int
+        Samples in each run.
+
+    Returns
+    -------
+    (a, a, k, k) float array
+        Kept for the last few calls: channels of one log share it.
     """
-    count = factors.size
-    covariance = np.empty((count, count))
-    smooth = [part for part in mixture.parts if part[1].role != "quantization"]
-    spikes = [part for part in mixture.parts if part[1].role == "quantization"]
-    pairs = np.array([[max(0, n - 2 * int(m) + 1) for n in run_lengths] for m in factors], dtype=float)
-    for i in range(count):
-        for j in range(i, count):
-            first, second = int(factors[i]), int(factors[j])
+    count = len(factors)
+    products = np.zeros((len(terms), len(terms), count, count))
+    # White noise in the angle correlates at a few lags only; a strided sum would count these spikes too often.
+    spiky = np.array([term.role == "quantization" for term in terms])
+    smooth = np.flatnonzero(~spiky)
+    pairs = np.array([[max(0, n - 2 * m + 1) for n in run_lengths] for m in factors], dtype=float)
+    for i, first in enumerate(factors):
+        for j, second in enumerate(factors[i:], start=i):
             stride = max(1, min(first, second) // 12, max(first, second) // 768)
             reach = REACH * max(first, second)
             lags = np.unique(np.concatenate([np.arange(-reach, reach + 1, stride), [0, second - first]])).astype(float)
             edges = np.concatenate([[lags[0] - 0.5], (lags[1:] + lags[:-1]) / 2.0, [lags[-1] + 0.5]])
-            weights = np.diff(edges)
-            values = cross_covariance(smooth, first, second, lags)
-            total = float(weights @ (_overlap(pairs[i], pairs[j], lags) * values**2))
-            if spikes:
+            weights = np.diff(edges) * _overlap(pairs[i], pairs[j], lags)
+            courses = np.array([cross_covariance(terms[s], first, second, lags) for s in smooth])
+            sums = np.zeros((len(terms), len(terms)))
+            if smooth.size:
+                sums[np.ix_(smooth, smooth)] = (courses * weights) @ courses.T
+            if spiky.any():
                 where = np.unique([b * second - a * first for a in range(3) for b in range(3)]).astype(float)
-                below = cross_covariance(smooth, first, second, where)
-                rise = (below + cross_covariance(spikes, first, second, where)) ** 2 - below**2
-                total += float(np.sum(_overlap(pairs[i], pairs[j], where) * rise))
-            covariance[i, j] = covariance[j, i] = 2.0 * total / (pairs[i].sum() * pairs[j].sum())
-    return covariance
+                courses = np.array([cross_covariance(term, first, second, where) for term in terms])
+                at_spikes = (courses * _overlap(pairs[i], pairs[j], where)) @ courses.T
+                sums[spiky, :], sums[:, spiky] = at_spikes[spiky, :], at_spikes[:, spiky]
+            products[:, :, i, j] = products[:, :, j, i] = 2.0 * sums / (pairs[i].sum() * pairs[j].sum())
+    return products
+
+
+def curve_covariance(mixture: Mixture, factors: IntArray, run_lengths: Sequence[int]) -> FloatArray:
+    """Return the covariance between the points of an overlapping Allan variance pooled over runs, shape (k, k)."""
+    squares = np.array([square for square, _ in mixture.parts])
+    terms = tuple(term for _, term in mixture.parts)
+    products = curve_products(terms, tuple(int(m) for m in factors), tuple(int(n) for n in run_lengths))
+    return np.asarray(np.einsum("s,t,stij->ij", squares, squares, products))
 
 
 def _overlap(first: FloatArray, second: FloatArray, lags: FloatArray) -> FloatArray:
