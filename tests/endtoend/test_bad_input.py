@@ -7,8 +7,13 @@ import zipfile
 from collections.abc import Callable
 from pathlib import Path
 
+import h5py
 import numpy as np
+import pyarrow as pa
 import pytest
+from pyarrow import feather, parquet
+from scipy import io as scipy_io
+from scipy.io import wavfile
 from tests.conftest import Command
 
 pytestmark = pytest.mark.installed
@@ -53,6 +58,71 @@ def test_spreadsheet(stillbench: Command, tmp_path: Path) -> None:
     refused(stillbench("characterize", "night.xlsx", "--unit", "V"), 1, "spreadsheet", "save the sheet as CSV")
     (tmp_path / "night.xlsx").rename(tmp_path / "night.zip")
     refused(stillbench("characterize", "night.zip", "--unit", "V"), 1, "spreadsheet", "save the sheet as CSV")
+
+
+HDF5 = ("characterize", "log.h5", "--unit", "V", "--rate", "1")
+
+
+def test_hdf5_that_declares_more_than_it_holds(stillbench: Command, tmp_path: Path) -> None:
+    """Two kilobytes that declare 1.6 TB."""
+    with h5py.File(tmp_path / "log.h5", "w") as file:
+        file.create_dataset("rate", shape=(200_000_000_000,), dtype="f8", chunks=(1_000,))
+    assert (tmp_path / "log.h5").stat().st_size < 4_000
+    refused(stillbench(*HDF5), 1, "declares 1525879 MiB")
+
+
+def test_hdf5_that_reaches_outside_itself(stillbench: Command, tmp_path: Path) -> None:
+    """External links, external storage and virtual datasets."""
+    with h5py.File(tmp_path / "inner.h5", "w") as file:
+        file["rate"] = np.arange(100.0)
+    (tmp_path / "samples.bin").write_bytes(np.arange(100.0).tobytes())
+    with h5py.File(tmp_path / "log.h5", "w") as file:
+        file["rate"] = h5py.ExternalLink("inner.h5", "rate")
+    refused(stillbench(*HDF5), 1, "'/rate' of 'log.h5' is a link to another file")
+    with h5py.File(tmp_path / "log.h5", "w") as file:
+        file.create_dataset("rate", (100,), "f8", external=[(str(tmp_path / "samples.bin"), 0, 800)])
+    refused(stillbench(*HDF5), 1, "lies in another file")
+    layout = h5py.VirtualLayout(shape=(100,), dtype="f8")
+    layout[:] = h5py.VirtualSource(str(tmp_path / "inner.h5"), "rate", shape=(100,))
+    with h5py.File(tmp_path / "log.h5", "w") as file:
+        file.create_virtual_dataset("rate", layout)
+    refused(stillbench(*HDF5), 1, "put together from other files")
+
+
+def test_damaged_files_of_every_binary_format(stillbench: Command, tmp_path: Path) -> None:
+    """Each cut in half, and each with a stretch of noise in it: one line or a result, never a traceback."""
+    generator = np.random.default_rng(9)
+    rate = generator.normal(size=2_000)
+    np.savez(tmp_path / "log.npz", rate=rate)
+    np.save(tmp_path / "log.npy", rate)
+    scipy_io.savemat(tmp_path / "log.mat", {"rate": rate}, do_compression=True)
+    parquet.write_table(pa.table({"rate": rate}), tmp_path / "log.parquet")
+    feather.write_feather(pa.table({"rate": rate}), tmp_path / "log.feather")
+    wavfile.write(tmp_path / "log.wav", 100, rate.astype(np.float32))
+    with h5py.File(tmp_path / "log.h5", "w") as file:
+        file["rate"] = rate
+    for path in sorted(tmp_path.glob("log.*")):
+        whole = path.read_bytes()
+        (tmp_path / f"half{path.suffix}").write_bytes(whole[: len(whole) // 2])
+        noisy = bytearray(whole)
+        noisy[20:120] = generator.bytes(100)
+        (tmp_path / f"noisy{path.suffix}").write_bytes(noisy)
+        for name in ("half", "noisy"):
+            done = stillbench("characterize", f"{name}{path.suffix}", "--unit", "V", "--rate", "100")
+            assert done.returncode in (0, 1, 2), (path, done.stderr)
+            assert done.stderr.count(b"\n") <= 2
+            assert b"an error of the program" not in done.stderr, (path, done.stderr)
+
+
+def test_compressed_bombs(stillbench: Command, tmp_path: Path) -> None:
+    with pa.CompressedOutputStream(str(tmp_path / "log.csv.zst"), "zstd") as stream:
+        for _ in range(300):
+            stream.write(b"0" * (1 << 20))
+    refused(stillbench("characterize", "log.csv.zst", "--unit", "V", "--rate", "1"), 1, "expands to")
+
+
+def test_several_logs_without_a_word(stillbench: Command, good: Path) -> None:
+    refused(stillbench("characterize", good, good, "--unit", "V"), 2, "2 logs are given", "--joined")
 
 
 def test_column_that_is_not_there(stillbench: Command, good: Path) -> None:

@@ -1,13 +1,17 @@
 """stillbench characterize LOG."""
 
+import importlib
 import sys
+import threading
 from pathlib import Path
 
 import click
 
+from stillbench.cli.reading import one_log, reading_flags
+
 HELP = """Noise terms, verdicts and a report from one log taken at rest.
 
-LOG is delimited text (plain, .gz, or one file in a .zip), .npy or .npz.
+LOG is delimited text, NPY/NPZ, MAT, HDF5, Parquet, Feather, WAV, MCAP, a ROS bag, or raw samples declared in a log sheet; plain,\n.gz, .zst, or one file in a .zip. 'stillbench check LOG' says how it is understood.
 
 Exit codes: 0 conforms or nothing to judge; 1 the log or the analysis failed; 2 usage; 3 a requirement is not met; 4 none is
 missed but one is undecided.
@@ -15,26 +19,13 @@ missed but one is undecided.
 
 
 @click.command(name="characterize", help=HELP)
-@click.argument("log", type=click.Path(path_type=Path))
+@reading_flags
 @click.option(
     "--channel",
     "channels",
     multiple=True,
     metavar="NAME",
     help="Column by head or number; repeatable; 'all' for every one that has a unit.",
-)
-@click.option(
-    "--unit",
-    "units",
-    multiple=True,
-    metavar="UNIT|NAME=UNIT",
-    help="Unit of the samples, such as deg/s; there is no default.",
-)
-@click.option("--rate", type=float, metavar="HZ", help="Sampling rate, where there are no stamps.")
-@click.option("--time", metavar="COLUMN", help="Time column; 'none' ignores stamps.")
-@click.option("--time-unit", type=click.Choice(["s", "ms", "us", "ns", "iso", "unix"]), help="Unit of the stamps.")
-@click.option(
-    "--log-sheet", type=click.Path(path_type=Path), metavar="FILE", help="What is known of the log and the unit (TOML)."
 )
 @click.option("--spec", type=click.Path(path_type=Path), metavar="FILE", help="Requirements to judge (TOML).")
 @click.option(
@@ -56,7 +47,7 @@ missed but one is undecided.
 )
 @click.option("--quiet", is_flag=True, help="No progress, and no word on what was written.")
 def command(
-    log: Path,
+    log: tuple[Path, ...],
     channels: tuple[str, ...],
     units: tuple[str, ...],
     rate: float | None,
@@ -75,6 +66,7 @@ def command(
     keep: tuple[str, ...],
     reasons: tuple[str, ...],
     *,
+    joined: bool,
     no_exclusions: bool,
     quiet: bool,
 ) -> int:
@@ -95,9 +87,12 @@ def command(
         )
     if out is not None and out.exists() and not out.is_dir():
         raise OutputError(f"{str(out)!r} is a file", "a folder for --out", "choose another name")
+    if out is not None:
+        # What draws the figures takes its time to load: that passes while the log is read.
+        threading.Thread(target=importlib.import_module, args=("matplotlib.backends.backend_svg",), daemon=True).start()
     with progress_line(quiet=quiet) as progress:
         result = characterize(
-            log,
+            one_log(log, joined=joined),
             channels=channels,
             unit=unit_flags(units),
             rate=rate,

@@ -1,15 +1,18 @@
 """NPY and NPZ files as a table (no pickled objects)."""
 
 import io
+import tokenize
 import zipfile
 from collections.abc import Sequence
 
 import numpy as np
 
-from stillbench.foundation.arrays import FloatArray
+from stillbench.foundation.arrays import FloatArray, IntArray
 from stillbench.foundation.errors import LogError
-from stillbench.logs.contents import LARGEST_EXPANDED, LARGEST_RATIO, RATIO_COUNTS_FROM, Contents
+from stillbench.logs.contents import LARGEST_EXPANDED, LARGEST_RATIO, RATIO_COUNTS_FROM, ZIP_MAGIC, Contents
+from stillbench.logs.formats import Format
 from stillbench.logs.table import Table
+from stillbench.vocabulary.log_sheet import LogSection
 
 NPY_MAGIC = b"\x93NUMPY"
 MOST_CHANNELS = 64
@@ -19,8 +22,9 @@ MOST_CHANNELS = 64
 class ArrayTable(Table):
     """Named columns already in memory or mapped."""
 
-    def __init__(self, columns: dict[str, np.ndarray], format_: str, *, has_heads: bool) -> None:
+    def __init__(self, columns: dict[str, np.ndarray], format_: str, *, has_heads: bool, utc: bool = False) -> None:
         super().__init__(list(columns), format_, has_heads=has_heads)
+        self._utc = utc
         self._columns = list(columns.values())
 
     def numbers(self, indices: Sequence[int]) -> list[FloatArray]:
@@ -33,6 +37,12 @@ class ArrayTable(Table):
                 )
             arrays.append(np.ascontiguousarray(column, dtype=np.float64))
         return arrays
+
+    def instants(self, index: int) -> tuple[IntArray, bool] | None:
+        column = self._columns[index]
+        if column.dtype.kind != "M":
+            return None
+        return column.astype("M8[ns]").astype(np.int64), self._utc
 
     def texts(self, index: int) -> Sequence[str]:
         return [str(value) for value in self._columns[index]]
@@ -79,7 +89,16 @@ def _load(contents: Contents) -> dict[str, np.ndarray]:
         with np.load(io.BytesIO(contents.data), allow_pickle=False) as bundle:
             for key in bundle.files:
                 columns |= columns_of(bundle[key], contents.name, prefix=f"{key}.")
-    except (ValueError, OSError, EOFError, zipfile.BadZipFile, KeyError, SyntaxError, MemoryError) as error:
+    except (
+        ValueError,
+        OSError,
+        EOFError,
+        zipfile.BadZipFile,
+        KeyError,
+        SyntaxError,
+        MemoryError,
+        tokenize.TokenError,
+    ) as error:
         reason = "it holds pickled objects" if "pickle" in str(error) else str(error).split("\n", maxsplit=1)[0]
         raise LogError(
             f"{contents.name!r} cannot be read: {reason}", "plain numeric arrays", "save it again with numpy.save"
@@ -102,7 +121,7 @@ def _check_declared(data: bytes, name: str) -> None:
         )
 
 
-def read_arrays(contents: Contents) -> ArrayTable:
+def read_arrays(contents: Contents, section: LogSection) -> ArrayTable:  # noqa: ARG001  a reader's signature
     """Read an NPY or NPZ file.
 
     Raises
@@ -120,3 +139,11 @@ def read_arrays(contents: Contents) -> ArrayTable:
     kind = "NPY" if bytes(contents.data[:6]) == NPY_MAGIC else "NPZ"
     named = kind == "NPZ" or not all(name.isdecimal() for name in columns)
     return ArrayTable(columns, f"{kind}, {len(columns)} columns", has_heads=named)
+
+
+def _recognizes(contents: Contents) -> bool:
+    head = bytes(contents.data[:6])
+    return head == NPY_MAGIC or head.startswith(ZIP_MAGIC)
+
+
+FORMAT = Format(("npy", "npz"), _recognizes, read_arrays)

@@ -86,18 +86,32 @@ def audit_clock(log: SensorLog) -> Grid:
             raise ClockError("the log has no stamps and no rate", "one of them", "give --rate HZ")
         interval = 1.0 / log.rate
         index = np.arange(rows)
-        zeros = np.zeros(rows, dtype=np.int64)
+        segment = np.zeros(rows, dtype=np.int64)
+        segment[[row for row in log.restarts if 0 < row < rows]] = 1
         return Grid(
             interval,
             np.ones(rows, dtype=bool),
             index,
-            zeros,
+            np.cumsum(segment),
             index.astype(np.float64) * interval,
             "declared rate",
             0.0,
-            (),
+            tuple(_restart(row * interval) for row in log.restarts[:LISTED_STEPS]),
         )
     return _audit_stamps(log.stamps, log.rate)
+
+
+def _restart(seconds: float) -> Finding:
+    return Finding(
+        "gap",
+        seconds,
+        None,
+        None,
+        "s",
+        excluded=False,
+        because="the logger was started again here, or another file begins, and there are no stamps",
+        disposition="the record is split there; how much time passed is not known",
+    )
 
 
 def _on_a_line(stamps: Stamps, rate: float | None) -> Grid | None:
@@ -129,8 +143,9 @@ def _on_a_line(stamps: Stamps, rate: float | None) -> Grid | None:
     interval += slope
     findings = _mismatch(interval, rate)
     index = np.arange(seconds.size)
-    segment = np.zeros(seconds.size, dtype=np.int64)
-    kept = np.ones(seconds.size, dtype=bool)
+    # The same for every row: one number is kept for all of them.
+    segment = np.broadcast_to(np.int64(0), seconds.shape)
+    kept = np.broadcast_to(np.True_, seconds.shape)
     jitter = float(np.sqrt(square / count))
     return Grid(interval, kept, index, segment, seconds, "stamps", jitter, tuple(findings))
 

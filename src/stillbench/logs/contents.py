@@ -8,12 +8,13 @@ import zlib
 from concurrent.futures import Future, ThreadPoolExecutor
 from dataclasses import dataclass
 from pathlib import Path
-from typing import IO
+from typing import Any
 
 from stillbench.foundation.errors import LogError, UsageError
 from stillbench.foundation.suggestions import listed
 
 CHUNK = 1 << 20
+BAG_FILES = ("metadata.yaml",)
 LARGEST_EXPANDED = 8 << 30
 """Bytes; a larger compressed log is refused."""
 LARGEST_RATIO = 200
@@ -21,6 +22,7 @@ LARGEST_RATIO = 200
 RATIO_COUNTS_FROM = 64 << 20
 
 ZIP_MAGIC = b"PK\x03\x04"
+ZSTD_MAGIC = b"\x28\xb5\x2f\xfd"
 GZIP_MAGIC = b"\x1f\x8b"
 OLD_SPREADSHEET_MAGIC = b"\xd0\xcf\x11\xe0\xa1\xb1\x1a\xe1"
 
@@ -40,7 +42,11 @@ class Contents:
     hashing : future of str
         SHA-256 of the file on disk, worked out while the file is read.
     wrapping : str
-        ``''``, ``gzip`` or ``zip``.
+        ``''``, ``gzip``, ``zstd`` or ``zip``.
+    path : Path or None
+        Of a file that is as it lies on disk, or of a folder.
+    folder : bool
+        Whether it is a folder (a bag).
     """
 
     name: str
@@ -48,6 +54,8 @@ class Contents:
     file_bytes: int
     hashing: Future[str]
     wrapping: str
+    path: Path | None = None
+    folder: bool = False
 
 
 def open_contents(path: Path) -> Contents:
@@ -58,18 +66,9 @@ def open_contents(path: Path) -> Contents:
     LogError
         When the file is missing, a folder, empty, a spreadsheet, damaged, or expands beyond reason.
     """
-    if not path.exists():
-        near = sorted(p.name for p in path.parent.glob("*")) if path.parent.is_dir() else []
-        hint = f"the folder holds {listed(near, 5)}" if near else "check the folder"
-        raise LogError(f"there is no file {str(path)!r}", "a log file", hint)
-    if path.is_dir():
-        inside = sorted(p.name for p in path.iterdir() if p.is_file())
-        raise LogError(f"{str(path)!r} is a folder", "one file", f"name one of {listed(inside, 5)}" if inside else "")
-    if not path.is_file():
-        raise LogError(f"{str(path)!r} is not a plain file", "one file", "copy the data into a file first")
-    size = path.stat().st_size
-    if size == 0:
-        raise LogError(f"the file {path.name!r} is empty", "rows of numbers", "check that the logger wrote to it")
+    if path.is_dir() and any((path / name).is_file() for name in BAG_FILES):
+        return _folder(path)
+    size = _checked_size(path)
     try:
         with path.open("rb") as stream:
             magic = stream.read(8)
@@ -84,8 +83,10 @@ def open_contents(path: Path) -> Contents:
                 with gzip.open(stream) as inner:
                     data = _expand(inner, path.name, size)
                 return Contents(path.name.removesuffix(".gz"), data, size, digest, "gzip")
+            if magic.startswith(ZSTD_MAGIC):
+                return Contents(path.name.removesuffix(".zst"), _from_zstd(path, size), size, digest, "zstd")
             mapped = mmap.mmap(stream.fileno(), 0, access=mmap.ACCESS_READ)
-            return Contents(path.name, mapped, size, digest, "")
+            return Contents(path.name, mapped, size, digest, "", path)
     except PermissionError as error:
         raise UsageError(f"{str(path)!r} cannot be read: permission denied", "a file that you may read") from error
     except (OSError, zlib.error, EOFError, zipfile.BadZipFile, NotImplementedError, RuntimeError) as error:
@@ -103,6 +104,41 @@ def _hash_in_background(path: Path) -> Future[str]:
     future = pool.submit(digest)
     pool.shutdown(wait=False)
     return future
+
+
+def _checked_size(path: Path) -> int:
+    """Return the size of a file, bytes; refuse what is missing, a folder, no plain file, or empty."""
+    if not path.exists():
+        near = sorted(p.name for p in path.parent.glob("*")) if path.parent.is_dir() else []
+        hint = f"the folder holds {listed(near, 5)}" if near else "check the folder"
+        raise LogError(f"there is no file {str(path)!r}", "a log file", hint)
+    if path.is_dir():
+        inside = sorted(p.name for p in path.iterdir() if p.is_file())
+        raise LogError(f"{str(path)!r} is a folder", "one file", f"name one of {listed(inside, 5)}" if inside else "")
+    if not path.is_file():
+        raise LogError(f"{str(path)!r} is not a plain file", "one file", "copy the data into a file first")
+    size = path.stat().st_size
+    if size == 0:
+        raise LogError(f"the file {path.name!r} is empty", "rows of numbers", "check that the logger wrote to it")
+    return size
+
+
+def _folder(path: Path) -> Contents:
+    """Return a bag that is a folder; its digest is that of its files one behind the other, in the order of their names."""
+    files = sorted(inner for inner in path.iterdir() if inner.is_file())
+    digest = hashlib.sha256()
+    for inner in files:
+        digest.update(inner.read_bytes())
+    future: Future[str] = Future()
+    future.set_result(digest.hexdigest())
+    return Contents(path.name, b"", sum(inner.stat().st_size for inner in files), future, "", path, folder=True)
+
+
+def _from_zstd(path: Path, size: int) -> bytes:
+    import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
+
+    with pa.input_stream(str(path), compression="zstd") as inner:
+        return _expand(inner, path.name, size)
 
 
 def _spreadsheet(name: str) -> LogError:
@@ -128,12 +164,18 @@ def _from_zip(path: Path) -> tuple[str, bytes]:
         member = members[0]
         if member.flag_bits & 1:
             raise LogError(f"{path.name!r} is encrypted", "a plain zip", "expand it first")
-        _check_expansion(member.file_size, member.compress_size, path.name)
+        check_expansion(member.file_size, member.compress_size, path.name)
         with archive.open(member) as inner:
             return Path(member.filename).name, _expand(inner, path.name, member.compress_size)
 
 
-def _check_expansion(expanded: int, compressed: int, name: str) -> None:
+def check_expansion(expanded: int, compressed: int, name: str) -> None:
+    """Refuse what expands beyond reason.
+
+    Raises
+    ------
+    LogError
+    """
     ratio = expanded / max(1, compressed)
     if expanded > LARGEST_EXPANDED or (ratio > LARGEST_RATIO and expanded > RATIO_COUNTS_FROM):
         raise LogError(
@@ -143,12 +185,12 @@ def _check_expansion(expanded: int, compressed: int, name: str) -> None:
         )
 
 
-def _expand(stream: IO[bytes] | gzip.GzipFile, name: str, compressed: int) -> bytes:
+def _expand(stream: Any, name: str, compressed: int) -> bytes:  # noqa: ANN401  whatever has a read method
     parts: list[bytes] = []
     expanded = 0
     while chunk := stream.read(CHUNK):
         expanded += len(chunk)
-        _check_expansion(expanded, compressed, name)
+        check_expansion(expanded, compressed, name)
         parts.append(chunk)
     if not expanded:
         raise LogError(f"the file in {name!r} is empty", "rows of numbers")

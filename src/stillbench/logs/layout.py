@@ -7,6 +7,7 @@ from dataclasses import dataclass
 
 from stillbench.foundation.errors import LogError, UnitError, UsageError
 from stillbench.foundation.units import parse_unit
+from stillbench.logs.dates import is_stamp
 from stillbench.vocabulary.log_sheet import LogSection
 
 SAMPLE_BYTES = 1 << 18
@@ -14,16 +15,17 @@ SAMPLE_LINES = 2_000
 DELIMITERS = ("\t", ";", ",", " ")
 DELIMITER_WORDS = {"\t": "tab", ";": "semicolon", ",": "comma", " ": "blanks"}
 COMMENTS = ("#", "%", "//", "!")
-DATE = r"\d{4}-\d{1,2}-\d{1,2}(?:[T ]\d{1,2}:\d{2}(?::\d{2}(?:[.,]\d+)?)?)?(?:Z|[+-]\d{2}:?\d{2})?"
 
 _NUMBER = {
     ".": re.compile(r"[-+]?(?:\d+\.?\d*|\.\d+)(?:[eE][-+]?\d+)?|[-+]?(?:nan|inf|infinity)|", re.IGNORECASE),
     ",": re.compile(r"[-+]?(?:\d+,?\d*|,\d+)(?:[eE][-+]?\d+)?|[-+]?(?:nan|inf|infinity)|", re.IGNORECASE),
 }
-_DATE = re.compile(DATE)
+_THOUSANDS = re.compile(r"[-+]?[1-9]\d{0,2}(?:,\d{3})+(?:\.\d+)?")
 _EMPTY_WORDS = frozenset({"", "na", "n/a", "null", "none", "-", "--", "#n/a"})
 CONTROL_SHARE = 0.01
 FITTING_SHARE = 0.9
+TAIL_SHARES = (2.0 / 3.0, 1.0 / 3.0, 1.0 / 6.0)
+FEWEST_TAIL = 12
 
 
 @dataclass(frozen=True)
@@ -41,6 +43,8 @@ class Layout:
         Line number (from 0) of the first row of data.
     columns : int
         Columns of a row of data.
+    units : list of str or None
+        Of a row of units below the head.
     """
 
     encoding: str
@@ -49,6 +53,7 @@ class Layout:
     heads: list[str] | None
     body_line: int
     columns: int
+    units: list[str] | None = None
 
     @property
     def words(self) -> str:
@@ -104,11 +109,7 @@ def split_cells(line: str, delimiter: str) -> list[str]:
 
 
 def _is_value(cell: str, decimal: str) -> bool:
-    return (
-        _NUMBER[decimal].fullmatch(cell) is not None
-        or cell.lower() in _EMPTY_WORDS
-        or _DATE.fullmatch(cell) is not None
-    )
+    return _NUMBER[decimal].fullmatch(cell) is not None or cell.lower() in _EMPTY_WORDS or is_stamp(cell)
 
 
 def is_number(cell: str, decimal: str) -> bool:
@@ -169,16 +170,54 @@ def find_layout(lines: Sequence[str], encoding: str, section: LogSection, name: 
     body = [line for line in lines if not is_comment(line)]
     if section.head_lines is not None:
         body = [line for line in lines[section.head_lines :] if not is_comment(line)]
-    # The last third of the sample is past any head.
-    tail = body[len(body) - max(1, (2 * len(body)) // 3) :] if len(body) > 2 else body  # noqa: PLR2004
-    scored = [(*_score(tail, delimiter, mark), delimiter, mark) for delimiter, mark in _candidates(section)]
-    best = max((share for share, *_ in scored), default=0.0)
-    if best < FITTING_SHARE:
+    # The last part of the sample is past any head; the longer the head beside the rows, the shorter that part.
+    for share in TAIL_SHARES:
+        tail = body[len(body) - max(min(len(body), FEWEST_TAIL), round(share * len(body))) :]
+        scored = [(*_score(tail, delimiter, mark), delimiter, mark) for delimiter, mark in _candidates(section)]
+        best = max((share for share, *_ in scored), default=0.0)
+        if best >= FITTING_SHARE:
+            break
+    else:
         raise _not_a_table(body, best, scored, name)
     fitting = [entry for entry in scored if entry[0] >= best - 1e-9]
     delimiter, decimal, width = _choose(fitting, body, lines, name)
-    heads, body_line = _find_head(lines, delimiter, decimal, width, section.head_lines)
-    return Layout(encoding, delimiter, decimal, heads, body_line, width)
+    heads, units, body_line = _find_head(lines, delimiter, decimal, width, section.head_lines)
+    if decimal == "," and section.decimal is None:
+        _refuse_thousands(tail, delimiter, name)
+    if delimiter == "," and heads is None and section.delimiter is None:
+        _refuse_decimal_commas(lines, body_line, width, name)
+    return Layout(encoding, delimiter, decimal, heads, body_line, width, units)
+
+
+def _refuse_thousands(rows: Sequence[str], delimiter: str, name: str) -> None:
+    """Where all cells with a comma look like 1,234 the comma may part thousands as well as decimals."""
+    cells = [cell for line in rows for cell in split_cells(line, delimiter) if "," in cell]
+    if cells and all(_THOUSANDS.fullmatch(cell) for cell in cells):
+        raise UsageError(
+            f"in {name!r} {cells[0]!r} may be read in two ways: with a decimal comma, or with thousands parted by commas",
+            "one way",
+            'write decimal = "," under [log] in a log sheet if it is a decimal comma; otherwise write the log without commas',
+        )
+
+
+def _refuse_decimal_commas(lines: Sequence[str], body_line: int, width: int, name: str) -> None:
+    """Rows of twice as many cells as the line above has names were written with decimal commas between commas."""
+    above = next((line for line in reversed(lines[:body_line]) if line.strip()), "")
+    names = split_cells(above, ",")
+    whole = bool(split_cells(lines[body_line], ",")[-1]) if body_line < len(lines) else False
+    if (
+        whole
+        and not is_comment(above)
+        and len(names) > 1
+        and 2 * len(names) == width
+        and not any(is_number(cell, ".") for cell in names)
+    ):
+        raise UsageError(
+            f"the head of {name!r} names {len(names)} columns and its rows have {width} cells: a comma stands both between"
+            " columns and in numbers",
+            "one use of the comma",
+            "write the log with another delimiter or with decimal points",
+        )
 
 
 def _choose(
@@ -206,7 +245,8 @@ def _choose(
 
 def _find_head(
     lines: Sequence[str], delimiter: str, decimal: str, width: int, head_lines: int | None
-) -> tuple[list[str] | None, int]:
+) -> tuple[list[str] | None, list[str] | None, int]:
+    """Heads, units below them, and the line of the first row of data."""
     first = head_lines or 0
     while first < len(lines):
         line = lines[first]
@@ -221,13 +261,15 @@ def _find_head(
         if not stripped:
             continue
         cells = split_cells(stripped, delimiter)
+        if len(cells) == width - 1 and not split_cells(lines[first], delimiter)[-1]:
+            cells = [*cells, ""]  # rows end in a separator, the head does not
         if len(cells) == width and not any(is_number(cell, decimal) for cell in cells) and any(cells):
             if _are_units(cells) and units_row is None:
                 units_row = cells
                 continue
-            return _distinct(cells), first
+            return _distinct(cells), units_row, first
         break
-    return (None if units_row is None else _distinct(units_row)), first
+    return (None if units_row is None else _distinct(units_row)), None, first
 
 
 def _are_units(cells: Sequence[str]) -> bool:
@@ -265,6 +307,13 @@ def _not_a_table(
         body[0] if body else "",
     )
     cell = next((cell for cell in split_cells(odd, delimiter) if not _is_value(cell, decimal)), odd)
+    if _THOUSANDS.fullmatch(cell.strip()):
+        return LogError(
+            f"{name!r} is not a table of numbers: {cell.strip()!r} in the line {odd.strip()[:60]!r} looks like a number with"
+            " its thousands parted by commas",
+            "numbers without marks between thousands",
+            "write the log again without them",
+        )
     share = f"only {100 * best:.0f} % of its lines are alike" if best else "no line of it is a row of numbers"
     return LogError(
         f"{name!r} is not a table of numbers: {share}; {cell.strip()[:40]!r} in the line {odd.strip()[:60]!r} is neither a"

@@ -11,8 +11,10 @@ from stillbench.foundation.errors import ClockError, ColumnError, LogError, Unit
 from stillbench.foundation.progress import SILENT, Progress
 from stillbench.foundation.suggestions import did_you_mean, listed, plural
 from stillbench.foundation.units import Unit, parse_unit
-from stillbench.logs.arrays import NPY_MAGIC, ArrayTable, columns_of, read_arrays
-from stillbench.logs.contents import ZIP_MAGIC, open_contents
+from stillbench.logs.arrays import ArrayTable, columns_of
+from stillbench.logs.contents import open_contents
+from stillbench.logs.formats import read_table
+from stillbench.logs.joined import JoinedTable
 from stillbench.logs.stamps import find_time_column, read_stamps, split_head
 from stillbench.logs.table import Table
 from stillbench.logs.text import TextTable
@@ -25,11 +27,54 @@ SPREADSHEET_SUFFIXES = (".xlsx", ".xls", ".ods", ".xlsm")
 
 def _open_table(path: Path, sheet: LogSheet) -> tuple[Table, Callable[[int], Source]]:
     """Return the table of a file, and what names its source once its rows are counted."""
+    if path.suffix.lower() in SPREADSHEET_SUFFIXES and path.is_file():
+        raise LogError(
+            f"{path.name!r} is a spreadsheet file",
+            "a text file of numbers",
+            "open it where it was made, save the sheet as CSV (UTF-8), and give that; check that no digits were cut",
+        )
     contents = open_contents(path)
-    head = bytes(contents.data[:8])
-    binary = head.startswith((NPY_MAGIC, ZIP_MAGIC))
-    table: Table = read_arrays(contents) if binary else TextTable(contents, sheet.log)
+    table = read_table(contents, sheet.log)
     return table, lambda rows: Source(path.name, contents.file_bytes, contents.hashing.result(), rows, table.format)
+
+
+def _open_joined(paths: Sequence[Path], sheet: LogSheet) -> tuple[Table, Callable[[int], Source]]:
+    """Return several files as one table; the digest is that of their bytes one behind the other."""
+    opened = [_open_table(path, sheet) for path in paths]
+    names = [path.name for path in paths]
+    table = JoinedTable([part for part, _ in opened], names)
+
+    def source(rows: int) -> Source:
+        digest, size = hashlib.sha256(), 0
+        for path in paths:
+            with path.open("rb") as stream:
+                while chunk := stream.read(1 << 20):
+                    digest.update(chunk)
+                    size += len(chunk)
+        return Source(", ".join(names), size, digest.hexdigest(), rows, table.format)
+
+    return table, source
+
+
+def open_log(log: Any, sheet: LogSheet, name: str) -> tuple[Table, Callable[[int], Source]]:  # noqa: ANN401
+    """Return the table of a file, of files that make one night, or of data in memory, and what names its source."""
+    if isinstance(log, str | Path):
+        return _open_table(Path(log), sheet)
+    if _is_files(log):
+        return _open_joined([Path(part) for part in log], sheet)
+    return _wrap_array(log, name)
+
+
+def time_column(table: Table, given: str | int | None, sheet: LogSheet) -> int | None:
+    """Return the time column: the one named by flag or sheet, or the one known by its head; None for no stamps."""
+    column = given if given is not None else sheet.clock.column
+    if column is None:
+        return find_time_column(table)
+    return None if str(column).lower() == "none" else table.index_of(column)
+
+
+def _is_files(log: Any) -> bool:  # noqa: ANN401  whatever was handed in
+    return isinstance(log, list | tuple) and bool(log) and all(isinstance(part, str | Path) for part in log)
 
 
 def _wrap_array(data: Any, name: str) -> tuple[Table, Callable[[int], Source]]:  # noqa: ANN401  arrays, series, frames, mappings
@@ -58,7 +103,7 @@ def _chosen(
 ) -> list[tuple[str, int]]:
     """Labels and columns of the channels that are wanted."""
     declared = {name: table.index_of(section.column or name) for name, section in sheet.channel.items()}
-    data = [index for index in range(len(table.heads)) if index != time_index]
+    data = [index for index in range(len(table.heads)) if index != time_index and index not in table.empty]
     if "all" in channels:
         named = {table.index_of(name): name for name in units if name}
         by_sheet = {index: name for name, index in declared.items() if sheet.channel[name].unit}
@@ -91,11 +136,11 @@ def _named(table: Table, name: str) -> tuple[str, int]:
     return table.heads[index], index
 
 
-def _unit_for(label: str, head: str, sheet: LogSheet, units: Mapping[str, str]) -> Unit:
-    section = sheet.channel.get(label)
+def _unit_for(label: str, table: Table, index: int, sheet: LogSheet, units: Mapping[str, str]) -> Unit:
+    section, head = sheet.channel.get(label), table.heads[index]
     text = units.get(label) or units.get(head) or units.get("") or (section.unit if section else None)
     if text is None:
-        offered = split_head(head)[1]
+        offered = split_head(head)[1] or table.units[index]
         try:
             offered = parse_unit(offered).text if offered else None
         except UnitError:
@@ -143,8 +188,9 @@ def read_log(
 
     Parameters
     ----------
-    log : path, array, pandas Series or DataFrame, or mapping of column name to array
-        A file of delimited text (plain, .gz, or one file in a .zip), .npy or .npz; or the data themselves, rows of samples.
+    log : path, list of paths, array, pandas Series or DataFrame, or mapping of column name to array
+        A file in a format of ``logs/formats.py``, plain or compressed; files that make one night, in their order; or the
+        data themselves, rows of samples.
     sheet : LogSheet, optional
         What is declared; the arguments below override it.
     channels : sequence of str
@@ -175,35 +221,40 @@ def read_log(
     units = dict(units or {})
     rate = rate if rate is not None else sheet.clock.rate
     check_rate(rate)
-    if isinstance(log, str | Path):
-        path = Path(log)
-        if path.suffix.lower() in SPREADSHEET_SUFFIXES and path.is_file():
-            raise LogError(
-                f"{path.name!r} is a spreadsheet file",
-                "a text file of numbers",
-                "open it where it was made, save the sheet as CSV (UTF-8), and give that; check that no digits were cut",
-            )
-        table, source_of = _open_table(path, sheet)
-    else:
-        table, source_of = _wrap_array(log, name)
+    table, source_of = open_log(log, sheet, name)
+    try:
+        return _read(table, source_of, sheet, channels, units, rate, time, time_unit)
+    finally:
+        table.close()
+
+
+def _read(
+    table: Table,
+    source_of: Callable[[int], Source],
+    sheet: LogSheet,
+    channels: Sequence[str],
+    units: Mapping[str, str],
+    rate: float | None,
+    time: str | int | None,
+    time_unit: str | None,
+) -> SensorLog:
+    """Choose the columns and read them."""
     understood = [table.format]
-    column = time if time is not None else sheet.clock.column
-    time_index: int | None
-    if column is not None and str(column).lower() == "none":
-        time_index = None
-    elif column is not None:
-        time_index = table.index_of(column)
-    else:
-        time_index = find_time_column(table)
+    time_index = time_column(table, time, sheet)
     # A column in --unit NAME=UNIT may be given by its number too.
-    units |= {table.heads[table.index_of(key)]: unit for key, unit in units.items() if key and key not in sheet.channel}
+    units = dict(units) | {
+        table.heads[table.index_of(key)]: unit for key, unit in units.items() if key and key not in sheet.channel
+    }
     chosen = _chosen(table, sheet, channels, units, time_index)
-    spoken = {label: _unit_for(label, table.heads[index], sheet, units) for label, index in chosen}
+    spoken = {label: _unit_for(label, table, index, sheet, units) for label, index in chosen}
     stamps, present = None, None
     table.expect([index for _, index in chosen])
     if time_index is not None:
         stamps, present, sentence = read_stamps(table, time_index, time_unit or sheet.clock.unit)
         understood.append(sentence)
+    elif rate is None and table.rate is not None:
+        rate = table.rate
+        understood.append(f"{rate:.9g} Hz, as the file itself says; override with --rate")
     elif rate is None:
         hint = "" if table.has_heads else " (the columns have no heads)"
         raise ClockError(
@@ -226,7 +277,7 @@ def read_log(
     understood += table.remarks
     if sheet.side:
         understood.append(f"side channels of the log sheet ({', '.join(sheet.side)}) are not read by this version")
-    return SensorLog(source_of(rows), made, stamps, rate, tuple(understood))
+    return SensorLog(source_of(rows), made, stamps, rate, tuple(understood), tuple(table.restarts))
 
 
 def unit_flags(flags: Sequence[str], columns: Sequence[str] = ()) -> dict[str, str]:

@@ -1,13 +1,16 @@
 """Time stamps: which column, in which unit, as seconds from the first."""
 
 import re
+from collections.abc import Sequence
 from datetime import UTC, datetime
 
 import numpy as np
 
-from stillbench.foundation.arrays import BoolArray, FloatArray
+from stillbench.foundation.arrays import BoolArray, FloatArray, IntArray
 from stillbench.foundation.errors import ClockError, UnitError
+from stillbench.foundation.suggestions import plural
 from stillbench.foundation.units import TIME, parse_unit
+from stillbench.logs.dates import is_bare_date, is_iso, is_stamp, is_time_of_day, read_stamps_text
 from stillbench.logs.table import Table
 from stillbench.vocabulary.sensor_log import Stamps
 
@@ -16,13 +19,20 @@ UNIT_SECONDS = {"s": 1.0, "ms": 1e-3, "us": 1e-6, "ns": 1e-9, "unix": 1.0}
 UNIX_YEARS = (978_307_200.0, 2_145_916_800.0)
 """2001 to 2037: a bare number in this range can only be unix seconds."""
 
+WRITTEN = ("iso", "day-first", "month-first")
+"""Time units that say that the stamps are written dates."""
+POWERS_OF_TWO = tuple(2.0**bits for bits in (8, 12, 16, 20, 24, 31, 32, 48))
+POWERS_OF_TEN = tuple(10.0**power for power in range(2, 13))
+CLOCKS = (60.0, 3_600.0, 86_400.0, 604_800.0)
+"""Seconds at which clocks begin anew: the minute, the hour, the day, the week."""
+ROLL_STEPS = 20.0
+"""Usual steps that may be missing where a counter rolls over."""
 RESOLUTION_SAMPLE = 10_000
 FEW_ABSENT = 3
 ABSENT_SHARE = 1e-3
 """Rows without a stamp that are left out; with more the column is refused."""
 
 _SPLIT_HEAD = re.compile(r"^\s*(.*?)\s*(?:[\[(](.*?)[\])]|[_ ](s|ms|us|ns|sec|seconds|unix|utc))?\s*$", re.IGNORECASE)
-_ISO = re.compile(r"\s*\d{4}-\d{1,2}-\d{1,2}")
 _ZONED = re.compile(r"(?:Z|[+-]\d{2}:?\d{2})\s*$")
 
 
@@ -40,18 +50,18 @@ def _folded(name: str) -> str:
 
 
 def find_time_column(table: Table) -> int | None:
-    """Return the column whose head is time, timestamp, t, date, datetime, or one of these with a unit."""
-    if not table.has_heads:
-        return None
-    for index, head in enumerate(table.heads):
-        if _folded(split_head(head)[0]) in TIME_HEADS or _folded(head) in TIME_HEADS:
-            return index
-    return None
+    """Return the column whose head is time, timestamp, t, date, datetime, or one of these with a unit; or one of dates."""
+    if table.has_heads:
+        for index, head in enumerate(table.heads):
+            if _folded(split_head(head)[0]) in TIME_HEADS or _folded(head) in TIME_HEADS:
+                return index
+    # A column of dates can be nothing else.
+    return next((index for index in range(len(table.heads)) if is_stamp(table.first_text(index))), None)
 
 
-def unit_of_time(head: str) -> str | None:
-    """Return s, ms, us or ns when the head says so."""
-    text = split_head(head)[1]
+def unit_of_time(table: Table, index: int) -> str | None:
+    """Return s, ms, us or ns when the head, or the row of units below it, says so."""
+    text = split_head(table.heads[index])[1] or table.units[index]
     if text is None:
         return None
     if text.lower() in ("unix", "utc"):
@@ -89,27 +99,45 @@ def read_stamps(table: Table, index: int, declared: str | None) -> tuple[Stamps,
         When the stamps do not parse, or their unit is not known and cannot be told.
     """
     head = table.heads[index]
-    if declared == "iso" or (declared is None and _ISO.match(table.first_text(index))):
-        return _read_dates(table, index)
-    unit = declared or unit_of_time(head)
+    typed = table.instants(index) if declared is None else None
+    if typed is not None:
+        nanoseconds, absolute = typed
+        seconds = (nanoseconds - nanoseconds[0]) / 1e9
+        zone = "with zone" if absolute else "local time, no zone given"
+        stamps = Stamps(
+            seconds,
+            head,
+            "iso",
+            "absolute" if absolute else "local",
+            float(nanoseconds[0]) * 1e-9,
+            _resolution(seconds),
+        )
+        sentence = f"time from column {head!r}, date-times {zone}; override with --time and --time-unit"
+        return stamps, np.ones(seconds.size, dtype=bool), sentence
+    if declared in WRITTEN or (declared is None and is_stamp(table.first_text(index))):
+        return _read_dates(table, index, declared)
+    unit = declared or unit_of_time(table, index)
     (numbers,) = table.numbers([index])
     if not np.isfinite(numbers).any():
         raise ClockError(f"the time column {head!r} holds no numbers", "time stamps", "name another with --time")
     present = _present(~np.isnan(numbers), head)
     numbers = numbers if present.all() else numbers[present]
     said = "declared" if declared else f"its head says {unit}"
+    numbers, rolled = _unrolled(numbers, UNIT_SECONDS.get(unit or ""))
     if unit is None:
         unit, said = _guess_unit(numbers, head)
     scale = UNIT_SECONDS[unit]
-    seconds = (numbers - numbers[0]) * scale
     origin = float(numbers[0]) if unit == "unix" else None
     resolution = _resolution(numbers) * scale
+    seconds = numbers - numbers[0]
+    del numbers
+    seconds *= scale
     kind = "absolute" if unit == "unix" else "counter"
     stamps = Stamps(seconds, head, unit, kind, origin, resolution)  # type: ignore[arg-type]
     return (
         stamps,
         present,
-        f"time from column {head!r} in {_unit_words(unit)} ({said}); override with --time and --time-unit",
+        f"time from column {head!r} in {_unit_words(unit)} ({said}){rolled}; override with --time and --time-unit",
     )
 
 
@@ -161,19 +189,69 @@ def _resolution(numbers: FloatArray) -> float:
     return spacing
 
 
-def _read_dates(table: Table, index: int) -> tuple[Stamps, BoolArray, str]:
-    import pandas as pd  # noqa: PLC0415  heavy, wanted only for date-times
+def _unrolled(numbers: FloatArray, scale: float | None) -> tuple[FloatArray, str]:
+    """Undo the roll-over of a counter: falls from near a usual limit to near zero, all by the same; and say so."""
+    falls = np.flatnonzero(numbers[1:] < numbers[:-1])
+    if not falls.size:
+        return numbers, ""
+    steps = np.diff(numbers)
+    if not (steps > 0).any():
+        return numbers, ""
+    usual = float(np.median(steps[steps > 0]))
+    limits = [*POWERS_OF_TWO, *POWERS_OF_TEN]
+    if scale is not None:
+        limits += [clock / scale for clock in CLOCKS]
+    for limit in sorted(limits):
+        left = steps[falls] + limit
+        near = (left > 0) & (left <= ROLL_STEPS * usual)
+        if near.all() and float(numbers.max()) < limit and float(numbers.min()) >= 0:
+            turns = np.zeros(numbers.size)
+            turns[falls + 1] = limit
+            return numbers + np.cumsum(
+                turns
+            ), f", a counter that rolls over at {limit:.12g}, {plural(falls.size, 'time')}"
+    return numbers, ""
 
+
+def _read_dates(table: Table, index: int, declared: str | None) -> tuple[Stamps, BoolArray, str]:
     head = table.heads[index]
     cells = table.texts(index)
-    present = _present(np.array([bool(cell.strip()) and cell != "None" for cell in cells]), head)
+    # Date and time of day may stand in columns of their own, side by side.
+    beside = None
+    if is_bare_date(table.first_text(index)) and index + 1 < len(table.heads):
+        beside = index + 1 if is_time_of_day(table.first_text(index + 1)) else None
+    elif is_time_of_day(table.first_text(index)) and index > 0:
+        beside = index - 1 if is_bare_date(table.first_text(index - 1)) else None
+    if beside is not None:
+        first, second = min(index, beside), max(index, beside)
+        head = f"{table.heads[first]}, {table.heads[second]}"
+        dates, clocks = (cells, table.texts(second)) if first == index else (table.texts(first), cells)
+        cells = [f"{date} {clock}" for date, clock in zip(dates, clocks, strict=True)]
+    present = _present(np.array([bool(cell.strip()) and "None" not in cell for cell in cells]), head)
     texts = [cell for cell, there in zip(cells, present, strict=True) if there]
     zoned = bool(_ZONED.search(texts[0].strip())) and ":" in texts[0]
+    if declared == "iso" or (declared is None and is_iso(texts[0])):
+        nanoseconds, words = _iso_nanoseconds(texts, head), "date-times"
+    else:
+        nanoseconds, words = read_stamps_text(texts, declared, head)
+    seconds = (nanoseconds - nanoseconds[0]) / 1e9
+    kind = "absolute" if zoned else "local"
+    ahead = datetime.fromisoformat(texts[0].strip()).utcoffset() if zoned else None
+    offset = ahead.total_seconds() if ahead is not None else 0.0
+    stamps = Stamps(seconds, head, "iso", kind, float(nanoseconds[0]) * 1e-9, _resolution(seconds), offset)  # type: ignore[arg-type]
+    zone = f"with zone, the first {offset / 3600.0:+g} h of UTC" if zoned else "local time, no zone given"
+    where = f"columns {head!r}" if beside is not None else f"column {head!r}"
+    return stamps, present, f"time from {where}, {words} {zone}; override with --time and --time-unit"
+
+
+def _iso_nanoseconds(texts: Sequence[str], head: str) -> IntArray:
+    import pandas as pd  # noqa: PLC0415  heavy, wanted only for date-times
+
     try:
         times = pd.to_datetime(pd.Series(texts, dtype="str"), format="ISO8601", utc=True)
     except (ValueError, OverflowError) as error:
         for row, text in enumerate(texts, start=1):
-            if not _ISO.match(text):
+            if not is_iso(text):
                 raise ClockError(
                     f"row {row} of the time column {head!r} holds {text[:40]!r}",
                     "an ISO date-time such as 2025-03-01 22:15:00.25",
@@ -184,11 +262,4 @@ def _read_dates(table: Table, index: int) -> tuple[Stamps, BoolArray, str]:
     if times.isna().any():
         row = int(np.flatnonzero(times.isna().to_numpy())[0]) + 1
         raise ClockError(f"row {row} of the time column {head!r} is empty", "a stamp in every row")
-    nanoseconds = times.astype("datetime64[ns, UTC]").astype("int64").to_numpy()
-    seconds = (nanoseconds - nanoseconds[0]) / 1e9
-    kind = "absolute" if zoned else "local"
-    ahead = datetime.fromisoformat(texts[0].strip()).utcoffset() if zoned else None
-    offset = ahead.total_seconds() if ahead is not None else 0.0
-    stamps = Stamps(seconds, head, "iso", kind, float(nanoseconds[0]) * 1e-9, _resolution(seconds), offset)  # type: ignore[arg-type]
-    zone = f"with zone, the first {offset / 3600.0:+g} h of UTC" if zoned else "local time, no zone given"
-    return stamps, present, f"time from column {head!r}, date-times {zone}; override with --time and --time-unit"
+    return np.asarray(times.astype("datetime64[ns, UTC]").astype("int64"), dtype=np.int64)

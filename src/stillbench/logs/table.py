@@ -3,7 +3,7 @@
 from abc import ABC, abstractmethod
 from collections.abc import Sequence
 
-from stillbench.foundation.arrays import FloatArray
+from stillbench.foundation.arrays import FloatArray, IntArray
 from stillbench.foundation.errors import ColumnError
 from stillbench.foundation.suggestions import did_you_mean, listed
 
@@ -21,6 +21,14 @@ class Table(ABC):
         What the file was understood to be.
     remarks : list of str
         What the reader passed over or concluded.
+    units : list of str or None
+        What the file itself says of each column's unit; it is offered, never taken without being confirmed.
+    empty : frozenset of int
+        Columns without a value.
+    restarts : list of int
+        Rows (from 0) before which the logger was started again; complete once the numbers were read.
+    rate : float or None
+        Hz, where the file itself says so.
     """
 
     def __init__(self, heads: Sequence[str], format_: str, *, has_heads: bool) -> None:
@@ -28,6 +36,10 @@ class Table(ABC):
         self.has_heads = has_heads
         self.format = format_
         self.remarks: list[str] = []
+        self.units: list[str | None] = [None] * len(self.heads)
+        self.empty: frozenset[int] = frozenset()
+        self.restarts: list[int] = []
+        self.rate: float | None = None
 
     def expect(self, indices: Sequence[int]) -> None:  # noqa: B027  most readers need not know
         """Say which columns will be asked for as numbers, so that a reader may take them in one pass over the file."""
@@ -35,6 +47,22 @@ class Table(ABC):
     @abstractmethod
     def numbers(self, indices: Sequence[int]) -> list[FloatArray]:
         """Return columns as float64, empty cells as NaN."""
+
+    def edge_rows(self, count: int) -> tuple[list[list[str]], list[list[str]]]:
+        """Return the first and the last rows as text, for the eye."""
+        columns = []
+        for index in range(len(self.heads)):
+            texts = self.texts(index)
+            columns.append([*texts[:count], *texts[-count:]])
+        rows = [list(row) for row in zip(*columns, strict=True)]
+        return rows[:count], rows[len(rows) - min(count, len(rows)) :]
+
+    def instants(self, index: int) -> tuple[IntArray, bool] | None:  # noqa: ARG002  for those that have a type for it
+        """Return a column of date-times as nanoseconds from 1970 and whether they are UTC; None for any other column."""
+        return None
+
+    def close(self) -> None:  # noqa: B027  most readers hold nothing open
+        """Let go of files and processes."""
 
     @abstractmethod
     def texts(self, index: int) -> Sequence[str]:

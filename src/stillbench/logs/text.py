@@ -5,6 +5,7 @@ import itertools
 import mmap
 import re
 from collections.abc import Iterator, Sequence
+from typing import Any
 
 import numpy as np
 
@@ -12,6 +13,7 @@ from stillbench.foundation.arrays import FloatArray
 from stillbench.foundation.errors import CellError, LogError
 from stillbench.foundation.suggestions import plural
 from stillbench.logs.contents import Contents
+from stillbench.logs.formats import Format
 from stillbench.logs.layout import (
     SAMPLE_BYTES,
     SAMPLE_LINES,
@@ -22,12 +24,14 @@ from stillbench.logs.layout import (
     is_number,
     split_cells,
 )
+from stillbench.logs.lines import matching_rows, pattern_of
 from stillbench.logs.table import Table
 from stillbench.vocabulary.log_sheet import LogSection
 
 NULLS = ("", "nan", "NaN", "NAN", "-nan", "-NaN", "null", "NULL", "None", "NA", "N/A", "n/a", "#N/A", "-", "--")
 _BLANKS = re.compile(rb"[ \t]+")
 _EDGE_BLANKS = re.compile(rb"(?m)^[ \t]+|[ \t]+(?=\r?$)")
+_ROWS = re.compile(rb"(?m)^[^\r\n]*[^\s][^\r\n]*")
 _COMMENT_LINES = re.compile(rb"(?m)^[ \t]*(?:#|%|!|//).*(?:\r?\n|\r|$)")
 MISFITS = 3
 MISFIT_SHARE = 1e-3
@@ -50,6 +54,7 @@ class TextTable(Table):
 
     def __init__(self, contents: Contents, section: LogSection) -> None:
         self.name = contents.name
+        self._path = contents.path
         raw = contents.data
         sample = raw[:SAMPLE_BYTES]
         encoding = section.encoding or find_encoding(sample, contents.name)
@@ -57,25 +62,38 @@ class TextTable(Table):
         if encoding.lower().replace("_", "-") in ("utf-8", "utf8", "ascii", "us-ascii"):
             encoding = "utf-8"
         elif encoding == "utf-8-sig":
-            self._bytes = raw[3:]
+            self._bytes, self._path = raw[3:], None
         else:
             self._bytes = self._transcode(raw[:], encoding, contents.name)
         if b"\r" in self._bytes[:SAMPLE_BYTES] and b"\n" not in self._bytes[:SAMPLE_BYTES]:
             self._bytes = self._bytes[:].replace(b"\r", b"\n")  # lines ended in the old way
-        lines = self._bytes[:SAMPLE_BYTES].decode("utf-8", "replace").splitlines()
+        remarks = []
+        if section.line_pattern is not None:
+            whole = self._bytes[:].decode("utf-8", "replace")
+            rows, remark = matching_rows(whole, pattern_of(section.line_pattern), contents.name)
+            self._bytes = rows.encode()
+            remarks.append(remark)
+            section = section.model_copy(update={"delimiter": "tab", "head_lines": None})
+        # Lines end where the library reader ends them, whatever else may stand in a cell.
+        lines = [line.rstrip("\r") for line in self._bytes[:SAMPLE_BYTES].decode("utf-8", "replace").split("\n")]
         if len(self._bytes) > SAMPLE_BYTES:
             lines = lines[:-1]  # the last one is cut
         self.layout: Layout = find_layout(lines[:SAMPLE_LINES], encoding, section, contents.name)
         heads = self.layout.heads or [str(i + 1) for i in range(self.layout.columns)]
         wrapping = f", {contents.wrapping}" if contents.wrapping else ""
         super().__init__(heads, self.layout.words + wrapping, has_heads=self.layout.heads is not None)
+        self.remarks += remarks
+        self.units = [cell.strip("[]() ") or None for cell in self.layout.units or [""] * self.layout.columns]
         self._missing = (*NULLS, *section.missing)
+        self._marks = [number for text in section.missing if np.isfinite(number := _float(text, self.layout.decimal))]
+        self._sample = lines[self.layout.body_line : SAMPLE_LINES]
+        self.empty = self._empty_columns()
+        self._head = [line.strip().encode() for line in lines[: self.layout.body_line] if not is_comment(line)]
         self._body = self._find_body()
         self._expected: list[int] = []
         self._waiting: dict[int, object] = {}
         self._clean = False
         self._numbered = False
-        self._sample = lines[self.layout.body_line : SAMPLE_LINES]
 
     @staticmethod
     def _transcode(raw: bytes, encoding: str, name: str) -> bytes:
@@ -85,6 +103,13 @@ class TextTable(Table):
             raise LogError(
                 f"{name!r} does not decode as {encoding}: {error}", "text in one encoding", "name it in the log sheet"
             ) from error
+
+    def _empty_columns(self) -> frozenset[int]:
+        """Columns in which no row of the sample has anything."""
+        rows = [split_cells(line, self.layout.delimiter) for line in self._sample if not is_comment(line)]
+        return frozenset(
+            i for i in range(self.layout.columns) if not any(row[i] for row in rows if len(row) == self.layout.columns)
+        )
 
     def _find_body(self) -> memoryview:
         """Return the bytes from the first row of data on."""
@@ -96,8 +121,41 @@ class TextTable(Table):
             offset = end + 1
         body = memoryview(self._bytes)[offset:]
         if self.layout.delimiter == " ":
+            if self._comes_again(offset):
+                body = self._without_heads(bytes(body))
             body = memoryview(_BLANKS.sub(b"\t", _EDGE_BLANKS.sub(b"", bytes(body))))
+            self._head = []
         return body
+
+    def _comes_again(self, offset: int) -> bool:
+        return bool(self.layout.heads and self._head) and self._bytes.find(self._head[-1], offset) >= 0
+
+    def _take_heads_out(self) -> bool:
+        """Take the head out of the rows where it comes again, once; whether it did."""
+        offset = len(self._bytes) - len(self._body)
+        if self._clean or not self._comes_again(offset):
+            return False
+        self._body = self._without_heads(bytes(self._body))
+        self._head = []
+        return bool(self.restarts)
+
+    def _without_heads(self, body: bytes) -> memoryview:
+        """Take out the head where it comes again: the logger was started again there."""
+        lines = b"|".join(re.escape(line) for line in sorted(set(self._head), key=len, reverse=True))
+        parts, done = [], 0
+        for match in re.finditer(rb"(?m)(?:^[ \t]*(?:" + lines + rb")[ \t\r]*(?:\n|\Z))+", body):
+            parts.append(body[done : match.start()])
+            done = match.end()
+            row = sum(len(_ROWS.findall(part)) for part in parts[-1:]) + (self.restarts[-1] if self.restarts else 0)
+            self.restarts.append(row)
+        parts.append(body[done:])
+        if self.restarts:
+            where = ", ".join(str(row + 1) for row in self.restarts[:5])
+            self.remarks.append(
+                f"the head comes again {plural(len(self.restarts), 'time')} (before row {where}): the logger was started"
+                " again there"
+            )
+        return memoryview(b"".join(parts))
 
     def _convert(self, indices: Sequence[int], *, as_text: bool) -> list[object]:
         """Convert columns by the library reader; rows that do not fit are refused, but for a torn last line."""
@@ -110,6 +168,8 @@ class TextTable(Table):
             misfits.append((row.number or 0, row.text))
             return "skip"
 
+        if as_text:
+            self._take_heads_out()
         numbered = as_text or self._numbered
 
         names = [str(i) for i in range(self.layout.columns)]
@@ -117,7 +177,7 @@ class TextTable(Table):
         delimiter = "\t" if self.layout.delimiter == " " else self.layout.delimiter
         try:
             table = csv.read_csv(
-                pa.BufferReader(pa.py_buffer(self._body)),
+                self._stream(),
                 read_options=csv.ReadOptions(column_names=names, use_threads=not numbered),
                 parse_options=csv.ParseOptions(delimiter=delimiter, invalid_row_handler=misfit),
                 convert_options=csv.ConvertOptions(
@@ -130,6 +190,8 @@ class TextTable(Table):
                 ),
             )
         except pa.ArrowInvalid as error:
+            if self._take_heads_out():
+                return self._convert(indices, as_text=as_text)
             if not self._clean and _COMMENT_LINES.search(self._body):
                 return self._without_comments(indices, as_text=as_text)
             self._explain(indices, error)
@@ -141,6 +203,16 @@ class TextTable(Table):
             return self._convert(indices, as_text=as_text)
         columns = [table.column(str(i)) for i in indices]
         return self._with_holes(columns, true_misfits) if true_misfits else columns
+
+    def _stream(self) -> Any:  # noqa: ANN401  of the library
+        """Return the rows of data: from the file itself where they stand there as they are, so that no page is mapped twice."""
+        import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
+
+        if self._path is None or not isinstance(self._bytes, mmap.mmap) or self._body.obj is not self._bytes:
+            return pa.BufferReader(pa.py_buffer(self._body))
+        file = pa.OSFile(str(self._path))
+        file.seek(len(self._bytes) - len(self._body))
+        return file
 
     def _without_comments(self, indices: Sequence[int], *, as_text: bool) -> list[object]:
         self._body = memoryview(_COMMENT_LINES.sub(b"", bytes(self._body)))
@@ -251,8 +323,11 @@ class TextTable(Table):
             column = columns.pop(0)
             if not isinstance(column, pa.ChunkedArray):
                 raise TypeError(type(column))
-            arrays.append(np.asarray(column.to_numpy(), dtype=np.float64))
+            array = np.asarray(column.to_numpy(), dtype=np.float64)
             del column
+            for mark in self._marks:  # however it is written in the file
+                array[array == mark] = np.nan
+            arrays.append(array)
         pa.default_memory_pool().release_unused()
         return arrays
 
@@ -264,6 +339,15 @@ class TextTable(Table):
             raise TypeError(type(column))
         return [str(value) for value in column.to_pylist()]
 
+    def edge_rows(self, count: int) -> tuple[list[list[str]], list[list[str]]]:
+        delimiter = "\t" if self.layout.delimiter == " " else self.layout.delimiter
+        edges = []
+        for part in (self._body[:SAMPLE_BYTES], self._body[-SAMPLE_BYTES:]):
+            lines = [line for line in bytes(part).decode("utf-8", "replace").splitlines() if not is_comment(line)]
+            rows = [split_cells(line, delimiter) for line in lines]
+            edges.append([row for row in rows if len(row) == self.layout.columns])
+        return edges[0][:count], edges[1][-count:]
+
     def first_text(self, index: int) -> str:
         first = bytes(self._body[:SAMPLE_BYTES]).decode("utf-8", "replace").splitlines()
         delimiter = "\t" if self.layout.delimiter == " " else self.layout.delimiter
@@ -272,3 +356,6 @@ class TextTable(Table):
                 cells = split_cells(line, delimiter)
                 return cells[index] if index < len(cells) else ""
         return ""
+
+
+FORMAT = Format(("text",), lambda _: True, TextTable)

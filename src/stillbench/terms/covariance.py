@@ -142,7 +142,7 @@ def curve_products(
 
     V_ij = sum_st theta_s theta_t C_stij,  C_stij = 2/(M_i M_j) sum over runs and lags of (pairs at that lag) R_s,ij(l) R_t,ij(l).
 
-    Lags are strided by a twelfth of the shorter factor and reach eight of the longer beyond the ends of both differences.
+    Lags are strided by a twelfth of the shorter factor and reach eight of the longer to both sides.
 
     Parameters
     ----------
@@ -165,11 +165,15 @@ def curve_products(
     pairs = np.array([[max(0, n - 2 * m + 1) for n in run_lengths] for m in factors], dtype=float)
     for i, first in enumerate(factors):
         for j, second in enumerate(factors[i:], start=i):
+            # R is even about the lag at which both differences have the same middle: half of it will do.
             stride = max(1, min(first, second) // 12, max(first, second) // 768)
             reach = REACH * max(first, second)
-            lags = np.unique(np.concatenate([np.arange(-reach, reach + 1, stride), [0, second - first]])).astype(float)
-            edges = np.concatenate([[lags[0] - 0.5], (lags[1:] + lags[:-1]) / 2.0, [lags[-1] + 0.5]])
-            weights = np.diff(edges) * _overlap(pairs[i], pairs[j], lags)
+            apart = np.unique(np.concatenate([np.arange(0, reach + 1, stride), [reach]])).astype(float)
+            edges = np.concatenate([[0.0], (apart[1:] + apart[:-1]) / 2.0, [reach + 0.5]])
+            lags = second - first + apart
+            weights = np.diff(edges) * (
+                _overlap(pairs[i], pairs[j], lags) + _overlap(pairs[i], pairs[j], second - first - apart)
+            )
             courses = np.array([cross_covariance(terms[s], first, second, lags) for s in smooth])
             sums = np.zeros((len(terms), len(terms)))
             if smooth.size:

@@ -17,19 +17,27 @@ class Section(BaseModel):
 class LogSection(Section):
     """How the file is laid out, where that is not to be found out by looking."""
 
-    format: Literal["text", "npy", "npz"] | None = None
+    format: Text | None = None
     encoding: Text | None = None
     delimiter: Literal[",", ";", "\t", " ", "tab", "blank"] | None = None
     decimal: Literal[".", ","] | None = None
     head_lines: Annotated[int, Field(ge=0)] | None = None
     missing: tuple[str, ...] = ()
+    line_pattern: Text | None = None
+    dataset: Text | None = None
+    sample_type: Literal["int8", "int16", "int24", "int32", "float32", "float64"] | None = None
+    byte_order: Literal["little", "big"] = "little"
+    interleaved: Annotated[int, Field(ge=1, le=4096)] | None = None
+    head_bytes: Annotated[int, Field(ge=0)] | None = None
+    offset_binary: bool = False
+    bits: Annotated[int, Field(ge=1, le=32)] | None = None
 
 
 class ClockSection(Section):
     """Where the time comes from."""
 
     column: Column | None = None
-    unit: Literal["s", "ms", "us", "ns", "iso", "unix"] | None = None
+    unit: Literal["s", "ms", "us", "ns", "iso", "unix", "day-first", "month-first"] | None = None
     rate: float | None = None
 
 

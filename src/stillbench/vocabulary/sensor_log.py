@@ -99,6 +99,8 @@ class SensorLog:
         Declared sampling rate, Hz.
     understood : tuple of str
         What was concluded from the file, each with the flag that overrides it.
+    restarts : tuple of int
+        Rows (from 0) before which the logger was started again; without stamps the time between is not known.
     """
 
     source: Source
@@ -106,3 +108,4 @@ class SensorLog:
     stamps: Stamps | None
     rate: float | None
     understood: tuple[str, ...] = field(default=())
+    restarts: tuple[int, ...] = ()
