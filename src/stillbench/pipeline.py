@@ -26,6 +26,7 @@ from stillbench.logs.clock import Grid, audit_clock
 from stillbench.logs.cut import cut_record
 from stillbench.logs.front_end import convert
 from stillbench.logs.read import read_log
+from stillbench.logs.side import aligned
 from stillbench.screening.converter import REFUSED
 from stillbench.screening.screen import levels_differ, screen
 from stillbench.version import __version__
@@ -35,6 +36,7 @@ from stillbench.vocabulary.characterization import (
     Characterization,
     Provenance,
     Setting,
+    SideSummary,
     Timeline,
 )
 from stillbench.vocabulary.log_sheet import LogSheet
@@ -42,12 +44,13 @@ from stillbench.vocabulary.noise_model import NoiseModel, NoiseTerm
 from stillbench.vocabulary.quantity import QUANTITIES, Quantity
 from stillbench.vocabulary.record import Record
 from stillbench.vocabulary.screened_record import ScreenedRecord
-from stillbench.vocabulary.sensor_log import SensorLog
+from stillbench.vocabulary.sensor_log import SensorLog, SideSeries
 from stillbench.vocabulary.specification import Specification
 
 LIBRARIES = ("numpy", "scipy", "pandas", "pyarrow")
 """Those whose version can move a number."""
 TIMELINE_SPANS = 900
+SIDE_PROBES = 10_000
 COVERAGES = (0.5, 0.999)
 CLIPPED_PERCENT = 0.1
 """Of the samples at the rails from which the white noise reads low by more than its error in a night."""
@@ -61,7 +64,14 @@ def load_log_sheet(path: Path) -> LogSheet:
     TextFileError
         With all faults, their lines and nearest names.
     """
-    return load_toml(path, LogSheet, "log sheet")
+    sheet = load_toml(path, LogSheet, "log sheet")
+    # Files that a sheet names lie beside it.
+    beside = {
+        name: section.model_copy(update={"file": str(path.parent / section.file)})
+        for name, section in sheet.side.items()
+        if section.file is not None and (path.parent / section.file).exists()
+    }
+    return sheet.model_copy(update={"side": {**sheet.side, **beside}}) if beside else sheet
 
 
 def characterize(
@@ -325,7 +335,36 @@ def _characterize_record(
         relative,
         record.front_end.text if record.front_end else "",
         unscreened,
+        {series.name: _side_summary(series, record) for series in record.side},
     )
+
+
+def _side_summary(series: SideSeries, record: Record) -> SideSummary:
+    """Course of a side channel over the record, and the share of the record that it supports."""
+    times = np.concatenate(
+        [run.start + np.array([0, run.n_samples - 1]) * record.sample_interval for run in record.runs]
+    )
+    probes = np.concatenate(
+        [
+            np.linspace(first, last, max(2, round(SIDE_PROBES * (last - first) / max(record.duration, 1e-9))))
+            for first, last in times.reshape(-1, 2)
+        ]
+    )
+    covered = float(np.isfinite(aligned(series, probes)).mean())
+    inside = (series.seconds >= times[0]) & (series.seconds <= times[-1]) & np.isfinite(series.values)
+    seconds, values = series.seconds[inside], series.values[inside]
+    empty = np.empty(0)
+    if not values.size:
+        return SideSummary(series.unit.si_text, series.unit.text, covered, Timeline(empty, empty, empty, empty))
+    starts = np.unique(np.linspace(0, values.size, min(TIMELINE_SPANS, values.size), endpoint=False).astype(np.int64))
+    counts = np.diff(np.append(starts, values.size))
+    course = Timeline(
+        np.add.reduceat(seconds, starts) / counts,
+        np.minimum.reduceat(values, starts),
+        np.add.reduceat(values, starts) / counts,
+        np.maximum.reduceat(values, starts),
+    )
+    return SideSummary(series.unit.si_text, series.unit.text, covered, course)
 
 
 def _poor(found: Identification) -> bool:
@@ -333,7 +372,7 @@ def _poor(found: Identification) -> bool:
 
 
 def _bias(record: Record, found: Identification, z: float, *, same_level: bool) -> tuple[Bias, float]:
-    """Mean of the log (of its longest run where the sensor was turned), with the Allan deviation at the length of the log.
+    """Mean of the log (of its longest run where the sensor was turned) less the known input, with the deviation at its length.
 
     For white noise that is the standard error of the mean. Flicker and walk move the mean itself from one log to the next,
     by root two times this.
@@ -345,7 +384,7 @@ def _bias(record: Record, found: Identification, z: float, *, same_level: bool) 
         values = values[~absent] if absent.any() else values
         total += float(np.sum(values - origin))
         count += values.size
-    mean = float(origin + total / count)
+    mean = float(origin + total / count) - record.known_input
     error = found.fitted.amplitude(found.fitted.variance_weights(count))
     return Bias(mean, mean - z * error, mean + z * error), error
 

@@ -13,6 +13,7 @@ from stillbench.foundation.errors import ClockError, LogError
 from stillbench.pipeline import characterize
 from stillbench.report.render import render_report
 from stillbench.vocabulary.characterization import ChannelResult
+from stillbench.vocabulary.log_sheet import LogSheet
 
 Find = Callable[[str], Path]
 
@@ -126,3 +127,52 @@ def test_still_34s_has_an_empty_stamp_and_says_so(real_log: Find) -> None:
         characterize(path, channels=["IMU::UncompGyro::X [rad/s]"], unit="rad/s")
     channel = only(path, channels=["IMU::UncompGyro::X [rad/s]"], unit="rad/s", time="none", rate=20)
     assert channel.duration == pytest.approx(34, abs=1)
+
+
+def test_side_channels_of_reference_adc_5h_and_reference_box_18h(real_log: Find) -> None:
+    """`room.csv` is a second file with its own clock: degC and %RH once a second; temperature in the room, not outside."""
+    for name, column, unit in (
+        ("reference_adc_5h/counts.csv", "counts", "count"),
+        ("reference_box_18h/microvolts.csv", "microvolts", "uV"),
+    ):
+        path = real_log(name)
+        sheet = LogSheet.model_validate(
+            {
+                "channel": {column: {"unit": unit}},
+                "side": {"temperature": {"file": str(path.with_name("room.csv")), "column": "temp_c", "unit": "degC"}},
+            }
+        )
+        channel = only(path, log_sheet=sheet)
+        summary = channel.side["temperature"]
+        assert summary.covered > 0.99
+        assert 273.15 + 20 < summary.course.minimum.min() < summary.course.maximum.max() < 273.15 + 32
+
+
+def test_one_device_out_of_five_devices_60s(real_log: Find) -> None:
+    """Each sends about 24.9 times a second; the fourth cell is a count of microseconds within the second."""
+    sheet = LogSheet.model_validate(
+        {"log": {"line_pattern": r"^3,\d+,(?P<time>\d+),\d+,(?P<x>-?\d+),(?P<y>-?\d+),(?P<z>-?\d+),"}}
+    )
+    channel = only(
+        real_log("five_devices_60s/serial_capture.txt"), log_sheet=sheet, channels=["z"], unit="count", time_unit="us"
+    )
+    assert 1 / channel.sample_interval == pytest.approx(24.9, abs=0.2)
+    assert channel.duration == pytest.approx(60, abs=2)
+    assert channel.n_samples == pytest.approx(24.9 * 60, rel=0.02)
+
+
+def test_still_10min_is_read_from_mat_7_3(real_log: Find) -> None:
+    """Row 0 is time in s; bursts: the median step is 2 ms though the mean rate is 99.3 Hz; 9 to 13 mdeg/s/sqrt(Hz) (Allan sense)."""
+    channel = only(
+        real_log("still_10min/gyroscope.mat"),
+        channels=["gyroBuffer.2"],
+        unit="deg/s",
+        time="gyroBuffer.1",
+        time_unit="s",
+    )
+    assert 1 / channel.sample_interval == pytest.approx(99.3, abs=0.1)
+    assert channel.duration == pytest.approx(655, abs=1)
+    assert "clock_jitter" in kinds(channel)
+    white = channel.noise.terms["angle_random_walk"]
+    assert white.coefficient is not None
+    assert 0.009 < np.degrees(white.coefficient) < 0.013

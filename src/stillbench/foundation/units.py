@@ -95,6 +95,13 @@ class Unit:
         return (value - self.offset) / self.factor
 
     @property
+    def si_text(self) -> str:
+        """The SI unit of this dimension, or this unit where it is SI itself."""
+        return {TEMPERATURE: "K", VOLTAGE: "V", RATE: "rad/s", ACCELERATION: "m/s^2", PRESSURE: "Pa", RATIO: "1"}.get(
+            self.dimension, self.text if self.factor == 1.0 else f"{self.factor:g} {self.text}"
+        )
+
+    @property
     def printed(self) -> str:
         """The unit for a printed page: degree, micro, root and power signs."""
         text = self.text.replace("degC", "\N{DEGREE SIGN}C")

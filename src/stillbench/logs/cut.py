@@ -1,7 +1,9 @@
 """cut_record: one channel of a log on its even grid, in SI, between the instants that are wanted."""
 
 import itertools
+import math
 from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
 
@@ -11,9 +13,18 @@ from stillbench.foundation.suggestions import plural
 from stillbench.logs.clock import Grid, audit_clock
 from stillbench.logs.front_end import convert
 from stillbench.logs.runs import CARRIED_SHARE, SHORTEST_RUN, build_runs, hole_limit
+from stillbench.logs.site import (
+    EARTH_RATE,
+    earth_rate_along,
+    gravity_along,
+    normal_gravity,
+    parse_attitude,
+    parse_latitude,
+)
 from stillbench.logs.spans import Instants, within
 from stillbench.vocabulary.finding import Finding
-from stillbench.vocabulary.log_sheet import LogSheet
+from stillbench.vocabulary.log_sheet import ChannelSection, LogSheet
+from stillbench.vocabulary.quantity import ACCELERATION, ANGULAR_RATE
 from stillbench.vocabulary.record import Clock, Record
 from stillbench.vocabulary.sensor_log import SensorLog
 
@@ -92,6 +103,8 @@ def cut_record(
             )
         )
     use = wanted & finite
+    if channel.reference is not None:
+        use &= np.isfinite(channel.reference) & (channel.reference != 0)
     largest = max(float(channel.values.max(where=use, initial=0.0)), -float(channel.values.min(where=use, initial=0.0)))
     if largest > LARGEST_READING:
         raise LogError(
@@ -100,8 +113,12 @@ def cut_record(
             'if it marks missing data, list it as missing = ["..."] under [log] in a log sheet',
         )
     chosen = slice(None) if use.all() else use  # all of it needs no copy
+    reference = channel.reference[chosen] if channel.reference is not None else None
     values, missing, runs, dropped = build_runs(
-        conversion.apply(channel.values[chosen]), grid.index[chosen], grid.segment[chosen], grid.seconds[chosen]
+        conversion.apply(channel.values[chosen], reference),
+        grid.index[chosen],
+        grid.segment[chosen],
+        grid.seconds[chosen],
     )
     if not runs:
         raise RecordTooShortError(int(np.count_nonzero(use)), SHORTEST_RUN, "any estimate")
@@ -110,7 +127,7 @@ def cut_record(
     gaps = [after[0] - before[1] for before, after in itertools.pairwise(spans)]
     absent = _absent(grid, wanted)
     clock = Clock(grid.source, grid.jitter, max([0.0, *gaps]), absent, spans)
-    return Record(
+    record = Record(
         label,
         conversion.quantity.name,
         conversion.unit.text,
@@ -121,10 +138,47 @@ def cut_record(
         clock,
         channel.kind == "increment",
         conversion.front_end,
-        tuple(findings),
+        (),
         conversion.limits,
         log.source.rows,
+        _known_input(sheet, section, conversion.quantity.name, findings),
+        conversion.step,
+        log.side,
     )
+    return replace(record, findings=tuple(findings))
+
+
+def _known_input(sheet: LogSheet, section: ChannelSection | None, quantity: str, findings: list[Finding]) -> float:
+    """Return what the sensor feels at rest by latitude and attitude, SI, and say so as a finding."""
+    where, conditions = section.attitude if section else None, sheet.conditions
+    attitude = parse_attitude(where or conditions.attitude or "")
+    if conditions.latitude is None or attitude is None:
+        return 0.0
+    latitude = parse_latitude(conditions.latitude)
+    spoken = where or conditions.attitude
+    if quantity == ANGULAR_RATE.name:
+        value = earth_rate_along(latitude, *attitude)
+        shown, source, degree = f"{math.degrees(value) * 3600.0:+.4f} deg/h", "Earth rate", EARTH_RATE
+        slope = f"{math.degrees(degree) * 3600.0 * math.radians(1.0):.2f} deg/h"
+    elif quantity == ACCELERATION.name:
+        value = gravity_along(latitude, attitude[0])
+        shown, source = f"{value:+.6f} m/s^2", "normal gravity (WGS 84)"
+        slope = f"{normal_gravity(latitude) * math.radians(1.0):.3f} m/s^2"
+    else:
+        return 0.0
+    findings.append(
+        Finding(
+            "earth_rate",
+            None,
+            None,
+            value,
+            "rad/s" if quantity == ANGULAR_RATE.name else "m/s^2",
+            excluded=False,
+            because=f"{source} along the input axis ({spoken}, latitude {conditions.latitude}) is {shown}",
+            disposition=f"taken off the bias; a degree of attitude is worth up to {slope}",
+        )
+    )
+    return value
 
 
 def _chosen(

@@ -15,11 +15,12 @@ from stillbench.logs.arrays import ArrayTable, columns_of
 from stillbench.logs.contents import open_contents
 from stillbench.logs.formats import read_table
 from stillbench.logs.joined import JoinedTable
+from stillbench.logs.side import side_file, side_series
 from stillbench.logs.stamps import find_time_column, read_stamps, split_head
 from stillbench.logs.table import Table
 from stillbench.logs.text import TextTable
 from stillbench.vocabulary.log_sheet import LogSheet
-from stillbench.vocabulary.sensor_log import Channel, SensorLog, Source
+from stillbench.vocabulary.sensor_log import Channel, SensorLog, SideSeries, Source, Stamps
 
 FEWEST_ROWS = 16
 SPREADSHEET_SUFFIXES = (".xlsx", ".xls", ".ods", ".xlsm")
@@ -71,6 +72,11 @@ def time_column(table: Table, given: str | int | None, sheet: LogSheet) -> int |
     if column is None:
         return find_time_column(table)
     return None if str(column).lower() == "none" else table.index_of(column)
+
+
+def _folder_of(log: Any) -> Path | None:  # noqa: ANN401  whatever was handed in
+    first = log[0] if _is_files(log) else log
+    return Path(first).parent if isinstance(first, str | Path) else None
 
 
 def _is_files(log: Any) -> bool:  # noqa: ANN401  whatever was handed in
@@ -223,7 +229,7 @@ def read_log(
     check_rate(rate)
     table, source_of = open_log(log, sheet, name)
     try:
-        return _read(table, source_of, sheet, channels, units, rate, time, time_unit)
+        return _read(table, source_of, sheet, channels, units, rate, time, time_unit, _folder_of(log))
     finally:
         table.close()
 
@@ -237,6 +243,7 @@ def _read(
     rate: float | None,
     time: str | int | None,
     time_unit: str | None,
+    folder: Path | None,
 ) -> SensorLog:
     """Choose the columns and read them."""
     understood = [table.format]
@@ -248,7 +255,9 @@ def _read(
     chosen = _chosen(table, sheet, channels, units, time_index)
     spoken = {label: _unit_for(label, table, index, sheet, units) for label, index in chosen}
     stamps, present = None, None
-    table.expect([index for _, index in chosen])
+    references = _references(table, sheet, [label for label, _ in chosen])
+    wanted = [*(index for _, index in chosen), *references.values()]
+    table.expect(wanted)
     if time_index is not None:
         stamps, present, sentence = read_stamps(table, time_index, time_unit or sheet.clock.unit)
         understood.append(sentence)
@@ -263,7 +272,7 @@ def _read(
             "name the column with --time NAME (and --time-unit), or give --rate HZ",
         )
     _refuse_interleaved(table)
-    columns = table.numbers([index for _, index in chosen])
+    columns = table.numbers(list(dict.fromkeys(wanted)))
     if present is not None and not present.all():
         columns = [column[present] for column in columns]
         understood.append(f"{plural(int((~present).sum()), 'row')} without a stamp left out")
@@ -271,13 +280,52 @@ def _read(
     if rows < FEWEST_ROWS:
         raise LogError(f"the log has {rows} rows", f"at least {FEWEST_ROWS}", "log for longer")
     kinds = {label: sheet.channel[label].kind if label in sheet.channel else "rate" for label, _ in chosen}
+    by_index = dict(zip(dict.fromkeys(wanted), columns, strict=True))
+    del columns
     made = tuple(
-        Channel(label, values, spoken[label], kinds[label]) for (label, _), values in zip(chosen, columns, strict=True)
+        Channel(
+            label,
+            by_index[index],
+            spoken[label],
+            kinds[label],
+            by_index[references[label]] if label in references else None,
+        )
+        for label, index in chosen
     )
+    by_index.clear()
     understood += table.remarks
-    if sheet.side:
-        understood.append(f"side channels of the log sheet ({', '.join(sheet.side)}) are not read by this version")
-    return SensorLog(source_of(rows), made, stamps, rate, tuple(understood), tuple(table.restarts))
+    side = _side(table, sheet, stamps, rate, rows, folder)
+    return SensorLog(source_of(rows), made, stamps, rate, tuple(understood), tuple(table.restarts), side)
+
+
+def _references(table: Table, sheet: LogSheet, labels: Sequence[str]) -> dict[str, int]:
+    """Columns of the references of ratiometric outputs, by channel."""
+    found = {}
+    for label in labels:
+        section = sheet.channel.get(label)
+        if section is not None and section.front_end is not None and section.front_end.reference is not None:
+            found[label] = table.index_of(section.front_end.reference)
+    return found
+
+
+def _side(
+    table: Table, sheet: LogSheet, stamps: Stamps | None, rate: float | None, rows: int, folder: Path | None
+) -> tuple[SideSeries, ...]:
+    """Side channels of the log sheet, each from the log itself or from a file of its own."""
+    made = []
+    opened: dict[Path, Table] = {}
+    try:
+        for name, section in sheet.side.items():
+            path = side_file(section, folder)
+            if path is not None and path not in opened:
+                opened[path] = _open_table(path, LogSheet())[0]
+            seconds = stamps.seconds if stamps is not None else np.arange(rows) / (rate or 1.0)
+            other = opened[path] if path is not None else None
+            made.append(side_series(name, section, table, seconds, stamps, other, sheet))
+    finally:
+        for other in opened.values():
+            other.close()
+    return tuple(made)
 
 
 def unit_flags(flags: Sequence[str], columns: Sequence[str] = ()) -> dict[str, str]:

@@ -29,7 +29,7 @@ from stillbench.report.words import (
     term_rows,
     verdict_row,
 )
-from stillbench.vocabulary.characterization import ChannelResult, Characterization
+from stillbench.vocabulary.characterization import ChannelResult, Characterization, SideSummary
 from stillbench.vocabulary.finding import Finding
 from stillbench.vocabulary.noise_model import AMBIGUOUS, RESOLVED
 from stillbench.vocabulary.quantity import role_of
@@ -341,6 +341,19 @@ def _accepted_words(channel: ChannelResult) -> str:
     return " or ".join(sets)
 
 
+def _side_words(summary: SideSummary) -> str:
+    """Say where a side channel went over the log."""
+    unit = parse_unit(summary.spoken_unit)
+    if not summary.course.mean.size:
+        return "no sample of it within the log"
+    low, high = (unit.from_si(float(end)) for end in (summary.course.minimum.min(), summary.course.maximum.max()))
+    first, last = (unit.from_si(float(summary.course.mean[i])) for i in (0, -1))
+    return (
+        f"{low:.6g} to {high:.6g} {unit.printed}, from {first:.6g} at the start to {last:.6g} at the end; known over"
+        f" {100 * summary.covered:.3g} % of the log"
+    )
+
+
 def _channel_content(channel: ChannelResult, key: str, first: int) -> dict[str, Any]:
     unit: Unit = parse_unit(channel.report_unit)
     return {
@@ -358,6 +371,7 @@ def _channel_content(channel: ChannelResult, key: str, first: int) -> dict[str, 
         "coverage": f"{100 * channel.curve.coverage:g} %",
         "scale": f"{100 * channel.scale_factor_uncertainty:.2g} %" if channel.scale_factor_uncertainty else "",
         "front_end": channel.front_end,
+        "side": [(name, _side_words(summary)) for name, summary in channel.side.items()],
         "accepted": _accepted_words(channel),
         "clock": {
             "source": channel.clock.source,

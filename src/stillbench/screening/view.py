@@ -38,14 +38,14 @@ class RecordView:
 
     @cached_property
     def step(self) -> float | None:
-        """Step between neighbouring codes of the converter, or None when the readings look continuous.
+        """Step between neighbouring codes of the converter, or None when the readings look continuous and none is declared.
 
         The smallest gaps between distinct values, the mean of those below one and a half of the smallest.
         """
         values = self.record.present()
         levels = np.unique(values)
         if levels.size > values.size / CONTINUOUS_SHARE or levels.size < 2:  # noqa: PLR2004  one level has no gap
-            return None
+            return self.record.step
         gaps = np.diff(levels)
         gaps = gaps[gaps > 1e-9 * float(np.ptp(levels))]
         return float(np.mean(gaps[gaps < 1.5 * gaps.min()]))

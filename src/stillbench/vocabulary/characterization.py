@@ -32,6 +32,27 @@ class Timeline:
 
 
 @dataclass(frozen=True)
+class SideSummary:
+    """A side channel over the log: its course, and how far it supports the log.
+
+    Attributes
+    ----------
+    unit : str
+        SI unit of the course.
+    spoken_unit : str
+        As declared.
+    covered : float
+        Share of the log over which samples on both sides support it.
+    course : Timeline
+    """
+
+    unit: str
+    spoken_unit: str
+    covered: float
+    course: Timeline
+
+
+@dataclass(frozen=True)
 class Bias:
     """Mean of the log with its interval, SI."""
 
@@ -93,7 +114,7 @@ class ChannelResult:
     scale_factor_uncertainty: float = 0.0
     front_end: str = ""
     unscreened: Mapping[str, NoiseTerm] = field(default_factory=dict)
-    side: Mapping[str, Timeline] = field(default_factory=dict)
+    side: Mapping[str, SideSummary] = field(default_factory=dict)
 
     __json_names__: ClassVar[Mapping[str, str]] = {"sample_interval": "sample_interval_s", "duration": "duration_s"}
 

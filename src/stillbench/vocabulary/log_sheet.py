@@ -47,9 +47,13 @@ class FrontEnd(Section):
     zero: Text | None = None
     scale_factor: Text | None = None
     scale_factor_uncertainty: Text | None = None
+    scale_factor_origin: Text | None = None
+    sign: Literal["+", "-"] = "+"
     range: Text | None = None
     bits: Annotated[int, Field(ge=1, le=64)] | None = None
+    codes: Literal["signed", "from zero"] | None = None
     reference: Text | None = None
+    reference_nominal: Text | None = None
 
 
 class ChannelSection(Section):
@@ -59,6 +63,7 @@ class ChannelSection(Section):
     unit: Text | None = None
     quantity: Text | None = None
     kind: Literal["rate", "increment"] = "rate"
+    attitude: Text | None = None
     front_end: FrontEnd | None = None
 
 
@@ -68,6 +73,8 @@ class SideSection(Section):
     file: Text | None = None
     column: Column | None = None
     unit: Text | None = None
+    time: Column | None = None
+    time_unit: Literal["s", "ms", "us", "ns", "iso", "unix", "day-first", "month-first"] | None = None
 
 
 class SensorSection(Section):

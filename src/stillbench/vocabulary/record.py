@@ -6,6 +6,7 @@ from typing import ClassVar
 
 from stillbench.foundation.arrays import BoolArray, FloatArray
 from stillbench.vocabulary.finding import Finding
+from stillbench.vocabulary.sensor_log import SideSeries
 
 
 @dataclass(frozen=True)
@@ -108,6 +109,12 @@ class Record:
         Lowest and highest value the converter can give, SI.
     n_rows : int
         Rows that the log offers for this channel, before anything is left out.
+    known_input : float
+        What the sensor feels at rest (Earth rate, gravity) as far as the log sheet says, SI: no part of its bias.
+    step : float or None
+        Of the converter as declared, SI.
+    side : tuple of SideSeries
+        On their own clock; ``logs/side.py`` brings them to the instants of the record.
     """
 
     label: str
@@ -123,6 +130,9 @@ class Record:
     findings: tuple[Finding, ...] = ()
     limits: tuple[float, float] | None = None
     n_rows: int = 0
+    known_input: float = 0.0
+    step: float | None = None
+    side: tuple[SideSeries, ...] = ()
 
     @property
     def n_samples(self) -> int:

@@ -78,12 +78,36 @@ class Channel:
         Declared.
     kind : str
         ``rate`` or ``increment``.
+    reference : (rows,) float array or None
+        Readings of the reference of a ratiometric output, in the unit of the channel.
     """
 
     label: str
     values: FloatArray
     unit: Unit
     kind: Literal["rate", "increment"] = "rate"
+    reference: FloatArray | None = None
+
+
+@dataclass(frozen=True)
+class SideSeries:
+    """A side channel on its own clock.
+
+    Attributes
+    ----------
+    name : str
+    unit : Unit
+        Declared.
+    seconds : (m,) float array
+        From the first stamp of the log.
+    values : (m,) float array
+        SI.
+    """
+
+    name: str
+    unit: Unit
+    seconds: FloatArray
+    values: FloatArray
 
 
 @dataclass(frozen=True)
@@ -101,6 +125,7 @@ class SensorLog:
         What was concluded from the file, each with the flag that overrides it.
     restarts : tuple of int
         Rows (from 0) before which the logger was started again; without stamps the time between is not known.
+    side : tuple of SideSeries
     """
 
     source: Source
@@ -109,3 +134,4 @@ class SensorLog:
     rate: float | None
     understood: tuple[str, ...] = field(default=())
     restarts: tuple[int, ...] = ()
+    side: tuple[SideSeries, ...] = ()
