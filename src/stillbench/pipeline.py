@@ -27,6 +27,8 @@ from stillbench.logs.cut import cut_record
 from stillbench.logs.front_end import convert
 from stillbench.logs.read import read_log
 from stillbench.logs.side import aligned
+from stillbench.scale.calibrate import calibrate_scale
+from stillbench.scale.plan import read_plan, relative_of
 from stillbench.screening.converter import REFUSED
 from stillbench.screening.screen import levels_differ, screen
 from stillbench.version import __version__
@@ -43,8 +45,9 @@ from stillbench.vocabulary.log_sheet import LogSheet
 from stillbench.vocabulary.noise_model import NoiseModel, NoiseTerm
 from stillbench.vocabulary.quantity import QUANTITIES, Quantity
 from stillbench.vocabulary.record import Record
+from stillbench.vocabulary.scale_factor import ScaleFactor
 from stillbench.vocabulary.screened_record import ScreenedRecord
-from stillbench.vocabulary.sensor_log import SensorLog, SideSeries
+from stillbench.vocabulary.sensor_log import SensorLog, SideSeries, Source
 from stillbench.vocabulary.specification import Specification
 
 LIBRARIES = ("numpy", "scipy", "pandas", "pyarrow")
@@ -52,6 +55,7 @@ LIBRARIES = ("numpy", "scipy", "pandas", "pyarrow")
 TIMELINE_SPANS = 900
 SIDE_PROBES = 10_000
 COVERAGES = (0.5, 0.999)
+READINGS = ("voltage", "count")
 CLIPPED_PERCENT = 0.1
 """Of the samples at the rails from which the white noise reads low by more than its error in a night."""
 
@@ -446,6 +450,88 @@ def _identification(sheet: LogSheet) -> dict[str, dict[str, Setting]]:
         if said:
             parts[name] = said
     return parts
+
+
+def scale_factor_of(
+    log: Any,  # noqa: ANN401  as for characterize
+    *,
+    sheet: LogSheet | None = None,
+    channel: str | None = None,
+    units: Mapping[str, str] | None = None,
+    rate: float | None = None,
+    time: str | int | None = None,
+    time_unit: str | None = None,
+    turns: str | None = None,
+    rates: str | None = None,
+    positions: str | None = None,
+    applied_uncertainty: str | None = None,
+    time_base: str | None = None,
+    latitude: str | None = None,
+    attitude: str | None = None,
+    coverage: float = 0.95,
+    start: str | None = None,
+    stop: str | None = None,
+    progress: Progress = SILENT,
+) -> tuple[ScaleFactor, Source]:
+    """Find the scale factor of a channel from a log of known turns, rates or positions.
+
+    Parameters
+    ----------
+    log, sheet, channel, units, rate, time, time_unit, start, stop, progress
+        As for ``characterize``.
+    turns, rates, positions : str, optional
+        One of them: what was applied, in its order, such as ``"90 deg, -90 deg"``.
+    applied_uncertainty : str, optional
+        Standard, in a unit of what was applied.
+    time_base : str, optional
+        Relative standard uncertainty of the sampling interval.
+    latitude, attitude : str, optional
+        For the Earth rate in ``rates`` and gravity in ``positions``.
+    coverage : float
+
+    Returns
+    -------
+    ScaleFactor, Source
+
+    Raises
+    ------
+    StillbenchError
+    """
+    plan = read_plan(turns, rates, positions, latitude=latitude, attitude=attitude)
+    if not COVERAGES[0] < coverage <= COVERAGES[1]:
+        raise UsageError(
+            f"the coverage is {coverage:g}", f"a probability above {COVERAGES[0]} and up to {COVERAGES[1]}"
+        )
+    sensor_log = read_log(
+        log,
+        sheet=sheet,
+        channels=(channel,) if channel else (),
+        units=units,
+        rate=rate,
+        time=time,
+        time_unit=time_unit,
+        progress=progress,
+    )
+    if len(sensor_log.channels) != 1:
+        raise UsageError(f"{len(sensor_log.channels)} channels are chosen", "one", "name it with --channel")
+    plain = LogSheet() if sheet is None else sheet.model_copy(update={"channel": {}})
+    record = cut_record(sensor_log, sensor_log.channels[0].label, sheet=plain, start=start, stop=stop)
+    if record.quantity not in READINGS:
+        raise UsageError(
+            f"channel {record.label!r} is in {record.unit_text}, a quantity already", "readings in volts or counts"
+        )
+    progress.stage("steps")
+    result = calibrate_scale(
+        record,
+        plan.method,
+        plan.applied,
+        quantity_unit=plan.quantity_unit,
+        applied_uncertainty=plan.uncertainty_of(applied_uncertainty),
+        time_base=relative_of(time_base),
+        known_input=plan.known_input,
+        coverage=coverage,
+    )
+    return result, sensor_log.source
 
 
 def display_unit(channel: ChannelResult) -> tuple[str, float]:

@@ -248,3 +248,47 @@ def test_demo(stillbench: Command, tmp_path: Path) -> None:
         assert page.count("<svg") == page.count("</svg>") >= 4
         assert len(page) < 350_000
         assert result["channels"][0]["verdicts"][0]["decision"] in ("conforms", "does not conform")
+
+
+def test_check_says_what_a_log_is_and_writes_a_sheet_that_says_it(stillbench: Command, tmp_path: Path) -> None:
+    rows = "\n".join(f"{i / 10:.1f};{(i * 37 % 101) / 100:.2f}".replace(".", ",") for i in range(400))
+    (tmp_path / "night.csv").write_text(f"Logger 7\nstarted by hand\nt;rate\ns;deg/s\n{rows}\n")
+    done = stillbench("check", "night.csv", "--write-sheet", "sheet.toml", "--quiet", check=0)
+    text = done.stdout.decode()
+    for word in ("400 rows", "semicolon", "decimal comma", "10 Hz", "deg/s", "head_lines"):
+        assert word in text, word
+    sheet = (tmp_path / "sheet.toml").read_text()
+    assert '# unit = "deg/s"' in sheet
+    (tmp_path / "sheet.toml").write_text(sheet.replace('# unit = "deg/s"', 'unit = "deg/s"'))
+    by_sheet = stillbench("characterize", "night.csv", "--log-sheet", "sheet.toml", "--json", "-", check=0)
+    by_flags = stillbench("characterize", "night.csv", "--channel", "rate", "--unit", "deg/s", "--json", "-", check=0)
+    (first,), (second,) = (json.loads(done.stdout)["channels"] for done in (by_sheet, by_flags))
+    assert first["noise"] == second["noise"]
+
+
+def test_scale_factor_from_turns(stillbench: Command, tmp_path: Path) -> None:
+    """The front end it writes is one that characterize takes."""
+    generator = np.random.default_rng(8)
+    course = np.sin(np.pi * (np.arange(200) + 0.5) / 200) ** 2
+    turn = course / course.sum() / 0.02 * 90.0
+    rate = np.concatenate([np.zeros(400), *[part for sign in (1, -1) * 3 for part in (sign * turn, np.zeros(400))]])
+    readings = 2.5 + 0.0482 * rate + generator.normal(0.0, 1e-3, rate.size)
+    text = "out\n" + "\n".join(f"{value:.6f}" for value in readings)
+    (tmp_path / "turns.csv").write_text(text)
+    done = stillbench(
+        "scale", "turns.csv", "--unit", "V", "--rate", "50", "--turns", "90 deg, -90 deg", "--applied-uncertainty",
+        "0.05 deg", "--out", "scale", "--write-sheet", "front.toml", "--made-at", "2026-03-01", check=0,
+    )  # fmt: skip
+    assert b"running wheel" in done.stdout
+    found = json.loads((tmp_path / "scale" / "scale.json").read_text())
+    assert found["schema"] == "stillbench/scale-factor"
+    assert found["lower"] < 0.0482 / (np.pi / 180) < found["upper"]
+    page = (tmp_path / "scale" / "scale.html").read_text()
+    assert "running wheel" in page
+    sheet = '[channel.out]\nunit = "V"\n' + (tmp_path / "front.toml").read_text()
+    (tmp_path / "sheet.toml").write_text(sheet)
+    (tmp_path / "still.csv").write_text("out\n" + "\n".join(f"{v:.6f}" for v in 2.5 + generator.normal(0, 1e-3, 600)))
+    done = stillbench("characterize", "still.csv", "--log-sheet", "sheet.toml", "--rate", "50", "--json", "-", check=0)
+    (channel,) = json.loads(done.stdout)["channels"]
+    assert channel["quantity"] == "angular rate"
+    assert "6 turns, 2026-03-01" in channel["front_end"]

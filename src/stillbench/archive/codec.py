@@ -56,6 +56,12 @@ def encode(result: Characterization) -> bytes:
     return json.dumps(to_plain(result), ensure_ascii=True, allow_nan=False, separators=(", ", ": ")).encode() + b"\n"
 
 
+def encode_noun(noun: Any, schema: str, version: int, extra: Mapping[str, Any]) -> bytes:  # noqa: ANN401  any noun
+    """Return any noun as JSON of a schema of its own, with ``extra`` beside its fields."""
+    content = {"schema": schema, "version": version, **_plain(extra), **_plain(noun)}
+    return json.dumps(content, ensure_ascii=True, allow_nan=False, separators=(", ", ": ")).encode() + b"\n"
+
+
 @functools.cache
 def _hints(kind: type) -> dict[str, Any]:
     return typing.get_type_hints(kind)

@@ -12,6 +12,7 @@ from stillbench.version import __version__
 COMMANDS = {
     "characterize": "Noise terms, verdicts and a report from one log taken at rest.",
     "check": "Say how a log is understood, before anything is computed from it.",
+    "scale": "Scale factor and null from known turns, rates or positions.",
     "selfcheck": "Compute published cases on this machine and compare digit by digit.",
     "demo": "Make two night logs of an invented survey launch and qualify both sensors.",
 }

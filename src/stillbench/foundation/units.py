@@ -147,6 +147,7 @@ _SYMBOLS: dict[str, tuple[float, Dimension]] = {
     "K": (1.0, TEMPERATURE),
     "degC": (1.0, TEMPERATURE),
     "%": (0.01, RATIO),
+    "ppm": (1e-6, RATIO),
     "Pa": (1.0, PRESSURE),
     "hPa": (100.0, PRESSURE),
     "kPa": (1000.0, PRESSURE),

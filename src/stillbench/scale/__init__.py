@@ -1,0 +1,1 @@
+"""From known turns, rates or positions to a scale factor."""
