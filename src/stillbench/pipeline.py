@@ -10,6 +10,7 @@ from typing import Any
 
 import numpy as np
 
+from stillbench.assessment.converter_part import corrected_terms, limited_span
 from stillbench.assessment.evidence import Evidence
 from stillbench.assessment.judge import judge, load_specification, require_applicable, spoken_unit
 from stillbench.assessment.uncertainty import normal_quantile, with_common_factor
@@ -41,6 +42,8 @@ from stillbench.vocabulary.characterization import (
     SideSummary,
     Timeline,
 )
+from stillbench.vocabulary.converter_share import ConverterShare
+from stillbench.vocabulary.finding import Finding
 from stillbench.vocabulary.log_sheet import LogSheet
 from stillbench.vocabulary.noise_model import NoiseModel, NoiseTerm
 from stillbench.vocabulary.quantity import QUANTITIES, Quantity
@@ -98,6 +101,7 @@ def characterize(
     keep: Mapping[str, str] | None = None,
     name: str = "array",
     selfcheck: str = "not run",
+    converter_log: Any = None,  # noqa: ANN401  as for log
     progress: Progress = SILENT,
 ) -> Characterization:
     """Characterize the noise of a log taken at rest, and judge it where a specification is given.
@@ -134,6 +138,9 @@ def characterize(
         Of data that are not a file.
     selfcheck : str
         Outcome of the self-check, which stands in the result.
+    converter_log : as ``log``, optional
+        Of the converter alone (input shorted or terminated), with the same columns and units: its part in the noise is shown
+        and taken off in variance.
     progress : Progress
 
     Returns
@@ -206,10 +213,24 @@ def characterize(
                 raise
             skipped.append(f"channel {label!r} left out: {error.found}")
             continue
-        results.append(
-            _characterize_record(record, screened, spec, coverage=coverage, report_unit=report_unit, progress=progress)
+        found = _characterize_record(
+            record, screened, spec, coverage=coverage, report_unit=report_unit, progress=progress
         )
         del record, screened
+        if converter_log is not None:
+            alone = read_log(
+                converter_log,
+                sheet=sheet,
+                channels=(label,),
+                units=units,
+                rate=rate,
+                time=time,
+                time_unit=time_unit,
+                name="converter log",
+                progress=progress,
+            )
+            found = _with_converter(found, alone, sheet, coverage=coverage, progress=progress)
+        results.append(found)
     if not results:
         raise NothingToMeasureError(
             f"no channel can be characterized ({'; '.join(skipped)})", "a signal with noise in it"
@@ -227,6 +248,7 @@ def characterize(
         "points_per_decade": PER_DECADE,
         "specification": spec.specification.title,
         "specification_issue": spec.specification.issue,
+        "converter_log": results[0].converter.source.name if results[0].converter else None,
     }
     libraries = {library: metadata.version(library) for library in LIBRARIES}
     return Characterization(
@@ -341,6 +363,50 @@ def _characterize_record(
         unscreened,
         {series.name: _side_summary(series, record) for series in record.side},
     )
+
+
+def _with_converter(
+    found: ChannelResult, log: SensorLog, sheet: LogSheet, *, coverage: float, progress: Progress
+) -> ChannelResult:
+    """Put the converter's own noise beside that of sensor and converter together."""
+    try:
+        record = screen(cut_record(log, log.channels[0].label, sheet=sheet), progress=progress).record
+    except (NothingToMeasureError, RecordTooShortError) as error:
+        raise NothingToMeasureError(
+            f"the converter's log shows nothing: {error.found}",
+            "a log of the converter with its input shorted or terminated, in which its noise is seen",
+            "leave --converter-log out if the converter stands still: its noise is then below one step",
+        ) from error
+    curve = estimate_deviation(record, progress=progress)
+    alone = identify_noise(record, curve, coverage=coverage, progress=progress).model
+    span = limited_span(found.curve, curve)
+    sensor = corrected_terms(found.noise, alone)
+    findings = found.findings
+    limited = [
+        name.replace("_", " ") for name, term in sensor.items() if term.limited and found.noise.terms[name].lower
+    ]
+    if span is not None or limited:
+        where = ""
+        if span is not None:
+            open_end = span[1] >= 0.99 * found.curve.tau[-1]
+            where = f"above {span[0]:.3g} s" if open_end else f"from {span[0]:.3g} s to {span[1]:.3g} s"
+        words = [f"converter-limited {where}"] if where else []
+        words += [f"half or more of {' and '.join(limited)} is the converter's"] if limited else []
+        findings = (
+            *findings,
+            Finding(
+                "converter_limited",
+                None,
+                None,
+                span[0] if span else None,
+                "s",
+                excluded=False,
+                because=f"{'; '.join(words)} (log of the converter alone: {log.source.name})",
+                disposition="the terms are those of sensor and converter together; what is left for the sensor stands beside them",
+            ),
+        )
+    share = ConverterShare(log.source, curve, alone, sensor, span[0] if span else None, span[1] if span else None)
+    return replace(found, findings=findings, converter=share)
 
 
 def _side_summary(series: SideSeries, record: Record) -> SideSummary:

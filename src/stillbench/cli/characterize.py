@@ -29,6 +29,12 @@ missed but one is undecided.
 )
 @click.option("--spec", type=click.Path(path_type=Path), metavar="FILE", help="Requirements to judge (TOML).")
 @click.option(
+    "--converter-log",
+    type=click.Path(path_type=Path),
+    metavar="FILE",
+    help="Log of the converter alone, its input shorted or terminated; same columns.",
+)
+@click.option(
     "--out", type=click.Path(path_type=Path), metavar="DIR", help="Write report.html, result.json and curve.csv there."
 )
 @click.option("--json", "json_file", metavar="FILE", help="Write the result as JSON; '-' for stdout, JSON alone.")
@@ -55,6 +61,7 @@ def command(
     time_unit: str | None,
     log_sheet: Path | None,
     spec: Path | None,
+    converter_log: Path | None,
     out: Path | None,
     json_file: str | None,
     start: str | None,
@@ -109,6 +116,7 @@ def command(
             exclusions=not no_exclusions,
             keep=dict(zip(keep, reasons, strict=True)),
             selfcheck=remembered_summary(),
+            converter_log=converter_log,
             progress=progress,
         )
         to_stdout = json_file == "-"

@@ -37,6 +37,7 @@ DASHES: Mapping[str, tuple[float, ...]] = {
     "correlated": (3, 1.5, 1, 1.5),
     "ramp": (8, 2, 1, 2, 1, 2),
 }
+CONVERTER_DASHES = (2.2, 1.4)
 FEW_AVERAGES = 10.0
 TINY_SHARE = 0.05
 
@@ -95,6 +96,8 @@ def draw_deviation(
     axes.set_ylim(low, high)
     if curve.model is not None:
         axes.plot(tau, curve.model / unit.factor, color=INK, linewidth=1.1, zorder=4)
+    if channel.converter is not None:
+        _draw_converter(axes, channel, unit.factor)
     places = Places(axes, [(float(t), float(d)) for t, d in zip(tau[positive], deviation[positive], strict=True)])
     _draw_terms(axes, channel, labels, unit.factor, places)
     for number, (at, value, text) in enumerate(marks, start=20):
@@ -121,6 +124,27 @@ def draw_deviation(
     axes.set_xlabel("averaging time \N{GREEK SMALL LETTER TAU} / s")
     axes.set_ylabel(f"Allan deviation / {bracketed(unit.printed)}")
     label_decade_steps(axes, "y")
+
+
+def _draw_converter(axes: "Axes", channel: "ChannelResult", factor: float) -> None:
+    """Draw the curve of the converter alone, with its name at its left end."""
+    if channel.converter is None:
+        return
+    alone = channel.converter.curve
+    inside = (alone.deviation > 0) & (alone.tau <= channel.curve.tau[-1] * 1.25)
+    course = alone.deviation[inside] / factor
+    axes.plot(alone.tau[inside], course, color=GREY, linewidth=1.0, dashes=CONVERTER_DASHES, zorder=1.5)
+    low, high = axes.get_ylim()
+    axes.set_ylim(min(low, max(low / 30.0, float(course.min()) / 1.6)), high)
+    told = axes.annotate(
+        "converter alone",
+        (float(alone.tau[inside][0]), float(course[0])),
+        xytext=(4, -9),
+        textcoords="offset points",
+        color=GREY,
+        fontsize=7.5,
+    )
+    with_halo(told, 40)
 
 
 def _range(deviation: FloatArray, upper: FloatArray | None) -> tuple[float, float]:

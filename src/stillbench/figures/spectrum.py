@@ -40,11 +40,26 @@ def draw_spectrum(axes: "Axes", channel: "ChannelResult") -> None:
     )
     model = np.sqrt(bins.model) / unit.factor
     axes.plot(bins.frequency, model, color=INK)
+    if channel.converter is not None:
+        alone = channel.converter.noise.bins
+        own = np.sqrt(alone.model) / unit.factor
+        axes.plot(alone.frequency, own, color=GREY, linewidth=1.0, dashes=(2.2, 1.4))
+        axes.annotate(
+            "converter alone (model)",
+            (float(alone.frequency[-1]), float(own[-1])),
+            xytext=(-4, -9),
+            textcoords="offset points",
+            color=GREY,
+            fontsize=7.5,
+            ha="right",
+        )
     _shade_unused(axes, channel)
     axes.set_xlabel("frequency / Hz")
     axes.set_ylabel(f"density / ({unit.printed}/\N{SQUARE ROOT}Hz)")
     axes.set_xlim(bins.frequency[0] / 1.3, bins.frequency[-1] * 1.15)
     values = np.concatenate([density[many], model]) if many.any() else density[seen]
+    if channel.converter is not None:
+        values = np.append(values, np.sqrt(channel.converter.noise.bins.model) / unit.factor)
     axes.set_ylim(float(values[values > 0].min()) / 2.5, float(values.max()) * 3.0)
     label_decade_steps(axes, "y")
 

@@ -20,6 +20,7 @@ from stillbench.report.notes import POOR
 from stillbench.report.strip import strip
 from stillbench.report.words import (
     bias_text,
+    converter_rows,
     duration_text,
     instant_text,
     observed_terms,
@@ -371,6 +372,8 @@ def _channel_content(channel: ChannelResult, key: str, first: int) -> dict[str, 
         "coverage": f"{100 * channel.curve.coverage:g} %",
         "scale": f"{100 * channel.scale_factor_uncertainty:.2g} %" if channel.scale_factor_uncertainty else "",
         "front_end": channel.front_end,
+        "converter": converter_rows(channel),
+        "converter_source": channel.converter.source if channel.converter else None,
         "side": [(name, _side_words(summary)) for name, summary in channel.side.items()],
         "accepted": _accepted_words(channel),
         "clock": {

@@ -104,6 +104,29 @@ def term_rows(channel: ChannelResult) -> list[TermRow]:
     return rows
 
 
+def converter_rows(channel: ChannelResult) -> list[tuple[str, str, str, str, str]]:
+    """Return term, what was measured, the converter alone, what is left for the sensor, and a word on it."""
+    rows = []
+    for name, corrected in channel.converter.sensor.items() if channel.converter else ():
+        unit = parse_unit(spoken_unit_of(channel, name))
+        both, alone = channel.noise.terms[name], channel.converter.noise.terms[name] if channel.converter else None
+        left = f"< {rounded_up(corrected.upper / unit.factor)}"
+        if corrected.lower > 0:
+            ends = (corrected.coefficient, corrected.lower, corrected.upper)
+            left = interval_text(*(number / unit.factor for number in ends))
+        words = f"{100 * corrected.share:.0f} % of the variance is the converter's"
+        rows.append(
+            (
+                f"{name.replace('_', ' ')} / {unit.printed}",
+                " ".join(_numbers(both, unit.factor)[:1]),
+                _numbers(alone, unit.factor)[0] if alone else "-",
+                left,
+                f"converter-limited: {words}" if corrected.limited else words,
+            )
+        )
+    return rows
+
+
 def term_label(channel: ChannelResult, name: str) -> str:
     """Return the label beside a term's line in a figure: name, then value, interval and unit."""
     term = channel.noise.terms[name]

@@ -5,6 +5,7 @@ from dataclasses import dataclass, field
 from typing import ClassVar
 
 from stillbench.foundation.arrays import FloatArray
+from stillbench.vocabulary.converter_share import ConverterShare
 from stillbench.vocabulary.deviation_curve import DeviationCurve
 from stillbench.vocabulary.finding import Finding
 from stillbench.vocabulary.noise_model import NoiseModel, NoiseTerm
@@ -93,6 +94,8 @@ class ChannelResult:
         The terms without the exclusions; empty when nothing was excluded.
     side : mapping
         Side channels.
+    converter : ConverterShare or None
+        Where a log of the converter alone was given.
     """
 
     label: str
@@ -115,6 +118,7 @@ class ChannelResult:
     front_end: str = ""
     unscreened: Mapping[str, NoiseTerm] = field(default_factory=dict)
     side: Mapping[str, SideSummary] = field(default_factory=dict)
+    converter: ConverterShare | None = None
 
     __json_names__: ClassVar[Mapping[str, str]] = {"sample_interval": "sample_interval_s", "duration": "duration_s"}
 

@@ -18,7 +18,10 @@ def test_the_frozen_result_of_version_1_is_read() -> None:
     result = decode(FROZEN.read_bytes())
     assert result.version == 1
     assert result.channels[0].label == "rate"
-    assert encode(result) == FROZEN.read_bytes()
+    again = json.loads(encode(result))
+    for channel in again["channels"]:
+        assert channel.pop("converter") is None  # came later, and is null in results that lack it
+    assert again == json.loads(FROZEN.read_bytes())
     assert b"<svg" in render_report(result)
 
 
