@@ -8,10 +8,10 @@ WORKERS ?= 2
 export OMP_NUM_THREADS ?= 1
 export OPENBLAS_NUM_THREADS ?= 1
 
-.PHONY: help demo test check format calibrate bench lock clean
+.PHONY: help demo test check format calibrate bench bench-large lock clean
 
 help: ## list the words
-	@grep -hE '^[a-z]+:.*##' $(MAKEFILE_LIST) | sed 's/:[^#]*## /\t/' | expand -t 12
+	@grep -hE '^[a-z-]+:.*##' $(MAKEFILE_LIST) | sed 's/:[^#]*## /\t/' | expand -t 12
 
 $(VENV)/pyvenv.cfg:
 	$(PYTHON) -c 'import sys; sys.exit("stillbench needs Python 3.11 or later; name one with make PYTHON=python3.12") if sys.version_info < (3, 11) else None'
@@ -48,6 +48,9 @@ calibrate: $(VENV)/dev.done ## made logs of known noise against the claims, half
 
 bench: $(VENV)/dev.done ## speed and memory as ratios, minutes; writes bench/results.md
 	$(BIN)/python bench/bench.py
+
+bench-large: $(VENV)/dev.done ## time and memory up to a thousand million samples, half an hour and 30 GB of disk; writes bench/large.md
+	$(BIN)/python bench/bench_large.py
 
 lock: ## pin the requirements again (needs uv)
 	for set in "run:--group pyproject.toml:build" "dev:--group pyproject.toml:build --group pyproject.toml:dev"; do \

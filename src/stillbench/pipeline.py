@@ -19,6 +19,7 @@ from stillbench.deviation.intervals import bound_deviation, mixture_of
 from stillbench.deviation.overlapping import estimate_deviation
 from stillbench.foundation.errors import NothingToMeasureError, RecordTooShortError, UsageError
 from stillbench.foundation.progress import SILENT, Progress
+from stillbench.foundation.scratch import blocks
 from stillbench.foundation.toml_source import load_toml
 from stillbench.foundation.units import parse_unit
 from stillbench.identification.identify import Identification, identify_noise
@@ -452,7 +453,7 @@ def _bias(record: Record, found: Identification, z: float, *, same_level: bool) 
     for run in runs:
         values, absent = record.values[run.first : run.last], record.missing[run.first : run.last]
         values = values[~absent] if absent.any() else values
-        total += float(np.sum(values - origin))
+        total += sum(float(np.sum(values[part] - origin)) for part in blocks(values.size))
         count += values.size
     mean = float(origin + total / count) - record.known_input
     error = found.fitted.amplitude(found.fitted.variance_weights(count))

@@ -85,3 +85,24 @@ def test_any_bytes_end_in_a_log_or_one_clear_error(folder: Path, content: bytes)
         assert "\n" not in error.message
     else:
         assert log.channels[0].values.size >= 16
+
+
+def test_a_large_text_is_read_block_by_block_to_the_same_numbers(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """Torn lines want the whole table, and get it."""
+    rows = np.round(np.random.default_rng(6).normal(2.5, 0.1, (30_000, 2)), 6)
+    lines = [f"{i / 100:.2f};{a:.6f};{b:.6f}" for i, (a, b) in enumerate(rows.tolist())]
+    lines[5_000] = "50.00;9.9e37;2.5"
+    sheet = LogSheet.model_validate({"log": {"missing": ["9.9e37"]}})
+    for torn in (False, True):
+        text = [*lines[:-1], "299.99;2.4"] if torn else lines
+        (tmp_path / "log.csv").write_text("time [s];a;b\n" + "\n".join(text) + "\n")
+        logs = []
+        for large in (1 << 26, 1_000):
+            monkeypatch.setattr("stillbench.logs.text.LARGE", large)
+            logs.append(read_log(tmp_path / "log.csv", sheet=sheet, channels=["a", "b"], units={"": "V"}))
+        for first, second in zip(logs[0].channels, logs[1].channels, strict=True):
+            assert np.array_equal(first.values, second.values, equal_nan=True)
+        assert logs[0].source == logs[1].source
+        assert np.isnan(logs[1].channels[0].values[5_000])

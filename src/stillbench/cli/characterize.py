@@ -51,6 +51,12 @@ missed but one is undecided.
 @click.option(
     "--because", "reasons", multiple=True, metavar="TEXT", help="Why; one for each --keep, it stands in the report."
 )
+@click.option(
+    "--scratch",
+    type=click.Path(path_type=Path),
+    metavar="DIR",
+    help="Folder for the arrays of a log larger than memory.",
+)
 @click.option("--quiet", is_flag=True, help="No progress, and no word on what was written.")
 def command(
     log: tuple[Path, ...],
@@ -72,6 +78,7 @@ def command(
     made_at: str | None,
     keep: tuple[str, ...],
     reasons: tuple[str, ...],
+    scratch: Path | None,
     *,
     joined: bool,
     no_exclusions: bool,
@@ -82,6 +89,7 @@ def command(
     from stillbench.cli.talk import progress_line  # noqa: PLC0415
     from stillbench.cli.write_result import REPORT, write_result  # noqa: PLC0415
     from stillbench.foundation.errors import OutputError, UsageError  # noqa: PLC0415
+    from stillbench.foundation.scratch import scratch_in  # noqa: PLC0415
     from stillbench.logs.read import unit_flags  # noqa: PLC0415
     from stillbench.pipeline import characterize  # noqa: PLC0415
     from stillbench.selfcheck.run import remembered_summary  # noqa: PLC0415
@@ -97,7 +105,7 @@ def command(
     if out is not None:
         # What draws the figures takes its time to load: that passes while the log is read.
         threading.Thread(target=importlib.import_module, args=("matplotlib.backends.backend_svg",), daemon=True).start()
-    with progress_line(quiet=quiet) as progress:
+    with scratch_in(scratch), progress_line(quiet=quiet) as progress:
         result = characterize(
             one_log(log, joined=joined),
             channels=channels,

@@ -54,15 +54,6 @@ def chunk_sums(angle: "np.ndarray[Any, Any]", factors: "list[int]", begin: int) 
     return sums
 
 
-def shared_array(size: int) -> "tuple[np.ndarray[Any, Any], int | None]":
-    """Return a float64 array and, where the system can, the descriptor by which another process sees the same memory."""
-    if not hasattr(os, "memfd_create"):
-        return np.empty(size), None
-    descriptor = os.memfd_create("angle")
-    os.ftruncate(descriptor, 8 * size)
-    return np.frombuffer(mmap.mmap(descriptor, 8 * size), dtype=np.float64), descriptor
-
-
 @contextmanager
 def helper(descriptor: int, factors: "list[int]") -> "Iterator[subprocess.Popen[bytes] | None]":
     """Start a helper process; None where it cannot be started. It waits for one line with the chunks that it is to do."""

@@ -1,5 +1,6 @@
 """Overlapping Allan deviation, pooled over runs, from one running sum of the log."""
 
+import mmap
 import os
 from collections.abc import Sequence
 from contextlib import ExitStack, suppress
@@ -7,10 +8,11 @@ from contextlib import ExitStack, suppress
 import numpy as np
 
 from stillbench.deviation.averaging import averaging_factors
-from stillbench.deviation.kernel import CHUNK, chunk_sums, helper, shared_array
+from stillbench.deviation.kernel import CHUNK, chunk_sums, helper
 from stillbench.foundation.arrays import FloatArray, IntArray
 from stillbench.foundation.errors import RecordTooShortError
 from stillbench.foundation.progress import SILENT, Progress
+from stillbench.foundation.scratch import LARGE, blocks, scratch_file
 from stillbench.vocabulary.deviation_curve import DeviationCurve
 from stillbench.vocabulary.record import Record
 
@@ -24,8 +26,16 @@ def _angle(rate: FloatArray, angle: FloatArray) -> None:
     angle[0] = 0.0
     # Offset first: a value of the log itself, so that this subtraction is exact; then the small mean that is left.
     np.subtract(rate, rate[rate.size // 2], out=angle[1:], dtype=np.float64)
-    angle[1:] -= angle[1:].mean()
-    np.cumsum(angle[1:], out=angle[1:])
+    total = 0.0
+    for part in blocks(rate.size):
+        total += float(angle[1:][part].sum())
+    mean, last = total / rate.size, 0.0
+    for part in blocks(rate.size):
+        block = angle[1:][part]
+        block -= mean
+        np.cumsum(block, out=block)
+        block += last
+        last = float(block[-1])
 
 
 def _sums_of_squares(
@@ -38,7 +48,7 @@ def _sums_of_squares(
     from threadpoolctl import threadpool_limits  # noqa: PLC0415  wanted only where a curve is computed
 
     helped = processes > 1 and rate.size >= HELPED_FROM
-    angle, descriptor = shared_array(rate.size + 1) if helped else (np.empty(rate.size + 1), None)
+    angle, descriptor = _angle_room(rate.size + 1, shared=helped)
     ladder = factors.tolist()
     most = angle.size - 2 * ladder[0]
     starts = range(0, most, CHUNK)
@@ -47,6 +57,7 @@ def _sums_of_squares(
         process = None
         if descriptor is not None:
             stack.callback(os.close, descriptor)
+        if descriptor is not None and helped:
             process = stack.enter_context(helper(descriptor, ladder))
         _angle(rate, angle)
         if process is not None and process.stdin and process.stdout:
@@ -65,6 +76,18 @@ def _sums_of_squares(
         sums += parts[start]
     progress.step(done + share)
     return sums
+
+
+def _angle_room(count: int, *, shared: bool) -> tuple[FloatArray, int | None]:
+    """Room for the angle and, where another process is to see it, its descriptor: in memory, or in a scratch file."""
+    if count >= LARGE:
+        descriptor = scratch_file(count)
+    elif shared and hasattr(os, "memfd_create"):
+        descriptor = os.memfd_create("angle")
+        os.ftruncate(descriptor, 8 * count)
+    else:
+        return np.empty(count), None
+    return np.frombuffer(mmap.mmap(descriptor, 8 * count), dtype=np.float64), descriptor
 
 
 def usable_processes() -> int:

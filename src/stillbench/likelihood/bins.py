@@ -13,6 +13,7 @@ from typing import Any
 import numpy as np
 
 from stillbench.foundation.arrays import BoolArray, FloatArray, IntArray
+from stillbench.foundation.scratch import BLOCK, blocks
 from stillbench.terms.base import Fluctuation, MeanShape
 
 SINGLES = 32
@@ -23,6 +24,15 @@ PER_DECADE = 24
 
 SHAPE_REACH = 65_536
 """Coefficients of a mean shape beyond this one are taken as zero (they fall as k^-2)."""
+
+LONGEST_TRANSFORM = 1 << 24
+"""Samples of a run that are transformed at once; a longer one is binned in two bands."""
+
+BLOCK_TRANSFORM = 1 << 20
+"""Samples of the blocks of the high band."""
+
+LOW_BAND = 32
+"""The low band ends at this part of the coefficients of the means."""
 
 QUADRATURE_FROM = 64
 """Bins with at least this many coefficients have their mean basis by quadrature in place of a sum."""
@@ -159,12 +169,23 @@ def bin_run(values: FloatArray, terms: Sequence[Fluctuation], shapes: Sequence[M
     -------
     BinnedPowers
     """
-    n_samples = values.size
-    starts = bin_starts(n_samples)
+    if values.size > LONGEST_TRANSFORM:
+        return _bin_long_run(values, terms, shapes)
+    return _binned(cosine_transform(values), values.size, bin_starts(values.size), terms, shapes)
+
+
+def _binned(
+    transform: FloatArray,
+    n_samples: int,
+    starts: IntArray,
+    terms: Sequence[Fluctuation],
+    shapes: Sequence[MeanShape],
+) -> BinnedPowers:
+    """Bin coefficients 1 to ``starts[-1] - 1`` of a run; the transform is squared in place."""
     width = np.diff(starts).astype(float)
-    transform = cosine_transform(values)
+    transform = transform[: starts[-1] - 1]
     offsets = starts[:-1] - 1
-    reach = min(n_samples - 1, SHAPE_REACH)
+    reach = min(transform.size, SHAPE_REACH)
     k = np.arange(1, reach + 1, dtype=float)
     columns = np.array([shape.cosine(k, n_samples) for shape in shapes]).reshape(len(shapes), reach)
     covered = offsets[offsets < reach]
@@ -192,13 +213,86 @@ def bin_run(values: FloatArray, terms: Sequence[Fluctuation], shapes: Sequence[M
     return bins
 
 
+def _means_of_a_quick_length(n_samples: int) -> tuple[int, int]:
+    """Return how many samples make a mean and how many means, a number that is transformed quickly; few samples are left out."""
+    from scipy import fft  # noqa: PLC0415  heavy imports stay inside functions
+
+    fewest = -(-n_samples // LONGEST_TRANSFORM)
+    best = (0, 0)
+    for together in range(fewest, fewest + 8):
+        count = n_samples // together
+        while fft.next_fast_len(count, real=True) != count:
+            count -= 1
+        best = max(best, (together * count, together))
+    return best[1], best[0] // best[1]
+
+
+def _bin_long_run(values: FloatArray, terms: Sequence[Fluctuation], shapes: Sequence[MeanShape]) -> BinnedPowers:
+    """Bin a run too long for one transform in two bands.
+
+    Low band: the means of blocks of D samples have the coefficients of the whole run, but for a factor of root D, up to a
+    small share of their own highest (a thirty-second: the averaging takes 0.08 % of the power there and less below). High band:
+    the transforms of blocks of the run, averaged; white noise and a walk have the same expected power at the same frequency
+    in a block as in the whole, and flicker too from the hundredth coefficient on.
+    """
+    together, count = _means_of_a_quick_length(values.size)
+    n_samples = count * together
+    origin = float(values[0])
+    means = np.empty(count)
+    for part in blocks(count, max(1, BLOCK // together)):
+        rows = values[part.start * together : part.stop * together].reshape(-1, together)
+        means[part] = (rows - origin).mean(axis=1)
+    low = cosine_transform(means) * np.sqrt(together)
+    del means
+    # Coefficients of a block of the high band stand ``apart`` coefficients of the whole from each other.
+    length = BLOCK_TRANSFORM
+    apart = n_samples / length
+    split = round(count / LOW_BAND / apart)
+    top = round((split - 0.5) * apart)
+    starts = bin_starts(n_samples)
+    lower = np.append(starts[starts < top], top)
+    bins = _binned(low, n_samples, lower, terms, shapes)
+    del low
+    upper = np.unique(np.concatenate([[split], np.rint(starts[starts > top] / apart).astype(np.int64)]))
+    upper = np.append(upper[upper < length], length)
+    power = np.zeros(upper.size - 1)
+    whole = n_samples // length
+    for i in range(whole):
+        block = cosine_transform(values[i * length : (i + 1) * length])
+        np.square(block, out=block)
+        power += np.add.reduceat(block[: length - 1], upper[:-1] - 1)
+    power /= whole * np.diff(upper)
+    first = np.rint((upper[:-1] - 0.5) * apart).astype(np.int64)
+    first[0], last = top, np.append(first[1:], n_samples)
+    empty = (np.zeros((first.size, len(shapes))), np.zeros((first.size, len(shapes), len(shapes))))
+    high = replace(
+        bins,
+        first=first,
+        last=last,
+        length=np.full(first.size, n_samples),
+        power=power,
+        basis=np.empty((first.size, 0)),
+        cross=empty[0],
+        gram=empty[1],
+        roles=(),
+    )
+    for term in terms:
+        high = high.with_column(term.role, high.means_of(term.cosine_power))
+    return _joined([bins, high])
+
+
+JOINED = ("first", "last", "length", "power", "basis", "cross", "gram")
+
+
+def _joined(parts: Sequence[BinnedPowers]) -> BinnedPowers:
+    """Return the bins of several parts one behind the other."""
+    fields: dict[str, Any] = {name: np.concatenate([getattr(part, name) for part in parts]) for name in JOINED}
+    return replace(parts[0], **fields)
+
+
 def bin_runs(pieces: Sequence[FloatArray], terms: Sequence[Fluctuation], shapes: Sequence[MeanShape]) -> BinnedPowers:
     """Bin every run; each keeps its own mean, the likelihoods add. Sorted by frequency."""
     parts = [bin_run(piece, terms, shapes) for piece in pieces]
 
-    def joined(name: str) -> Any:  # noqa: ANN401  an array of the type of the field
-        return np.concatenate([getattr(part, name) for part in parts])
-
-    fields = ("first", "last", "length", "power", "basis", "cross", "gram")
-    whole = replace(parts[0], **{name: joined(name) for name in fields})
+    whole = _joined(parts)
     return whole.chosen(np.argsort(whole.frequency, kind="stable"))

@@ -9,6 +9,7 @@ import numpy as np
 
 from stillbench.foundation.arrays import FloatArray, IntArray
 from stillbench.foundation.errors import LogError
+from stillbench.foundation.scratch import LARGE, blocks, large_array
 from stillbench.logs.contents import LARGEST_EXPANDED, LARGEST_RATIO, RATIO_COUNTS_FROM, ZIP_MAGIC, Contents
 from stillbench.logs.formats import Format
 from stillbench.logs.table import Table
@@ -35,7 +36,13 @@ class ArrayTable(Table):
                 raise LogError(
                     f"column {self.heads[index]!r} holds {column.dtype}, not real numbers", "integers or floats"
                 )
-            arrays.append(np.ascontiguousarray(column, dtype=np.float64))
+            if column.size < LARGE or (column.dtype == np.float64 and column.flags.c_contiguous):
+                arrays.append(np.ascontiguousarray(column, dtype=np.float64))
+                continue
+            values = large_array(column.size)
+            for part in blocks(column.size):
+                values[part] = column[part]
+            arrays.append(values)
         return arrays
 
     def instants(self, index: int) -> tuple[IntArray, bool] | None:
@@ -73,8 +80,7 @@ def columns_of(array: np.ndarray, name: str, prefix: str = "") -> dict[str, np.n
 def _load(contents: Contents) -> dict[str, np.ndarray]:
     try:
         if bytes(contents.data[:6]) == NPY_MAGIC:
-            _check_declared(contents.data[:], contents.name)
-            return columns_of(np.load(io.BytesIO(contents.data), allow_pickle=False), contents.name)
+            return columns_of(_view(contents), contents.name)
         with zipfile.ZipFile(io.BytesIO(contents.data)) as archive:
             for member in archive.infolist():
                 ratio = member.file_size / max(1, member.compress_size)
@@ -106,19 +112,28 @@ def _load(contents: Contents) -> dict[str, np.ndarray]:
     return columns
 
 
-def _check_declared(data: bytes, name: str) -> None:
-    """Refuse an NPY file whose head declares more samples than the file holds."""
-    stream = io.BytesIO(data[: 1 << 16])
+def _view(contents: Contents) -> np.ndarray:
+    """Return the array of an NPY file as it lies in the file, without a copy."""
+    stream = io.BytesIO(contents.data[: 1 << 16])
     version = np.lib.format.read_magic(stream)
     reader = np.lib.format.read_array_header_1_0 if version == (1, 0) else np.lib.format.read_array_header_2_0
-    shape, _, dtype = reader(stream)
-    declared = int(np.prod(shape, dtype=object)) * dtype.itemsize
-    if declared + stream.tell() > len(data) and not dtype.hasobject:
+    shape, fortran, dtype = reader(stream)
+    if dtype.hasobject:
         raise LogError(
-            f"{name!r} declares {declared} bytes of samples and holds {len(data) - stream.tell()}",
+            f"{contents.name!r} cannot be read: it holds pickled objects",
+            "plain numeric arrays",
+            "save it again with numpy.save",
+        )
+    declared = int(np.prod(shape, dtype=object)) * dtype.itemsize
+    if declared + stream.tell() > len(contents.data):
+        raise LogError(
+            f"{contents.name!r} declares {declared} bytes of samples and holds {len(contents.data) - stream.tell()}",
             "a whole file",
             "copy it again",
         )
+    count = declared // max(1, dtype.itemsize)
+    flat = np.frombuffer(contents.data, dtype=dtype, count=count, offset=stream.tell())
+    return flat.reshape(shape, order="F" if fortran else "C")
 
 
 def read_arrays(contents: Contents, section: LogSection) -> ArrayTable:  # noqa: ARG001  a reader's signature

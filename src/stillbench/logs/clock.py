@@ -48,28 +48,56 @@ class Grid:
     ----------
     sample_interval : float
         s.
-    kept : (rows,) bool array
-        False for rows with a repeated stamp.
-    index : (rows,) int array
-        Place on the even grid within its segment's time; only differences inside a segment count.
-    segment : (rows,) int array
-        Rises by one where the time between two rows is not known.
-    seconds : (rows,) float array
-        Time of each row from the first, shifts of the clock taken out.
+    placed : Placed or None
+        Where each row stands, row by row; None where all rows stand in a line, one behind the other.
+    rows : int
     source : str
     jitter : float
         s.
     findings : tuple of Finding
+    stamps : (rows,) float array or None
+        Seconds of the rows that stand in a line, where there are stamps.
     """
 
     sample_interval: float
+    placed: "Placed | None"
+    rows: int
+    source: str
+    jitter: float
+    findings: tuple[Finding, ...]
+    stamps: FloatArray | None = None
+
+    @property
+    def kept(self) -> BoolArray:
+        """False for rows with a repeated stamp, shape (rows,)."""
+        return self.placed.kept if self.placed else np.broadcast_to(np.True_, (self.rows,))
+
+    @property
+    def index(self) -> IntArray:
+        """Place on the even grid within its segment's time, shape (rows,); only differences inside a segment count."""
+        return self.placed.index if self.placed else np.arange(self.rows)
+
+    @property
+    def segment(self) -> IntArray:
+        """Rises by one where the time between two rows is not known, shape (rows,)."""
+        return self.placed.segment if self.placed else np.broadcast_to(np.int64(0), (self.rows,))
+
+    @property
+    def seconds(self) -> FloatArray:
+        """Time of each row from the first, shifts of the clock taken out, shape (rows,)."""
+        if self.placed is not None:
+            return self.placed.seconds
+        return self.stamps if self.stamps is not None else np.asarray(np.arange(self.rows) * self.sample_interval)
+
+
+@dataclass(frozen=True)
+class Placed:
+    """Places of rows that do not all stand in a line; see Grid for the meaning of each."""
+
     kept: BoolArray
     index: IntArray
     segment: IntArray
     seconds: FloatArray
-    source: str
-    jitter: float
-    findings: tuple[Finding, ...]
 
 
 def audit_clock(log: SensorLog) -> Grid:
@@ -85,19 +113,17 @@ def audit_clock(log: SensorLog) -> Grid:
         if log.rate is None:
             raise ClockError("the log has no stamps and no rate", "one of them", "give --rate HZ")
         interval = 1.0 / log.rate
+        inner = [row for row in log.restarts if 0 < row < rows]
+        if not inner:
+            return Grid(interval, None, rows, "declared rate", 0.0, ())
         index = np.arange(rows)
         segment = np.zeros(rows, dtype=np.int64)
-        segment[[row for row in log.restarts if 0 < row < rows]] = 1
-        return Grid(
-            interval,
-            np.ones(rows, dtype=bool),
-            index,
-            np.cumsum(segment),
-            index.astype(np.float64) * interval,
-            "declared rate",
-            0.0,
-            tuple(_restart(row * interval) for row in log.restarts[:LISTED_STEPS]),
+        segment[inner] = 1
+        placed = Placed(
+            np.broadcast_to(np.True_, (rows,)), index, np.cumsum(segment), index.astype(np.float64) * interval
         )
+        findings = tuple(_restart(row * interval) for row in inner[:LISTED_STEPS])
+        return Grid(interval, placed, rows, "declared rate", 0.0, findings)
     return _audit_stamps(log.stamps, log.rate)
 
 
@@ -142,12 +168,8 @@ def _on_a_line(stamps: Stamps, rate: float | None) -> Grid | None:
         square += float(np.sum((off - mean - slope * (np.arange(first, stop) - middle)) ** 2))
     interval += slope
     findings = _mismatch(interval, rate)
-    index = np.arange(seconds.size)
-    # The same for every row: one number is kept for all of them.
-    segment = np.broadcast_to(np.int64(0), seconds.shape)
-    kept = np.broadcast_to(np.True_, seconds.shape)
     jitter = float(np.sqrt(square / count))
-    return Grid(interval, kept, index, segment, seconds, "stamps", jitter, tuple(findings))
+    return Grid(interval, None, seconds.size, "stamps", jitter, tuple(findings), seconds)
 
 
 def _audit_stamps(stamps: Stamps, rate: float | None) -> Grid:
@@ -197,7 +219,7 @@ def _audit_stamps(stamps: Stamps, rate: float | None) -> Grid:
     if not even:
         findings.append(_uneven(stamps, interval, jitter, coarse=coarse, steps=steps))
     findings += _rate_findings(seconds, index, segment, kept, interval, rate)
-    return Grid(interval, kept, index, segment, seconds, "stamps", jitter, tuple(findings))
+    return Grid(interval, Placed(kept, index, segment, seconds), seconds.size, "stamps", jitter, tuple(findings))
 
 
 def _take_out_shifts(seconds: FloatArray, origin: float) -> list[Finding]:

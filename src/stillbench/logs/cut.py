@@ -9,10 +9,11 @@ import numpy as np
 
 from stillbench.foundation.arrays import BoolArray
 from stillbench.foundation.errors import LogError, NothingToMeasureError, RecordTooShortError, UsageError
+from stillbench.foundation.scratch import blocks
 from stillbench.foundation.suggestions import plural
 from stillbench.logs.clock import Grid, audit_clock
 from stillbench.logs.front_end import convert
-from stillbench.logs.runs import CARRIED_SHARE, SHORTEST_RUN, build_runs, hole_limit
+from stillbench.logs.runs import CARRIED_SHARE, SHORTEST_RUN, build_runs, hole_limit, whole_run
 from stillbench.logs.site import (
     EARTH_RATE,
     earth_rate_along,
@@ -26,7 +27,7 @@ from stillbench.vocabulary.finding import Finding
 from stillbench.vocabulary.log_sheet import ChannelSection, LogSheet
 from stillbench.vocabulary.quantity import ACCELERATION, ANGULAR_RATE
 from stillbench.vocabulary.record import Clock, Record
-from stillbench.vocabulary.sensor_log import SensorLog
+from stillbench.vocabulary.sensor_log import Channel, SensorLog
 
 LISTED_GAPS = 20
 NARROW = "; with so many lost, intervals are somewhat too narrow"
@@ -79,47 +80,24 @@ def cut_record(
     section = sheet.channel.get(label)
     conversion = convert(channel, section.front_end if section else None, grid.sample_interval)
     findings = [*conversion.findings, *grid.findings]
-    wanted = grid.kept & _chosen(log, grid, start, stop, exclude, findings)
-    finite = np.isfinite(channel.values)
-    lost = wanted & ~finite
-    if not (wanted & finite).any():
-        raise NothingToMeasureError(
-            f"channel {label!r} holds no finite number" + ("" if not finite.any() else " in the chosen span"),
-            "numbers",
-            "check the column, and --from and --to",
+    whole = grid.placed is None and start is None and stop is None and not exclude and channel.reference is None
+    if whole and all(bool(np.isfinite(channel.values[part]).all()) for part in blocks(channel.values.size)):
+        # All of the log, as it stands: the usual case, and the only one for which a log may be larger than memory.
+        wanted: BoolArray = np.broadcast_to(np.True_, channel.values.shape)
+        use = wanted
+        _require_readings(label, max(float(channel.values.max()), -float(channel.values.min())))
+        values, missing, runs, dropped = whole_run(conversion.apply(channel.values))
+    else:
+        wanted = grid.kept & _chosen(log, grid, start, stop, exclude, findings)
+        use = _usable(channel, wanted, grid, findings)
+        chosen = slice(None) if use.all() else use  # all of it needs no copy
+        reference = channel.reference[chosen] if channel.reference is not None else None
+        values, missing, runs, dropped = build_runs(
+            conversion.apply(channel.values[chosen], reference),
+            grid.index[chosen],
+            grid.segment[chosen],
+            grid.seconds[chosen],
         )
-    if lost.any():
-        where = grid.seconds[lost]
-        findings.append(
-            Finding(
-                "not_finite",
-                float(where[0]),
-                float(where[-1]),
-                float(where.size),
-                "samples",
-                excluded=True,
-                because=f"{plural(where.size, 'cell')} empty, NaN or infinite",
-                disposition="treated as missing samples",
-            )
-        )
-    use = wanted & finite
-    if channel.reference is not None:
-        use &= np.isfinite(channel.reference) & (channel.reference != 0)
-    largest = max(float(channel.values.max(where=use, initial=0.0)), -float(channel.values.min(where=use, initial=0.0)))
-    if largest > LARGEST_READING:
-        raise LogError(
-            f"channel {label!r} holds a value of {largest:.3g}",
-            f"readings below {LARGEST_READING:g}",
-            'if it marks missing data, list it as missing = ["..."] under [log] in a log sheet',
-        )
-    chosen = slice(None) if use.all() else use  # all of it needs no copy
-    reference = channel.reference[chosen] if channel.reference is not None else None
-    values, missing, runs, dropped = build_runs(
-        conversion.apply(channel.values[chosen], reference),
-        grid.index[chosen],
-        grid.segment[chosen],
-        grid.seconds[chosen],
-    )
     if not runs:
         raise RecordTooShortError(int(np.count_nonzero(use)), SHORTEST_RUN, "any estimate")
     findings += _gap_findings(grid, wanted, dropped)
@@ -146,6 +124,47 @@ def cut_record(
         log.side,
     )
     return replace(record, findings=tuple(findings))
+
+
+def _usable(channel: Channel, wanted: BoolArray, grid: Grid, findings: list[Finding]) -> BoolArray:
+    """Return which rows hold a finite reading; say how many of those wanted do not."""
+    label, finite = channel.label, np.isfinite(channel.values)
+    lost = wanted & ~finite
+    if not (wanted & finite).any():
+        raise NothingToMeasureError(
+            f"channel {label!r} holds no finite number" + ("" if not finite.any() else " in the chosen span"),
+            "numbers",
+            "check the column, and --from and --to",
+        )
+    if lost.any():
+        where = grid.seconds[lost]
+        findings.append(
+            Finding(
+                "not_finite",
+                float(where[0]),
+                float(where[-1]),
+                float(where.size),
+                "samples",
+                excluded=True,
+                because=f"{plural(where.size, 'cell')} empty, NaN or infinite",
+                disposition="treated as missing samples",
+            )
+        )
+    use = np.asarray(wanted & finite)
+    if channel.reference is not None:
+        use &= np.isfinite(channel.reference) & (channel.reference != 0)
+    largest = max(float(channel.values.max(where=use, initial=0.0)), -float(channel.values.min(where=use, initial=0.0)))
+    _require_readings(label, largest)
+    return use
+
+
+def _require_readings(label: str, largest: float) -> None:
+    if largest > LARGEST_READING:
+        raise LogError(
+            f"channel {label!r} holds a value of {largest:.3g}",
+            f"readings below {LARGEST_READING:g}",
+            'if it marks missing data, list it as missing = ["..."] under [log] in a log sheet',
+        )
 
 
 def _known_input(sheet: LogSheet, section: ChannelSection | None, quantity: str, findings: list[Finding]) -> float:
@@ -234,7 +253,7 @@ def _chosen(
 
 def _whole(grid: Grid) -> bool:
     """Whether every place of the grid has its row."""
-    return bool(
+    return grid.placed is None or bool(
         grid.kept.all()
         and grid.index[-1] - grid.index[0] == grid.index.size - 1
         and grid.segment[-1] == grid.segment[0]

@@ -7,6 +7,7 @@ import numpy as np
 
 from stillbench.foundation.arrays import FloatArray
 from stillbench.foundation.errors import UnitError, UsageError
+from stillbench.foundation.scratch import blocks, large_array
 from stillbench.foundation.units import (
     ACCELERATION,
     ANGLE,
@@ -79,11 +80,17 @@ class Conversion:
         reference : (n,) float array, optional
             Of a ratiometric output: readings count at the nominal reference.
         """
-        if reference is not None and self.nominal is not None:
-            with np.errstate(divide="ignore", invalid="ignore"):
-                values = values * (self.nominal / reference)
-        with np.errstate(over="ignore", invalid="ignore"):
-            return (values + self.shift / self.gain) * self.gain if self.shift else values * self.gain
+        made = large_array(values.size)
+        with np.errstate(over="ignore", invalid="ignore", divide="ignore"):
+            for part in blocks(values.size):
+                block = made[part]
+                if reference is not None and self.nominal is not None:
+                    np.multiply(values[part], self.nominal / reference[part], out=block)
+                    block += self.shift / self.gain
+                else:
+                    np.add(values[part], self.shift / self.gain, out=block)
+                block *= self.gain
+        return made
 
 
 def convert(channel: Channel, front_end: FrontEnd | None, interval: float) -> Conversion:

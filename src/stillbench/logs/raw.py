@@ -6,6 +6,7 @@ import numpy as np
 
 from stillbench.foundation.arrays import FloatArray
 from stillbench.foundation.errors import LogError, UsageError
+from stillbench.foundation.scratch import blocks, large_array
 from stillbench.foundation.suggestions import plural
 from stillbench.logs.contents import Contents
 from stillbench.logs.formats import Format
@@ -13,8 +14,6 @@ from stillbench.logs.table import Table
 from stillbench.vocabulary.log_sheet import LogSection
 
 WIDTHS = {"int8": 1, "int16": 2, "int24": 3, "int32": 4, "float32": 4, "float64": 8}
-BLOCK = 1 << 20
-"""Samples converted at a time."""
 
 
 class RawTable(Table):
@@ -78,9 +77,9 @@ class RawTable(Table):
     def numbers(self, indices: Sequence[int]) -> list[FloatArray]:
         arrays = []
         for index in indices:
-            values = np.empty(self._frames.shape[0])
-            for first in range(0, values.size, BLOCK):
-                values[first : first + BLOCK] = self._converted(self._frames[first : first + BLOCK, index])
+            values = large_array(self._frames.shape[0])
+            for part in blocks(values.size):
+                values[part] = self._converted(self._frames[part, index])
             arrays.append(values)
         return arrays
 

@@ -28,6 +28,13 @@ def hole_limit(holes: IntArray, n_samples: int) -> int:
     return 1 if limit == 0 and lost[1] <= SINGLES_SHARE * n_samples else limit
 
 
+def whole_run(values: FloatArray, start: float = 0.0) -> tuple[FloatArray, BoolArray, tuple[Run, ...], int]:
+    """Return values of which none is missing as their own run, in the form of ``build_runs``."""
+    if values.size < SHORTEST_RUN:
+        return np.empty(0), np.empty(0, dtype=bool), (), values.size
+    return values, np.broadcast_to(np.False_, values.shape), (Run(0, values.size, start),), 0
+
+
 def build_runs(
     values: FloatArray, index: IntArray, segment: IntArray, seconds: FloatArray
 ) -> tuple[FloatArray, BoolArray, tuple[Run, ...], int]:
@@ -49,8 +56,7 @@ def build_runs(
     if not values.size:
         return np.empty(0), np.empty(0, dtype=bool), (), 0
     if values.size >= SHORTEST_RUN and index[-1] - index[0] == values.size - 1 and segment[0] == segment[-1]:
-        # Nothing is missing: the values are their own run.
-        return values, np.zeros(values.size, dtype=bool), (Run(0, values.size, float(seconds[0])),), 0
+        return whole_run(values, float(seconds[0]))
     steps = np.diff(index)
     apart = np.diff(segment) != 0
     limit = hole_limit((steps - 1)[(steps > 1) & ~apart], values.size)

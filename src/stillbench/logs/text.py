@@ -11,6 +11,7 @@ import numpy as np
 
 from stillbench.foundation.arrays import FloatArray
 from stillbench.foundation.errors import CellError, LogError
+from stillbench.foundation.scratch import LARGE, blocks, large_array
 from stillbench.foundation.suggestions import plural
 from stillbench.logs.contents import Contents
 from stillbench.logs.formats import Format
@@ -33,6 +34,7 @@ _BLANKS = re.compile(rb"[ \t]+")
 _EDGE_BLANKS = re.compile(rb"(?m)^[ \t]+|[ \t]+(?=\r?$)")
 _ROWS = re.compile(rb"(?m)^[^\r\n]*[^\s][^\r\n]*")
 _COMMENT_LINES = re.compile(rb"(?m)^[ \t]*(?:#|%|!|//).*(?:\r?\n|\r|$)")
+BLOCK_BYTES = 1 << 20
 MISFITS = 3
 MISFIT_SHARE = 1e-3
 """Torn lines that are taken as missing samples; with more than these it is not a table."""
@@ -163,31 +165,12 @@ class TextTable(Table):
         from pyarrow import csv  # noqa: PLC0415
 
         misfits: list[tuple[int, str]] = []
-
-        def misfit(row: csv.InvalidRow) -> str:
-            misfits.append((row.number or 0, row.text))
-            return "skip"
-
         if as_text:
             self._take_heads_out()
         numbered = as_text or self._numbered
-
-        names = [str(i) for i in range(self.layout.columns)]
-        kind = pa.string() if as_text else pa.float64()
-        delimiter = "\t" if self.layout.delimiter == " " else self.layout.delimiter
         try:
             table = csv.read_csv(
-                self._stream(),
-                read_options=csv.ReadOptions(column_names=names, use_threads=not numbered),
-                parse_options=csv.ParseOptions(delimiter=delimiter, invalid_row_handler=misfit),
-                convert_options=csv.ConvertOptions(
-                    include_columns=[str(i) for i in indices],
-                    column_types={str(i): kind for i in indices},
-                    null_values=list(self._missing),
-                    strings_can_be_null=False,
-                    decimal_point=self.layout.decimal,
-                    check_utf8=False,
-                ),
+                self._stream(), **self._options(indices, misfits, as_text=as_text, threads=not numbered)
             )
         except pa.ArrowInvalid as error:
             if self._take_heads_out():
@@ -203,6 +186,62 @@ class TextTable(Table):
             return self._convert(indices, as_text=as_text)
         columns = [table.column(str(i)) for i in indices]
         return self._with_holes(columns, true_misfits) if true_misfits else columns
+
+    def _options(
+        self, indices: Sequence[int], misfits: list[tuple[int, str]], *, as_text: bool, threads: bool
+    ) -> dict[str, Any]:
+        """Return the options of the library reader; rows that do not fit go into ``misfits``."""
+        import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
+        from pyarrow import csv  # noqa: PLC0415
+
+        def misfit(row: csv.InvalidRow) -> str:
+            misfits.append((row.number or 0, row.text))
+            return "skip"
+
+        kind = pa.string() if as_text else pa.float64()
+        delimiter = "\t" if self.layout.delimiter == " " else self.layout.delimiter
+        names = [str(i) for i in range(self.layout.columns)]
+        return {
+            "read_options": csv.ReadOptions(column_names=names, use_threads=threads, block_size=BLOCK_BYTES),
+            "parse_options": csv.ParseOptions(delimiter=delimiter, invalid_row_handler=misfit),
+            "convert_options": csv.ConvertOptions(
+                include_columns=[str(i) for i in indices],
+                column_types={str(i): kind for i in indices},
+                null_values=list(self._missing),
+                strings_can_be_null=False,
+                decimal_point=self.layout.decimal,
+                check_utf8=False,
+            ),
+        }
+
+    def _streamed(self, indices: Sequence[int]) -> list[FloatArray] | None:
+        """Read columns block by block into scratch files; None where a row does not fit, which wants the whole table."""
+        import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
+        from pyarrow import csv  # noqa: PLC0415
+
+        room = self._rows_at_most()
+        arrays, rows = [large_array(room) for _ in indices], 0
+        misfits: list[tuple[int, str]] = []
+        try:
+            with csv.open_csv(self._stream(), **self._options(indices, misfits, as_text=False, threads=True)) as reader:
+                for batch in reader:
+                    if misfits or rows + batch.num_rows > room:
+                        return None
+                    for array, column in zip(arrays, batch.columns, strict=True):
+                        array[rows : rows + batch.num_rows] = column.to_numpy(zero_copy_only=False)
+                    rows += batch.num_rows
+        except pa.ArrowInvalid:
+            return None
+        return None if misfits else [array[:rows] for array in arrays]
+
+    def _rows_at_most(self) -> int:
+        """Return more rows than the body can hold, from the shortest lines of its sample."""
+        shortest = min((len(line.encode()) for line in self._sample if line.strip()), default=1)
+        return len(self._body) // max(1, shortest - 2) + 1
+
+    def _is_large(self) -> bool:
+        lines = [len(line.encode()) + 1 for line in self._sample if line.strip()]
+        return bool(lines) and len(self._body) / (sum(lines) / len(lines)) >= LARGE
 
     def _stream(self) -> Any:  # noqa: ANN401  of the library
         """Return the rows of data: from the file itself where they stand there as they are, so that no page is mapped twice."""
@@ -308,6 +347,10 @@ class TextTable(Table):
     def numbers(self, indices: Sequence[int]) -> list[FloatArray]:
         import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
 
+        if self._is_large() and (found := self._streamed(indices)) is not None:
+            for array in found:
+                self._take_marks_out(array)
+            return found
         early = [index for index in self._expected if index not in indices]
         fresh = [index for index in indices if index not in self._waiting]
         if fresh:
@@ -325,11 +368,18 @@ class TextTable(Table):
                 raise TypeError(type(column))
             array = np.asarray(column.to_numpy(), dtype=np.float64)
             del column
-            for mark in self._marks:  # however it is written in the file
-                array[array == mark] = np.nan
+            if self._marks and not array.flags.writeable:
+                array = array.copy()
+            self._take_marks_out(array)
             arrays.append(array)
         pa.default_memory_pool().release_unused()
         return arrays
+
+    def _take_marks_out(self, array: FloatArray) -> None:
+        """Make NaN of the marks of missing samples, however they are written in the file."""
+        for mark in self._marks:
+            for part in blocks(array.size):
+                array[part][array[part] == mark] = np.nan
 
     def texts(self, index: int) -> Sequence[str]:
         import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read

@@ -64,7 +64,8 @@ def find_stuck(view: RecordView) -> Outcome:
     """Mark stretches of equal values too long for chance."""
     record = view.record
     values = record.present()
-    equal = np.append(False, values[1:] == values[:-1])
+    equal = np.zeros(values.size, dtype=bool)
+    np.equal(values[1:], values[:-1], out=equal[1:])
     threshold = max(4.0, longest_chance_run(values, np.count_nonzero(equal) / max(1, values.size - 1)))
     starts, lengths = equal_runs(equal)
     stuck = np.flatnonzero(lengths >= threshold)

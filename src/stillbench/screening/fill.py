@@ -12,6 +12,7 @@ missing samples given the slow course, a few times over (M. A. Tanner and W. H. 
 import numpy as np
 
 from stillbench.foundation.arrays import BoolArray, FloatArray
+from stillbench.foundation.scratch import blocks, large_array
 from stillbench.likelihood.bins import cosine_transform
 from stillbench.likelihood.whitened import smooth_spectrum
 from stillbench.vocabulary.record import Record
@@ -21,6 +22,8 @@ REACH = 24
 SEED = 52_711
 REFINED_SHARE = 1e-3
 SHORTEST_REFINED = 512
+LONGEST_REFINED = 1 << 24
+"""Samples drawn together; longer runs are gone through in such parts."""
 SWEEPS = 6
 WHITE_SHARE = 0.9
 """Of the lowest power of the spectrum that is taken as white: the rest is course."""
@@ -63,7 +66,8 @@ def fill_holes(record: Record) -> FloatArray:
     """
     if not record.missing.any():
         return record.values
-    filled = record.values.copy()
+    filled = large_array(record.values.size)
+    filled[:] = record.values
     generator = np.random.default_rng(SEED)
     white, walk = local_strengths(record.pieces())
     white = max(white, np.finfo(float).tiny)
@@ -87,7 +91,9 @@ def fill_holes(record: Record) -> FloatArray:
             drawn = root @ generator.standard_normal(last - first)
             piece[first:last] = level + weights @ (piece[places] - level) + drawn
         if np.count_nonzero(absent) > REFINED_SHARE * absent.size and absent.size >= SHORTEST_REFINED:
-            _refine(piece, absent, generator)
+            for part in blocks(absent.size, LONGEST_REFINED):
+                if absent[part].any() and part.stop - part.start >= SHORTEST_REFINED:
+                    _refine(piece[part], absent[part], generator)
     return filled
 
 

@@ -3,6 +3,7 @@
 import numpy as np
 
 from stillbench.foundation.arrays import FloatArray, IntArray
+from stillbench.foundation.scratch import blocks
 
 BLOCK = 64
 STRETCH = 4_096
@@ -31,8 +32,8 @@ def _medians(values: FloatArray, starts: IntArray, length: int) -> FloatArray:
     return medians
 
 
-def level_of(values: FloatArray) -> FloatArray:
-    """Return the slow course of one run: medians of 64 samples, joined by straight lines; shape (n,)."""
+def take_level_off(values: FloatArray, residual: FloatArray) -> None:
+    """Put into ``residual`` the samples of one run less its slow course: medians of 64 samples, joined by straight lines."""
     block = min(BLOCK, max(8, values.size // 8))
     count = max(1, values.size // block)
     edges = np.linspace(0, values.size, count + 1).astype(np.int64)
@@ -41,4 +42,6 @@ def level_of(values: FloatArray) -> FloatArray:
     for length in np.unique(lengths):  # two neighbouring lengths at most
         own = lengths == length
         medians[own] = _medians(values, edges[:-1][own], int(length))
-    return np.interp(np.arange(values.size), (edges[:-1] + edges[1:] - 1) / 2.0, medians)
+    middles = (edges[:-1] + edges[1:] - 1) / 2.0
+    for part in blocks(values.size):
+        np.subtract(values[part], np.interp(np.arange(part.start, part.stop), middles, medians), out=residual[part])

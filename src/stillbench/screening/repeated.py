@@ -26,6 +26,8 @@ SIGNIFICANT = 6.0
 """Sum of unit phasors over the square root of their number; chance reaches 4 over the frequencies tried."""
 COHERENT_SHARE = 0.5
 SEED = 20_011
+MOST_COMPARED = 1 << 24
+"""Samples in which a hold is looked for."""
 
 
 def mean_hold(values: FloatArray) -> tuple[float, float, float]:
@@ -114,7 +116,7 @@ def undo_repeats(record: Record) -> tuple[Record, tuple[Finding, ...]]:
     values = record.values[longest.first : longest.last]
     if values.size < FEWEST_SAMPLES:
         return record, ()
-    hold, score, ties = mean_hold(values)
+    hold, score, ties = mean_hold(values[:MOST_COMPARED])
     if not np.isfinite(hold) or not (score > HOLD_SCORE and hold > SMALLEST_HOLD):
         return record, ()
     events = hold_events(values, hold)

@@ -3,10 +3,11 @@
 import numpy as np
 
 from stillbench.foundation.arrays import BoolArray, FloatArray, IntArray
+from stillbench.foundation.scratch import blocks, spread
 from stillbench.logs.runs import sample_times
 from stillbench.screening.level import row_medians
 from stillbench.screening.outcome import Outcome, nothing
-from stillbench.screening.view import RecordView
+from stillbench.screening.view import MOST_COMPARED, RecordView
 from stillbench.vocabulary.finding import Finding
 from stillbench.vocabulary.record import Record
 
@@ -64,25 +65,31 @@ def _robust(sizes: FloatArray) -> float:
 
 def find_spikes(view: RecordView) -> Outcome:
     """Mark samples far from the slow course and from their neighbours, unless the noise as a whole has heavy tails."""
-    record, size = view.record, np.abs(view.residual)
+    record, residual = view.record, view.residual
     # Readings in coarse steps have no spread of their own below a step.
     step = view.step or 0.0
-    scale = max(_robust(size), step)
+    scale = max(_robust(np.abs(spread(residual, MOST_COMPARED))), step)
     if scale == 0:
         return nothing(record)
     threshold = threshold_of(record.values.size)
-    off = size > SHOULDER * threshold * scale
-    if not off.any():
+    limit = SHOULDER * threshold * scale
+    off = np.concatenate(
+        [part.start + np.flatnonzero(np.abs(residual[part]) > limit) for part in blocks(residual.size)]
+    )
+    if not off.size:
         return nothing(record)
     local = max(_local_scale(record), step)
-    contrast = np.zeros(record.values.size)
+    contrast = np.empty(off.size)
     for run in record.runs:
-        places = np.flatnonzero(off[run.first : run.last])
-        contrast[run.first + places] = _contrast(record.values[run.first : run.last], places)
-    marked = (np.abs(contrast) > threshold * local) & (size > threshold * scale)
-    count = int(np.count_nonzero(marked))
+        own = (off >= run.first) & (off < run.last)
+        contrast[own] = _contrast(record.values[run.first : run.last], off[own] - run.first)
+    gross = (np.abs(contrast) > threshold * local) & (np.abs(residual[off]) > threshold * scale)
+    count = int(np.count_nonzero(gross))
     if not count:
         return nothing(record)
+    size_at = dict(zip(off[gross].tolist(), contrast[gross].tolist(), strict=True))
+    marked = np.zeros(record.values.size, dtype=bool)
+    marked[off[gross]] = True
     groups = _groups(marked)
     shoulder = int(np.count_nonzero(np.abs(contrast) > SHOULDER * threshold * local)) - count
     if count > LARGEST_SHARE * record.values.size or shoulder > max(3, count):
@@ -99,12 +106,12 @@ def find_spikes(view: RecordView) -> Outcome:
         )
         return Outcome((finding,), nothing(record).marked)
     times = sample_times(record)
-    peaks = [first + int(np.argmax(np.abs(contrast[first:last]))) for first, last in groups]
-    order = sorted(range(len(groups)), key=lambda i: -abs(contrast[peaks[i]]))
+    peaks = [max(range(first, last), key=lambda place: abs(size_at[place])) for first, last in groups]
+    order = sorted(range(len(groups)), key=lambda i: -abs(size_at[peaks[i]]))
     findings = []
     for i in sorted(order[:LISTED]):
         first, last = groups[i]
-        deviations = contrast[peaks[i]] / local
+        deviations = size_at[peaks[i]] / local
         many = f"{last - first} samples in a row, the largest" if last - first > 1 else "one sample"
         findings.append(
             Finding(

@@ -5,9 +5,12 @@ from functools import cached_property
 import numpy as np
 
 from stillbench.foundation.arrays import FloatArray
-from stillbench.screening.level import level_of
+from stillbench.foundation.scratch import blocks, large_array, spread
+from stillbench.screening.level import take_level_off
 from stillbench.vocabulary.record import Record
 
+MOST_COMPARED = 1 << 24
+"""Values that are compared with each other; of a longer record stretches spread over it."""
 CONTINUOUS_SHARE = 8
 """With more distinct values than an eighth of the samples the readings count as continuous."""
 
@@ -21,10 +24,9 @@ class RecordView:
     @cached_property
     def residual(self) -> FloatArray:
         """Samples less the slow course of their run; shape (n,), NaN in holes."""
-        residual = np.empty(self.record.values.size)
+        residual = large_array(self.record.values.size)
         for run in self.record.runs:
-            piece = self.record.values[run.first : run.last]
-            np.subtract(piece, level_of(piece), out=residual[run.first : run.last])
+            take_level_off(self.record.values[run.first : run.last], residual[run.first : run.last])
         return residual
 
     @cached_property
@@ -33,8 +35,12 @@ class RecordView:
 
         What dithers a converter is all noise that is fast against the averages taken of it, filtered or not.
         """
-        known = self.residual if not self.record.missing.any() else self.residual[~self.record.missing]
-        return float(np.sqrt(known @ known / known.size))
+        total, count = 0.0, 0
+        for part in blocks(self.residual.size):
+            known = self.residual[part][~self.record.missing[part]]
+            total += float(known @ known)
+            count += known.size
+        return float(np.sqrt(total / count))
 
     @cached_property
     def step(self) -> float | None:
@@ -42,7 +48,7 @@ class RecordView:
 
         The smallest gaps between distinct values, the mean of those below one and a half of the smallest.
         """
-        values = self.record.present()
+        values = spread(self.record.present(), MOST_COMPARED)
         levels = np.unique(values)
         if levels.size > values.size / CONTINUOUS_SHARE or levels.size < 2:  # noqa: PLR2004  one level has no gap
             return self.record.step
