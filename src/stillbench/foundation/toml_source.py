@@ -96,9 +96,16 @@ def explain(error: ValidationError, model: type[BaseModel], lines: dict[Location
             message = entry["msg"].removeprefix("Value error, ").removesuffix(".")
             what = f"{_spoken(location)}: {message[0].lower()}{message[1:]}"
             if not isinstance(entry["input"], dict | list):
-                what += f" (found {str(entry['input'])[:60]!r})"
+                what += f" (found {_shown(entry['input'])!r})"
         faults.append((line or 0, where + what))
     return [text for _, text in sorted(faults, key=lambda fault: fault[0])]
+
+
+def _shown(value: object) -> str:
+    try:
+        return str(value)[:60]
+    except ValueError:  # an integer of thousands of digits
+        return "a number of very many digits"
 
 
 def load_toml(path: Path, model: type[Model], kind: str) -> Model:
@@ -118,6 +125,10 @@ def load_toml(path: Path, model: type[Model], kind: str) -> Model:
         text = path.read_bytes().decode("utf-8-sig")
     except UnicodeDecodeError as error:
         raise TextFileError(path.name, [f"byte {error.start}: not UTF-8"]) from error
+    except ValueError as error:  # a name that no file can have
+        raise UsageError(
+            f"cannot read the {kind} {str(path)!r}: {error}", f"a TOML file ({kind})", "check the name"
+        ) from error
     except OSError as error:
         raise UsageError(
             f"cannot read the {kind} {str(path)!r}: {error.strerror}", f"a TOML file ({kind})", "check the name"

@@ -112,6 +112,8 @@ class Unit:
 
 
 DEGREE = math.pi / 180.0
+LONGEST_TEXT = 80
+LARGEST_POWER = 12
 
 _SYMBOLS: dict[str, tuple[float, Dimension]] = {
     "rad": (1.0, ANGLE),
@@ -352,10 +354,17 @@ def parse_unit(text: str) -> Unit:
     UnitError
         When a part is not in the closed list, or the expression does not parse.
     """
+    if len(text) > LONGEST_TEXT:
+        raise UnitError(text[:40], f"a unit of {len(text)} characters", "a unit such as deg/s")
     parser = _Parser(text)
     if not parser.tokens:
         raise parser.fault("an empty unit")
-    factors = parser.unit()
+    try:
+        factors = parser.unit()
+    except (ZeroDivisionError, ValueError, OverflowError) as error:
+        raise parser.fault(f"a power in the unit {text!r} cannot be read") from error
+    if any(abs(power) > LARGEST_POWER for _, power in factors):
+        raise parser.fault(f"a power beyond {LARGEST_POWER} in the unit {text!r}")
     if parser.at < len(parser.tokens):
         raise parser.fault(f"cannot read {parser.tokens[parser.at][1]!r} in the unit {text!r}")
     factor = 1.0

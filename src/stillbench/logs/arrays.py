@@ -11,6 +11,7 @@ from stillbench.foundation.arrays import FloatArray, IntArray
 from stillbench.foundation.errors import LogError
 from stillbench.foundation.scratch import LARGE, blocks, large_array
 from stillbench.logs.contents import LARGEST_EXPANDED, LARGEST_RATIO, RATIO_COUNTS_FROM, ZIP_MAGIC, Contents
+from stillbench.logs.dates import FIRST_YEAR, LAST_YEAR
 from stillbench.logs.formats import Format
 from stillbench.logs.table import Table
 from stillbench.vocabulary.log_sheet import LogSection
@@ -49,6 +50,12 @@ class ArrayTable(Table):
         column = self._columns[index]
         if column.dtype.kind != "M":
             return None
+        years = column.astype("M8[Y]").astype(np.int64) + 1970
+        if np.isnat(column).any() or years.min() < FIRST_YEAR or years.max() > LAST_YEAR:
+            raise LogError(
+                f"the time column {self.heads[index]!r} holds no instant in a row, or one outside {FIRST_YEAR} to {LAST_YEAR}",
+                "a date-time in every row",
+            )
         return column.astype("M8[ns]").astype(np.int64), self._utc
 
     def texts(self, index: int) -> Sequence[str]:
@@ -67,7 +74,10 @@ def columns_of(array: np.ndarray, name: str, prefix: str = "") -> dict[str, np.n
         For more than two dimensions, none, or no rows.
     """
     if array.dtype.names:
-        return {f"{prefix}{field}": np.atleast_1d(array[field]) for field in array.dtype.names}
+        made = {f"{prefix}{field}": np.atleast_1d(array[field]) for field in array.dtype.names}
+        if any(column.ndim != 1 for column in made.values()):
+            raise LogError(f"{name!r} holds fields of more than one number", "fields of single numbers")
+        return made
     if array.ndim == 1:
         return {prefix.rstrip(".") or "1": array}
     if array.ndim == 2:  # noqa: PLR2004
@@ -94,7 +104,12 @@ def _load(contents: Contents) -> dict[str, np.ndarray]:
         columns: dict[str, np.ndarray] = {}
         with np.load(io.BytesIO(contents.data), allow_pickle=False) as bundle:
             for key in bundle.files:
-                columns |= columns_of(bundle[key], contents.name, prefix=f"{key}.")
+                made = columns_of(np.asanyarray(bundle[key]), contents.name, prefix=f"{key}.")
+                if set(made) & set(columns):
+                    raise LogError(
+                        f"{contents.name!r} names {', '.join(sorted(set(made) & set(columns)))} twice", "distinct names"
+                    )
+                columns |= made
     except (
         ValueError,
         OSError,

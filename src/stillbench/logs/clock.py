@@ -395,6 +395,8 @@ def _place_by_row(seconds: FloatArray, segment: IntArray, kept: BoolArray) -> tu
     rows = np.arange(t.size)
     group = s.copy()
     interval = _slope(t, rows, group)
+    if not interval > 0:
+        raise ClockError("the stamps hardly move", "stamps that rise", "use --time none --rate HZ")
     suspects = np.flatnonzero((steps > GAP_INTERVALS * interval) & (steps > 3.0 * np.quantile(steps, 0.999)))
     jumps = np.zeros(t.size, dtype=np.int64)
     for i in suspects:

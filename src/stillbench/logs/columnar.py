@@ -9,6 +9,7 @@ from stillbench.foundation.arrays import FloatArray, IntArray
 from stillbench.foundation.errors import LogError
 from stillbench.logs.contents import Contents, check_expansion
 from stillbench.logs.formats import Format
+from stillbench.logs.layout import distinct
 from stillbench.logs.table import Table
 from stillbench.vocabulary.log_sheet import LogSection
 
@@ -37,9 +38,11 @@ class ColumnarTable(Table):
                 self._rows = sum(self._file.get_batch(i).num_rows for i in range(self._file.num_record_batches))
         except (pa.ArrowException, OSError, ValueError) as error:
             raise self._damaged(error) from error
-        self._types = [field.type for field in schema]
+        self._types, self._names = [field.type for field in schema], list(schema.names)
+        if not self._names:
+            raise LogError(f"{contents.name!r} has no columns", "columns of numbers")
         super().__init__(
-            schema.names,
+            distinct(schema.names),
             f"{'Parquet' if parquet else 'Feather'}, {len(schema.names)} columns",
             has_heads=True,
         )
@@ -59,11 +62,17 @@ class ColumnarTable(Table):
         name = self.heads[index]
         try:
             if hasattr(self._file, "schema_arrow"):
-                return self._file.read(columns=[name]).column(0)
-            batches = [self._file.get_batch(i).column(index) for i in range(self._file.num_record_batches)]
-            return pa.chunked_array(batches)
-        except (pa.ArrowException, OSError, ValueError) as error:
+                plain = self._names.count(name) == 1 and not any(pa.types.is_nested(kind) for kind in self._types)
+                found = self._file.read(columns=[name]).column(0) if plain else self._file.read().column(index)
+            else:
+                batches = [self._file.get_batch(i).column(index) for i in range(self._file.num_record_batches)]
+                found = pa.chunked_array(batches)
+            found.validate(full=True)
+        except (pa.ArrowException, OSError, ValueError, SystemError) as error:
             raise self._damaged(error) from error
+        if len(found) != self._rows:
+            raise self._damaged(ValueError(f"column {name!r} has {len(found)} of {self._rows} rows"))
+        return found
 
     def numbers(self, indices: Sequence[int]) -> list[FloatArray]:
         import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read

@@ -2,7 +2,9 @@
 
 import gzip
 import hashlib
+import lzma
 import mmap
+import struct
 import zipfile
 import zlib
 from concurrent.futures import Future, ThreadPoolExecutor
@@ -66,9 +68,12 @@ def open_contents(path: Path) -> Contents:
     LogError
         When the file is missing, a folder, empty, a spreadsheet, damaged, or expands beyond reason.
     """
-    if path.is_dir() and any((path / name).is_file() for name in BAG_FILES):
-        return _folder(path)
-    size = _checked_size(path)
+    try:
+        if path.is_dir() and any((path / name).is_file() for name in BAG_FILES):
+            return _folder(path)
+        size = _checked_size(path)
+    except OSError as error:
+        raise LogError(f"{str(path)[:80]!r} cannot be opened ({error.strerror})", "a log file") from error
     try:
         with path.open("rb") as stream:
             magic = stream.read(8)
@@ -89,7 +94,18 @@ def open_contents(path: Path) -> Contents:
             return Contents(path.name, mapped, size, digest, "", path)
     except PermissionError as error:
         raise UsageError(f"{str(path)!r} cannot be read: permission denied", "a file that you may read") from error
-    except (OSError, zlib.error, EOFError, zipfile.BadZipFile, NotImplementedError, RuntimeError) as error:
+    except (
+        OSError,
+        zlib.error,
+        lzma.LZMAError,
+        EOFError,
+        zipfile.BadZipFile,
+        NotImplementedError,
+        RuntimeError,
+        UnicodeDecodeError,
+        IndexError,
+        struct.error,
+    ) as error:
         raise LogError(
             f"{path.name!r} is damaged or cannot be expanded ({error})", "a whole file", "fetch the log again"
         ) from error
@@ -128,7 +144,9 @@ def _folder(path: Path) -> Contents:
     files = sorted(inner for inner in path.iterdir() if inner.is_file())
     digest = hashlib.sha256()
     for inner in files:
-        digest.update(inner.read_bytes())
+        with inner.open("rb") as stream:
+            while chunk := stream.read(CHUNK):
+                digest.update(chunk)
     future: Future[str] = Future()
     future.set_result(digest.hexdigest())
     return Contents(path.name, b"", sum(inner.stat().st_size for inner in files), future, "", path, folder=True)

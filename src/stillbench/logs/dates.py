@@ -14,17 +14,19 @@ if TYPE_CHECKING:
 
 DAY = 86_400 * 10**9
 """Nanoseconds."""
+FIRST_YEAR, LAST_YEAR = 1700, 2250
+"""Nanoseconds of 64 bits reach a little further to both sides."""
 MONTHS = ("jan", "feb", "mar", "apr", "may", "jun", "jul", "aug", "sep", "oct", "nov", "dec")
 CLEARLY_SHORTER = 5.0
 """Times by which one order of day and month must make the log shorter than the other to be taken without asking."""
 
-_ISO = r"\d{4}-\d{1,2}-\d{1,2}(?:[T ]\d{1,2}:\d{2}(?::\d{2}(?:[.,]\d+)?)?)?\s?(?:Z|[+-]\d{2}:?\d{2})?"
+ISO = r"\d{4}-\d{1,2}-\d{1,2}(?:[T ]\d{1,2}:\d{2}(?::\d{2}(?:[.,]\d+)?)?)?\s?(?:Z|[+-]\d{2}:?\d{2})?"
 _DATE = rf"\d{{4}}[-/.]\d{{1,2}}[-/.]\d{{1,2}}|\d{{1,2}}[-/. ](?:\d{{1,2}}|(?:{'|'.join(MONTHS)})[a-z]*)[-/. ]\d{{4}}"
 _CLOCK = r"\d{1,2}:\d{2}(?::\d{2}(?:[.,]\d+)?)?(?:\s?[ap]\.?m\.?)?"
-_IS_ISO = re.compile(_ISO)
-_IS_DATE = re.compile(_DATE, re.IGNORECASE)
-_IS_CLOCK = re.compile(_CLOCK, re.IGNORECASE)
-_IS_STAMP = re.compile(rf"(?:{_DATE})(?:[T ]\s*{_CLOCK})?|{_CLOCK}", re.IGNORECASE)
+_IS_ISO = re.compile(ISO, re.ASCII)
+_IS_DATE = re.compile(_DATE, re.IGNORECASE | re.ASCII)
+_IS_CLOCK = re.compile(_CLOCK, re.IGNORECASE | re.ASCII)
+_IS_STAMP = re.compile(rf"(?:{_DATE})(?:[T ]\s*{_CLOCK})?|{_CLOCK}", re.IGNORECASE | re.ASCII)
 _PARTS = (
     r"^\s*(?:(?P<first>\d{1,4})[-/. ](?P<second>\w{1,9})[-/. ](?P<third>\d{1,4}))?[T\s]*"
     r"(?:(?P<hour>\d{1,2}):(?P<minute>\d{2})(?::(?P<second_of_minute>\d{2})(?:[.,](?P<fraction>\d+))?)?"
@@ -79,7 +81,7 @@ def read_stamps_text(texts: Sequence[str], order: str | None, head: str) -> tupl
     """
     import pandas as pd  # noqa: PLC0415  heavy, wanted only for written dates
 
-    parts = pd.Series(texts, dtype="str").str.extract(_PARTS)
+    parts = pd.Series(texts, dtype="str").str.extract(_PARTS, flags=re.ASCII)
     dated = parts["first"].notna().to_numpy()
     timed = parts["hour"].notna().to_numpy()
     for bad, wanted in (
@@ -108,6 +110,7 @@ def _time_of_day(parts: "pd.DataFrame", texts: Sequence[str], head: str) -> IntA
     hour, minute, second = (_whole(parts[name]) for name in ("hour", "minute", "second_of_minute"))
     half = parts["half"].str.lower()
     if half.notna().any():
+        _refuse(half.isna().to_numpy(dtype=bool), texts, head, "am or pm in every row")
         _refuse((hour > 12) | (hour < 1), texts, head, "hours from 1 to 12 beside am and pm")  # noqa: PLR2004
         hour = hour % 12 + 12 * (half == "p").to_numpy()
     # 24:00:00 ends a day, and 60 is the second that is put in.
@@ -169,6 +172,7 @@ def _order(first: IntArray, second: IntArray, year: IntArray, clock: IntArray, e
 
 def _days(year: IntArray, month: IntArray, day: IntArray, texts: Sequence[str], head: str) -> IntArray:
     """Days from 1970-01-01."""
+    _refuse((year < FIRST_YEAR) | (year > LAST_YEAR), texts, head, f"a year from {FIRST_YEAR} to {LAST_YEAR}")
     _refuse((month < 1) | (month > 12) | (day < 1) | (day > 31), texts, head, "a date that exists")  # noqa: PLR2004
     months = (year - 1970).astype("M8[Y]").astype("M8[M]") + (month - 1)
     days = months.astype("M8[D]") + (day - 1)

@@ -1,11 +1,12 @@
 """The readers: one file each, chosen by content. Others are plugged in through the entry point group stillbench.readers."""
 
 import importlib
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
 from dataclasses import dataclass
 from importlib import metadata
 
-from stillbench.foundation.errors import LogError, UsageError
+from stillbench.foundation.errors import LogError, StillbenchError, UsageError
 from stillbench.foundation.suggestions import did_you_mean, listed
 from stillbench.logs.contents import Contents
 from stillbench.logs.table import Table
@@ -66,8 +67,30 @@ def read_table(contents: Contents, section: LogSection) -> Table:
         if chosen is None:
             hint = did_you_mean(section.format, names) or f"the formats are {listed(names)}"
             raise UsageError(f"there is no format {section.format!r}", "a format that can be read", hint)
-        return chosen.read(contents, section)
-    return next(known for known in formats if known.recognizes(contents)).read(contents, section)
+        return _read(chosen, contents, section)
+    return _read(next(known for known in formats if known.recognizes(contents)), contents, section)
+
+
+def _read(known: Format, contents: Contents, section: LogSection) -> Table:
+    """Read by one format; whatever a damaged binary file brings about in a library is said as damage."""
+    if "text" in known.names:
+        return known.read(contents, section)
+    with damage_said(contents.name):
+        return known.read(contents, section)
+
+
+@contextmanager
+def damage_said(name: str) -> Iterator[None]:
+    """Turn the errors of libraries over damaged binary files into one that says so; our own pass."""
+    try:
+        yield
+    except (StillbenchError, MemoryError):
+        raise
+    except Exception as error:
+        reason = f"{type(error).__name__}: {str(error).splitlines()[0][:80] if str(error) else 'no more is known'}"
+        raise LogError(
+            f"{name!r} is damaged or cannot be read ({reason})", "a whole file", "fetch the log again"
+        ) from error
 
 
 def missing_library(what: str, extra: str) -> LogError:

@@ -29,6 +29,10 @@ class JoinedTable(Table):
         self._tables = tables
         self.units = first.units
         self.rate = first.rate
+        if any(table.rate != first.rate for table in tables):
+            raise LogError(
+                "the files differ in their sampling rate", "files of one rate", "give those of one logger only"
+            )
         self.empty = frozenset.intersection(*(table.empty for table in tables))
         for table, name in zip(tables, names, strict=True):
             self.remarks += [f"{name}: {remark}" for remark in table.remarks]

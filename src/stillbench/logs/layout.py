@@ -21,9 +21,13 @@ _NUMBER = {
     ",": re.compile(r"[-+]?(?:\d+,?\d*|,\d+)(?:[eE][-+]?\d+)?|[-+]?(?:nan|inf|infinity)|", re.IGNORECASE),
 }
 _THOUSANDS = re.compile(r"[-+]?[1-9]\d{0,2}(?:,\d{3})+(?:\.\d+)?")
+_WHOLE_SECONDS = re.compile(r"(?:.*[ T])?\d{1,2}:\d{2}:\d{2}")
+_MILLISECONDS = re.compile(r"\d{3}")
 _EMPTY_WORDS = frozenset({"", "na", "n/a", "null", "none", "-", "--", "#n/a"})
 CONTROL_SHARE = 0.01
 FITTING_SHARE = 0.9
+MOST_TORN = 3
+"""Rows between the head and the first whole row that are taken as torn ones."""
 TAIL_SHARES = (2.0 / 3.0, 1.0 / 3.0, 1.0 / 6.0)
 FEWEST_TAIL = 12
 
@@ -104,7 +108,10 @@ def split_cells(line: str, delimiter: str) -> list[str]:
     if '"' in line:
         import csv  # noqa: PLC0415  quotes are rare in logs
 
-        return [cell.strip() for cell in next(csv.reader([line], delimiter=delimiter))]
+        try:
+            return [cell.strip() for cell in next(csv.reader([line], delimiter=delimiter))]
+        except csv.Error:
+            pass  # a stray quote: split as it stands
     return [cell.strip() for cell in line.split(delimiter)]
 
 
@@ -140,6 +147,14 @@ def _score(lines: Sequence[str], delimiter: str, decimal: str) -> tuple[float, i
     return count / len(lines), width
 
 
+def _without_marks(line: str, marks: Sequence[str]) -> str:
+    """Empty the cells that hold a mark of missing samples."""
+    for mark in marks:
+        if mark and mark in line:
+            line = re.sub(rf"(?<![^\t;, ]){re.escape(mark)}(?![^\t;, ])", "", line)
+    return line
+
+
 def _candidates(section: LogSection) -> list[tuple[str, str]]:
     given = {"tab": "\t", "blank": " "}.get(section.delimiter or "", section.delimiter)
     delimiters = (given,) if given else DELIMITERS
@@ -167,6 +182,7 @@ def find_layout(lines: Sequence[str], encoding: str, section: LogSection, name: 
     UsageError
         When two readings fit equally well.
     """
+    lines = [_without_marks(line, section.missing) for line in lines]
     body = [line for line in lines if not is_comment(line)]
     if section.head_lines is not None:
         body = [line for line in lines[section.head_lines :] if not is_comment(line)]
@@ -180,7 +196,12 @@ def find_layout(lines: Sequence[str], encoding: str, section: LogSection, name: 
     else:
         raise _not_a_table(body, best, scored, name)
     fitting = [entry for entry in scored if entry[0] >= best - 1e-9]
-    delimiter, decimal, width = _choose(fitting, body, lines, name)
+    if any(entry[2] == "\t" and entry[1] > 1 for entry in fitting):
+        fitting = [entry for entry in fitting if entry[2] != " "]  # blanks within cells, as in date-times
+    nearly = [entry for entry in scored if entry[0] >= FITTING_SHARE]
+    delimiter, decimal, width = _choose(fitting, nearly, body, lines, name)
+    if delimiter == "," and section.delimiter is None:
+        _refuse_parted_stamps(tail, name)
     heads, units, body_line = _find_head(lines, delimiter, decimal, width, section.head_lines)
     if decimal == "," and section.decimal is None:
         _refuse_thousands(tail, delimiter, name)
@@ -220,16 +241,33 @@ def _refuse_decimal_commas(lines: Sequence[str], body_line: int, width: int, nam
         )
 
 
+def _refuse_parted_stamps(rows: Sequence[str], name: str) -> None:
+    """Refuse to guess where a comma before the milliseconds of a date-time parts it like any other."""
+    cells = [split_cells(line, ",") for line in rows]
+    for index in range(min(map(len, cells)) - 1):
+        if all(_WHOLE_SECONDS.fullmatch(row[index]) and _MILLISECONDS.fullmatch(row[index + 1]) for row in cells):
+            shown = ",".join(cells[0][index : index + 2])
+            raise UsageError(
+                f"in {name!r} {shown!r} may be read in two ways: a stamp with milliseconds behind a comma, or a stamp and a number",
+                "one use of the comma",
+                'write the log with another delimiter, or delimiter = "," under [log] in a log sheet if these are two columns',
+            )
+
+
 def _choose(
-    fitting: list[tuple[float, int, str, str]], body: Sequence[str], lines: Sequence[str], name: str
+    fitting: list[tuple[float, int, str, str]],
+    nearly: list[tuple[float, int, str, str]],
+    body: Sequence[str],
+    lines: Sequence[str],
+    name: str,
 ) -> tuple[str, str, int]:
     """Among readings that fit all lines, take the widest; refuse to guess where a comma may be either mark."""
     _, width, delimiter, decimal = max(fitting, key=lambda entry: (entry[1], -DELIMITERS.index(entry[2])))
     same = [mark for _, w, d, mark in fitting if d == delimiter and w == width]
     if len(same) > 1:
         decimal = "."  # no cell of the sample holds either mark
-    comma = next((entry for entry in fitting if entry[2] == ","), None)
-    decimal_comma = next((entry for entry in fitting if entry[3] == "," and entry[2] != ","), None)
+    comma = next((entry for entry in nearly if entry[2] == ","), None)
+    decimal_comma = next((entry for entry in nearly if entry[3] == "," and entry[2] != ","), None)
     if delimiter == "," and comma and decimal_comma and decimal_comma[1] < comma[1]:
         head = _find_head(lines, ",", ".", comma[1], None)[0]
         sample = body[-1][:40]
@@ -256,7 +294,9 @@ def _find_head(
                 break
         first += 1
     units_row: list[str] | None = None
-    for line in reversed(lines[:first]):
+    above = first
+    for number in range(first - 1, -1, -1):
+        line = lines[number]
         stripped = line.strip().lstrip("#%!/").strip()
         if not stripped:
             continue
@@ -267,9 +307,13 @@ def _find_head(
             if _are_units(cells) and units_row is None:
                 units_row = cells
                 continue
-            return _distinct(cells), units_row, first
+            return distinct(cells), units_row, above
+        torn = any(is_number(cell, decimal) for cell in cells) or (len(cells) == width and not any(cells))
+        if head_lines is None and first - number <= MOST_TORN and torn:
+            above = number  # a torn row, before the first whole one
+            continue
         break
-    return (None if units_row is None else _distinct(units_row)), None, first
+    return (None if units_row is None else distinct(units_row)), None, first
 
 
 def _are_units(cells: Sequence[str]) -> bool:
@@ -286,7 +330,7 @@ def _are_units(cells: Sequence[str]) -> bool:
     return len(named) > 1 and all(map(is_unit, named))
 
 
-def _distinct(cells: Sequence[str]) -> list[str]:
+def distinct(cells: Sequence[str]) -> list[str]:
     """Give empty heads their number and repeated heads a suffix, so that each names one column."""
     heads: list[str] = []
     for number, cell in enumerate(cells, start=1):

@@ -16,7 +16,7 @@ def pattern_of(text: str) -> re.Pattern[str]:
     """
     try:
         pattern = re.compile(text)
-    except re.error as error:
+    except (re.error, OverflowError, RecursionError) as error:
         raise UsageError(
             f"line_pattern {text!r} is no regular expression ({error})", "a regular expression with named groups"
         ) from error

@@ -6,6 +6,7 @@ The open specification of the format, version 0: records of an opcode (one byte)
 from memory, checked by files that another library writes.
 """
 
+import re
 import struct
 from collections.abc import Iterator
 from typing import Any
@@ -13,15 +14,18 @@ from typing import Any
 from stillbench.foundation.errors import LogError
 from stillbench.foundation.suggestions import plural
 from stillbench.logs.arrays import ArrayTable
-from stillbench.logs.contents import LARGEST_EXPANDED, Contents
+from stillbench.logs.contents import LARGEST_EXPANDED, Contents, check_expansion
 from stillbench.logs.formats import Format, missing_library
 from stillbench.logs.messages import chosen_topic, flat_numbers, table_of_messages
 from stillbench.vocabulary.log_sheet import LogSection
 
 MAGIC = b"\x89MCAP0\r\n"
+LARGEST_NUMBER, LARGEST_INSTANT = 1e300, 1 << 62
 SCHEMA, CHANNEL, MESSAGE, CHUNK, DATA_END = 0x03, 0x04, 0x05, 0x06, 0x0F
 HEAD = 9
 PIECE = 1 << 16
+LONGEST_FIXED = 5
+"""Digits of the length of a fixed array in a message definition; longer ones are no sensor's."""
 
 
 class _Cut(Exception):  # noqa: N818  an end, no fault
@@ -59,8 +63,7 @@ def _expanded(body: memoryview) -> memoryview:
         return packed
     import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
 
-    if size > LARGEST_EXPANDED or size > 2000 * len(packed):
-        raise LogError(f"a chunk declares {size} bytes, packed into {len(packed)}", "a chunk of messages")
+    check_expansion(size, len(packed), "a chunk")
     if compression not in ("zstd", "lz4"):
         raise LogError(f"its chunks are packed by {compression[:20]!r}", "zstd, lz4 or none")
     stream = pa.CompressedInputStream(pa.BufferReader(pa.py_buffer(packed)), compression)
@@ -84,13 +87,16 @@ class _Scan:
         self.ended = False
         import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
 
+        self._expanded = 0
         try:
             self._take(data)
         except (_Cut, struct.error, pa.ArrowException, OSError):
             self.cut = True
 
-    def _take(self, data: memoryview) -> None:
+    def _take(self, data: memoryview, *, within: bool = False) -> None:
         for kind, body in _records(data):
+            if kind == 0:
+                raise _Cut
             if kind == DATA_END:
                 self.ended = True
                 return
@@ -106,8 +112,12 @@ class _Scan:
             elif kind == MESSAGE:
                 number, _, received, _ = struct.unpack_from("<HIQQ", body)
                 self.messages.setdefault(number, []).append((received, body[22:]))
-            elif kind == CHUNK:
-                self._take(_expanded(body))
+            elif kind == CHUNK and not within:
+                part = _expanded(body)
+                self._expanded += len(part)
+                if self._expanded > LARGEST_EXPANDED:
+                    raise LogError("its chunks expand beyond reason", f"at most {LARGEST_EXPANDED >> 30} GiB")
+                self._take(part, within=True)
 
 
 def read_mcap(contents: Contents, section: LogSection) -> ArrayTable:
@@ -121,16 +131,25 @@ def read_mcap(contents: Contents, section: LogSection) -> ArrayTable:
     scan = _Scan(memoryview(contents.data)[len(MAGIC) :])
     names = {number: (scan.schemas.get(schema, ("", "", ""))[0]) for number, (schema, _, _) in scan.channels.items()}
     topics = {topic: names[number] for number, (_, topic, _) in scan.channels.items()}
-    counts = {topic: len(scan.messages.get(number, ())) for number, (_, topic, _) in scan.channels.items()}
+    counts: dict[str, int] = {}
+    for number, (_, topic, _) in scan.channels.items():
+        counts[topic] = counts.get(topic, 0) + len(scan.messages.get(number, ()))
     topic = chosen_topic(topics, counts, section.dataset, contents.name)
-    number = next(number for number, (_, name, _) in scan.channels.items() if name == topic)
-    schema, _, encoding = scan.channels[number]
-    decode = decoder(scan.schemas.get(schema, ("", "", "")), encoding, contents.name)
+    numbers = [number for number, (_, name, _) in scan.channels.items() if name == topic]
+    number = numbers[0]
+    decoders = {}
+    for each in numbers:
+        schema, _, encoding = scan.channels[each]
+        decoders[each] = decoder(scan.schemas.get(schema, ("", "", "")), encoding, contents.name)
     rows, received, broken = [], [], 0
-    for instant, body in scan.messages.get(number, []):
+    arrived = [(instant, each, body) for each in numbers for instant, body in scan.messages.get(each, [])]
+    for instant, each, body in sorted(arrived, key=lambda message: message[0]):
         try:
-            row = flat_numbers(decode(bytes(body)))
+            row = flat_numbers(decoders[each](bytes(body)))
         except Exception:  # noqa: BLE001  a message that cannot be read is counted, whatever the library says of it
+            broken += 1
+            continue
+        if instant >= LARGEST_INSTANT or not all(abs(value) < LARGEST_NUMBER for value in row.values()):
             broken += 1
             continue
         rows.append(row)
@@ -164,6 +183,10 @@ def decoder(schema: tuple[str, str, str], encoding: str, name: str) -> Any:  # n
         from rosbags.typesys import Stores, get_types_from_msg, get_typestore  # noqa: PLC0415  an extra
     except ImportError as error:
         raise missing_library(f"{name!r} holds ROS messages: reading them", "bags") from error
+    if re.search(rf"\[<?=?\s*\d{{{LONGEST_FIXED},}}\s*\]", schema[2]):
+        raise LogError(
+            f"the message type {schema[0]!r} of {name!r} declares arrays beyond reason", "messages of a sensor"
+        )
     kind = schema[0] if "/msg/" in schema[0] else schema[0].replace("/", "/msg/", 1)
     store = get_typestore(Stores.EMPTY)
     try:

@@ -12,11 +12,13 @@ from stillbench.logs.arrays import ArrayTable
 
 INERTIAL = ("Imu", "AccelStamped", "TwistStamped", "Vector3Stamped", "MagneticField")
 NANOSECONDS = 10**9
+STAMP = "\0stamp"
+"""Of the stamp within a message: no field has this name."""
 DEEPEST = 4
 
 
 def flat_numbers(message: Any, path: str = "", depth: int = 0) -> dict[str, int | float]:  # noqa: ANN401  of any type
-    """Return the single numbers within a message, by their path; stamps as ``time`` in nanoseconds, arrays left out."""
+    """Return the single numbers within a message, by their path; stamps in nanoseconds under STAMP, arrays left out."""
     if isinstance(message, bool | int | float | np.number):
         return {path: message if isinstance(message, int) else float(message)}
     if depth > DEEPEST:
@@ -34,7 +36,7 @@ def flat_numbers(message: Any, path: str = "", depth: int = 0) -> dict[str, int 
         if name == "stamp":
             instant = flat_numbers(value)
             part = instant.get("nanosec", instant.get("nsec", 0))
-            found["time"] = int(instant.get("sec", 0)) * NANOSECONDS + int(part)
+            found[STAMP] = round(instant.get("sec", 0) * NANOSECONDS) + int(part)
             continue
         inner = "" if name == "header" else f"{path}.{name}" if path else str(name)
         found |= flat_numbers(value, inner, depth + 1)
@@ -95,9 +97,10 @@ def table_of_messages(
     columns: dict[str, np.ndarray] = {}
     for head in (head for head in rows[0] if all(head in row for row in rows)):
         values = [row[head] for row in rows]
-        columns[head] = np.array(values, dtype="M8[ns]" if head == "time" else np.float64)
+        columns[head] = np.array(values, dtype="M8[ns]" if head == STAMP else np.float64)
     received_at = np.array(received, dtype=np.int64).astype("M8[ns]")
-    if "time" not in columns or (columns["time"] == columns["time"][0]).all():
-        columns = {**columns, "time": received_at}
-    columns["received"] = received_at
-    return ArrayTable(columns, format_, has_heads=True, utc=True)
+    stamped = columns.pop(STAMP, received_at)
+    if (stamped == stamped[0]).all():
+        stamped = received_at
+    name = "stamp" if "time" in columns else "time"  # a field of the message may be called time
+    return ArrayTable({name: stamped, **columns, "received": received_at}, format_, has_heads=True, utc=True)

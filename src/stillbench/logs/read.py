@@ -2,6 +2,7 @@
 
 import hashlib
 from collections.abc import Callable, Mapping, Sequence
+from contextlib import nullcontext
 from pathlib import Path
 from typing import Any
 
@@ -13,7 +14,7 @@ from stillbench.foundation.suggestions import did_you_mean, listed, plural
 from stillbench.foundation.units import Unit, parse_unit
 from stillbench.logs.arrays import ArrayTable, columns_of
 from stillbench.logs.contents import open_contents
-from stillbench.logs.formats import read_table
+from stillbench.logs.formats import damage_said, read_table
 from stillbench.logs.joined import JoinedTable
 from stillbench.logs.side import side_file, side_series
 from stillbench.logs.stamps import find_time_column, read_stamps, split_head
@@ -83,15 +84,28 @@ def _is_files(log: Any) -> bool:  # noqa: ANN401  whatever was handed in
     return isinstance(log, list | tuple) and bool(log) and all(isinstance(part, str | Path) for part in log)
 
 
+def _plain(data: Any) -> np.ndarray:  # noqa: ANN401  whatever was handed in
+    """Return data as an array, what is masked as NaN."""
+    return np.ma.filled(data.astype(float), np.nan) if isinstance(data, np.ma.MaskedArray) else np.asarray(data)
+
+
 def _wrap_array(data: Any, name: str) -> tuple[Table, Callable[[int], Source]]:  # noqa: ANN401  arrays, series, frames, mappings
     if isinstance(data, Mapping):
-        columns = {str(key): np.asarray(value) for key, value in data.items()}
+        columns = {str(key): _plain(value) for key, value in data.items()}
     elif hasattr(data, "columns") and hasattr(data, "to_numpy"):
+        heads = [str(key) for key in data.columns]
+        if len(set(heads)) < len(heads):
+            raise LogError("the frame names a column twice", "distinct names")
         columns = {str(key): data[key].to_numpy() for key in data.columns}
     elif hasattr(data, "to_numpy"):
         columns = {str(getattr(data, "name", None) or "1"): data.to_numpy()}
     else:
-        columns = columns_of(np.asarray(data), name)
+        try:
+            columns = columns_of(_plain(data), name)
+        except ValueError as error:
+            raise LogError(f"the data are no array ({error})", "equal columns of numbers") from error
+    if any(np.ndim(column) > 1 for column in columns.values()):
+        raise LogError("a column holds more than one number in a row", "columns of single numbers")
     lengths = {np.shape(column)[0] if np.ndim(column) else 0 for column in columns.values()}
     if len(lengths) != 1 or lengths == {0}:
         raise LogError("the data are empty or differ in length", "equal columns of numbers")
@@ -174,8 +188,8 @@ def check_rate(rate: float | None) -> None:
     ------
     ClockError
     """
-    if rate is not None and not (np.isfinite(rate) and rate > 0):
-        raise ClockError(f"the rate is {rate:g} Hz", "a number above zero", "give --rate in samples per second")
+    if rate is not None and not (isinstance(rate, int | float | np.number) and np.isfinite(rate) and rate > 0):
+        raise ClockError(f"the rate is {rate} Hz", "a number above zero", "give --rate in samples per second")
 
 
 def read_log(
@@ -229,7 +243,9 @@ def read_log(
     check_rate(rate)
     table, source_of = open_log(log, sheet, name)
     try:
-        return _read(table, source_of, sheet, channels, units, rate, time, time_unit, _folder_of(log))
+        guarded = _folder_of(log) is not None and not isinstance(table, TextTable)
+        with damage_said(table.format) if guarded else nullcontext():
+            return _read(table, source_of, sheet, channels, units, rate, time, time_unit, _folder_of(log))
     finally:
         table.close()
 

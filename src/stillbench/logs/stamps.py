@@ -10,7 +10,7 @@ from stillbench.foundation.arrays import BoolArray, FloatArray, IntArray
 from stillbench.foundation.errors import ClockError, UnitError
 from stillbench.foundation.suggestions import plural
 from stillbench.foundation.units import TIME, parse_unit
-from stillbench.logs.dates import is_bare_date, is_iso, is_stamp, is_time_of_day, read_stamps_text
+from stillbench.logs.dates import ISO, is_bare_date, is_iso, is_stamp, is_time_of_day, read_stamps_text
 from stillbench.logs.table import Table
 from stillbench.vocabulary.sensor_log import Stamps
 
@@ -27,18 +27,19 @@ CLOCKS = (60.0, 3_600.0, 86_400.0, 604_800.0)
 """Seconds at which clocks begin anew: the minute, the hour, the day, the week."""
 ROLL_STEPS = 20.0
 """Usual steps that may be missing where a counter rolls over."""
+LONGEST_HEAD = 200
 RESOLUTION_SAMPLE = 10_000
 FEW_ABSENT = 3
 ABSENT_SHARE = 1e-3
 """Rows without a stamp that are left out; with more the column is refused."""
 
 _SPLIT_HEAD = re.compile(r"^\s*(.*?)\s*(?:[\[(](.*?)[\])]|[_ ](s|ms|us|ns|sec|seconds|unix|utc))?\s*$", re.IGNORECASE)
-_ZONED = re.compile(r"(?:Z|[+-]\d{2}:?\d{2})\s*$")
+_ZONED = re.compile(r"\d(?:Z|:\d{2}\s?[+-]\d{2}:?\d{2}|:\d{2}[.,]\d+\s?[+-]\d{2}:?\d{2})$|\s(?:Z|[+-]\d{2}:?\d{2})$")
 
 
 def split_head(head: str) -> tuple[str, str | None]:
     """Split ``'gyro x [deg/s]'`` into name and unit text."""
-    match = _SPLIT_HEAD.match(head)
+    match = _SPLIT_HEAD.match(head[:LONGEST_HEAD])
     if match is None:
         return head, None
     name, bracketed, suffix = match.groups()
@@ -46,7 +47,7 @@ def split_head(head: str) -> tuple[str, str | None]:
 
 
 def _folded(name: str) -> str:
-    return re.sub(r"[^a-z]", "", name.lower())
+    return re.sub(r"[^a-z0-9]", "", name.lower())
 
 
 def find_time_column(table: Table) -> int | None:
@@ -120,12 +121,14 @@ def read_stamps(table: Table, index: int, declared: str | None) -> tuple[Stamps,
     (numbers,) = table.numbers([index])
     if not np.isfinite(numbers).any():
         raise ClockError(f"the time column {head!r} holds no numbers", "time stamps", "name another with --time")
-    present = _present(~np.isnan(numbers), head)
+    present = _present(np.isfinite(numbers), head)
     numbers = numbers if present.all() else numbers[present]
     said = "declared" if declared else f"its head says {unit}"
     numbers, rolled = _unrolled(numbers, UNIT_SECONDS.get(unit or ""))
     if unit is None:
         unit, said = _guess_unit(numbers, head)
+    if unit not in UNIT_SECONDS:
+        raise ClockError(f"the unit of time is {unit!r}", f"{', '.join(UNIT_SECONDS)}, {' or '.join(WRITTEN)}")
     scale = UNIT_SECONDS[unit]
     origin = float(numbers[0]) if unit == "unix" else None
     resolution = _resolution(numbers) * scale
@@ -236,19 +239,38 @@ def _read_dates(table: Table, index: int, declared: str | None) -> tuple[Stamps,
         nanoseconds, words = read_stamps_text(texts, declared, head)
     seconds = (nanoseconds - nanoseconds[0]) / 1e9
     kind = "absolute" if zoned else "local"
-    ahead = datetime.fromisoformat(texts[0].strip()).utcoffset() if zoned else None
-    offset = ahead.total_seconds() if ahead is not None else 0.0
+    offset = _offset(texts[0].strip()) if zoned else 0.0
     stamps = Stamps(seconds, head, "iso", kind, float(nanoseconds[0]) * 1e-9, _resolution(seconds), offset)  # type: ignore[arg-type]
     zone = f"with zone, the first {offset / 3600.0:+g} h of UTC" if zoned else "local time, no zone given"
     where = f"columns {head!r}" if beside is not None else f"column {head!r}"
     return stamps, present, f"time from {where}, {words} {zone}; override with --time and --time-unit"
 
 
+def _offset(text: str) -> float:
+    """Return how far a stamp with a zone is ahead of UTC, s."""
+    match = re.search(r"([+-])(\d{2}):?(\d{2})$", text)
+    if match is None:
+        return 0.0
+    seconds = 3600.0 * int(match.group(2)) + 60.0 * int(match.group(3))
+    return -seconds if match.group(1) == "-" else seconds
+
+
 def _iso_nanoseconds(texts: Sequence[str], head: str) -> IntArray:
     import pandas as pd  # noqa: PLC0415  heavy, wanted only for date-times
 
+    series = pd.Series(texts, dtype="str").str.strip()
+    bad = ~series.str.fullmatch(ISO).to_numpy(dtype=bool)
+    if not bad.any():
+        zoned = series.str.contains(_ZONED.pattern, regex=True).to_numpy(dtype=bool)
+        bad = zoned != zoned[0]  # a zone in some rows only: an hour would be lost or won there
+    if bad.any():
+        row = int(np.argmax(bad))
+        raise ClockError(
+            f"row {row + 1} of the time column {head!r} holds {texts[row][:40]!r}",
+            "an ISO date-time such as 2025-03-01 22:15:00.25, all with a zone or none",
+        )
     try:
-        times = pd.to_datetime(pd.Series(texts, dtype="str"), format="ISO8601", utc=True)
+        times = pd.to_datetime(series, format="ISO8601", utc=True).astype("datetime64[ns, UTC]")
     except (ValueError, OverflowError) as error:
         for row, text in enumerate(texts, start=1):
             if not is_iso(text):

@@ -31,7 +31,7 @@ from stillbench.vocabulary.log_sheet import LogSection
 
 NULLS = ("", "nan", "NaN", "NAN", "-nan", "-NaN", "null", "NULL", "None", "NA", "N/A", "n/a", "#N/A", "-", "--")
 _BLANKS = re.compile(rb"[ \t]+")
-_EDGE_BLANKS = re.compile(rb"(?m)^[ \t]+|[ \t]+(?=\r?$)")
+_EDGE_BLANKS = re.compile(rb"(?m)^[ \t]+|(?<![ \t])[ \t]+(?=\r?$)")
 _ROWS = re.compile(rb"(?m)^[^\r\n]*[^\s][^\r\n]*")
 _COMMENT_LINES = re.compile(rb"(?m)^[ \t]*(?:#|%|!|//).*(?:\r?\n|\r|$)")
 BLOCK_BYTES = 1 << 20
@@ -61,12 +61,15 @@ class TextTable(Table):
         sample = raw[:SAMPLE_BYTES]
         encoding = section.encoding or find_encoding(sample, contents.name)
         self._bytes: bytes | mmap.mmap = raw
+        marked = raw[:3] == b"\xef\xbb\xbf"
         if encoding.lower().replace("_", "-") in ("utf-8", "utf8", "ascii", "us-ascii"):
             encoding = "utf-8"
-        elif encoding == "utf-8-sig":
-            self._bytes, self._path = raw[3:], None
+        elif encoding.lower() == "utf-8-sig":
+            self._path = None
         else:
             self._bytes = self._transcode(raw[:], encoding, contents.name)
+        if marked and self._bytes[:3] == b"\xef\xbb\xbf":
+            self._bytes, self._path = self._bytes[3:], None
         if b"\r" in self._bytes[:SAMPLE_BYTES] and b"\n" not in self._bytes[:SAMPLE_BYTES]:
             self._bytes = self._bytes[:].replace(b"\r", b"\n")  # lines ended in the old way
         remarks = []
@@ -89,6 +92,8 @@ class TextTable(Table):
         self._missing = (*NULLS, *section.missing)
         self._marks = [number for text in section.missing if np.isfinite(number := _float(text, self.layout.decimal))]
         self._sample = lines[self.layout.body_line : SAMPLE_LINES]
+        self._quoted = any('"' in line for line in self._sample)
+        self._first_row: list[str] | None = None
         self.empty = self._empty_columns()
         self._head = [line.strip().encode() for line in lines[: self.layout.body_line] if not is_comment(line)]
         self._body = self._find_body()
@@ -101,7 +106,7 @@ class TextTable(Table):
     def _transcode(raw: bytes, encoding: str, name: str) -> bytes:
         try:
             return raw.decode(encoding).lstrip("\N{ZERO WIDTH NO-BREAK SPACE}").encode("utf-8")
-        except (UnicodeDecodeError, LookupError) as error:
+        except (ValueError, LookupError) as error:
             raise LogError(
                 f"{name!r} does not decode as {encoding}: {error}", "text in one encoding", "name it in the log sheet"
             ) from error
@@ -167,6 +172,10 @@ class TextTable(Table):
         misfits: list[tuple[int, str]] = []
         if as_text:
             self._take_heads_out()
+        if 0 not in indices and not self._clean and _COMMENT_LINES.search(self._body):
+            return self._without_comments(
+                indices, as_text=as_text
+            )  # no other cell would tell a row behind a comment mark
         numbered = as_text or self._numbered
         try:
             table = csv.read_csv(
@@ -203,7 +212,14 @@ class TextTable(Table):
         names = [str(i) for i in range(self.layout.columns)]
         return {
             "read_options": csv.ReadOptions(column_names=names, use_threads=threads, block_size=BLOCK_BYTES),
-            "parse_options": csv.ParseOptions(delimiter=delimiter, invalid_row_handler=misfit),
+            "parse_options": csv.ParseOptions(
+                delimiter=delimiter,
+                invalid_row_handler=misfit,
+                # A stray quote far down would swallow all lines up to the next one.
+                quote_char='"' if self._quoted else False,
+                # In a single column an empty line is a missing sample; between several it is nothing.
+                ignore_empty_lines=self.layout.columns > 1,
+            ),
             "convert_options": csv.ConvertOptions(
                 include_columns=[str(i) for i in indices],
                 column_types={str(i): kind for i in indices},
@@ -333,7 +349,9 @@ class TextTable(Table):
         for number, line in self._lines():
             if is_comment(line):
                 continue
-            cells = split_cells(line, self.layout.delimiter)
+            blank = self.layout.delimiter == " "
+            plain = line.split() if blank else [cell.strip() for cell in line.split(self.layout.delimiter)]
+            cells = split_cells(line, self.layout.delimiter) if self._quoted else plain
             for index in indices:
                 if index < len(cells) and cells[index] not in self._missing:
                     cell = cells[index]
@@ -351,6 +369,7 @@ class TextTable(Table):
             for array in found:
                 self._take_marks_out(array)
             return found
+        wanted, indices = indices, list(dict.fromkeys(indices))
         early = [index for index in self._expected if index not in indices]
         fresh = [index for index in indices if index not in self._waiting]
         if fresh:
@@ -373,7 +392,8 @@ class TextTable(Table):
             self._take_marks_out(array)
             arrays.append(array)
         pa.default_memory_pool().release_unused()
-        return arrays
+        by_index = dict(zip(indices, arrays, strict=True))
+        return [by_index[index] for index in wanted]
 
     def _take_marks_out(self, array: FloatArray) -> None:
         """Make NaN of the marks of missing samples, however they are written in the file."""
@@ -399,11 +419,13 @@ class TextTable(Table):
         return edges[0][:count], edges[1][-count:]
 
     def first_text(self, index: int) -> str:
+        if self._first_row is not None:
+            return self._first_row[index] if index < len(self._first_row) else ""
         first = bytes(self._body[:SAMPLE_BYTES]).decode("utf-8", "replace").splitlines()
         delimiter = "\t" if self.layout.delimiter == " " else self.layout.delimiter
         for line in first:
             if not is_comment(line):
-                cells = split_cells(line, delimiter)
+                self._first_row = cells = split_cells(line, delimiter)
                 return cells[index] if index < len(cells) else ""
         return ""
 

@@ -204,10 +204,12 @@ def _sheet(
         lines += ['column = "none"', f"rate = {rate!r}  # Hz"]
     else:
         lines += ['# column = "..."', '# unit = "s"', "# rate = 100.0  # Hz, where there are no stamps"]
+    shorts = [split_head(column.head)[0] or column.head for column in columns]
     for column in columns:
         if column.role != "data":
             continue
-        name = split_head(column.head)[0] or column.head
+        short = split_head(column.head)[0] or column.head
+        name = short if shorts.count(short) == 1 else column.head
         lines += ["", f"[channel.{_quoted(name)}]", f"column = {_quoted(column.head)}"]
         if column.declared:
             lines.append(f"unit = {_quoted(column.declared)}")

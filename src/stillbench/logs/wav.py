@@ -38,6 +38,7 @@ def read_wav(contents: Contents, section: LogSection) -> ArrayTable:  # noqa: AR
             warnings.simplefilter("ignore", wavfile.WavFileWarning)
             rate, samples = wavfile.read(io.BytesIO(contents.data))
     except (
+        UnboundLocalError,
         ValueError,
         EOFError,
         OSError,
@@ -61,6 +62,9 @@ def read_wav(contents: Contents, section: LogSection) -> ArrayTable:  # noqa: AR
     table = ArrayTable(made, f"WAV, {samples.dtype}, {len(made)} channels at {rate} Hz", has_heads=False)
     table.rate = float(rate)
     table.remarks.append(COUPLING)
+    (declared,) = struct.unpack("<I" if bytes(contents.data[:4]) != b"RIFX" else ">I", contents.data[4:8])
+    if declared + 8 > len(contents.data):
+        table.remarks.append(f"the file declares {declared + 8} bytes and holds {len(contents.data)}: it is cut short")
     return table
 
 

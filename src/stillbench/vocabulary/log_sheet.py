@@ -5,7 +5,7 @@ from typing import Annotated, Literal
 from pydantic import BaseModel, ConfigDict, Field
 
 Text = Annotated[str, Field(min_length=1)]
-Column = str | int
+Column = str | Annotated[int, Field(strict=True)]
 
 
 class Section(BaseModel):
@@ -38,7 +38,7 @@ class ClockSection(Section):
 
     column: Column | None = None
     unit: Literal["s", "ms", "us", "ns", "iso", "unix", "day-first", "month-first"] | None = None
-    rate: float | None = None
+    rate: Annotated[float, Field(strict=True, gt=0)] | None = None
 
 
 class FrontEnd(Section):
