@@ -17,7 +17,7 @@ from stillbench.assessment.uncertainty import normal_quantile, with_common_facto
 from stillbench.deviation.averaging import PER_DECADE
 from stillbench.deviation.intervals import bound_deviation, mixture_of
 from stillbench.deviation.overlapping import estimate_deviation
-from stillbench.foundation.errors import NothingToMeasureError, RecordTooShortError, UsageError
+from stillbench.foundation.errors import ClockError, NothingToMeasureError, RecordTooShortError, UsageError
 from stillbench.foundation.progress import SILENT, Progress
 from stillbench.foundation.scratch import blocks
 from stillbench.foundation.toml_source import load_toml
@@ -25,7 +25,7 @@ from stillbench.foundation.units import parse_unit
 from stillbench.identification.identify import Identification, identify_noise
 from stillbench.identification.remarks import POOR_FIT
 from stillbench.logs.clock import Grid, audit_clock
-from stillbench.logs.cut import cut_record
+from stillbench.logs.cut import clip_log, cut_record
 from stillbench.logs.front_end import convert
 from stillbench.logs.read import read_log
 from stillbench.logs.side import aligned
@@ -183,7 +183,7 @@ def characterize(
         name=name,
         progress=progress,
     )
-    grid = audit_clock(sensor_log)
+    sensor_log, grid = _audited(sensor_log, first, last)
     quantities = [_quantity_of(sensor_log, channel.label, sheet, grid) for channel in sensor_log.channels]
     require_applicable(spec, quantities)
     labels = tuple(channel.label for channel in sensor_log.channels)
@@ -259,6 +259,18 @@ def characterize(
         _identification(sheet),
         tuple(results),
     )
+
+
+def _audited(log: SensorLog, first: str | None, last: str | None) -> tuple[SensorLog, Grid]:
+    """Return a log with its grid; where only a part of it has a clock, the part that is asked for."""
+    try:
+        return log, audit_clock(log)
+    except ClockError:
+        ends = [end for end in (first, last) if end is not None]
+        if not ends or any(end.startswith("row:") for end in ends):  # rows would be counted within the part
+            raise
+        log = clip_log(log, first, last)
+        return log, audit_clock(log)
 
 
 def made_at_text(given: str | None) -> str:

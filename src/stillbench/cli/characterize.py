@@ -1,5 +1,6 @@
 """stillbench characterize LOG."""
 
+import contextlib
 import importlib
 import sys
 import threading
@@ -104,7 +105,7 @@ def command(
         raise OutputError(f"{str(out)!r} is a file", "a folder for --out", "choose another name")
     if out is not None:
         # What draws the figures takes its time to load: that passes while the log is read.
-        threading.Thread(target=importlib.import_module, args=("matplotlib.backends.backend_svg",), daemon=True).start()
+        threading.Thread(target=_load_figures, daemon=True).start()
     with scratch_in(scratch), progress_line(quiet=quiet) as progress:
         result = characterize(
             one_log(log, joined=joined),
@@ -142,3 +143,8 @@ def command(
         first = out / REPORT if out is not None else written[0]
         click.echo(f"written: {', '.join(str(path) for path in written)}; open {first}", err=True)
     return result.exit_code
+
+
+def _load_figures() -> None:
+    with contextlib.suppress(Exception):  # what is wrong is said where the figures are drawn
+        importlib.import_module("matplotlib.backends.backend_svg")

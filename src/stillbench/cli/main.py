@@ -17,6 +17,9 @@ COMMANDS = {
     "demo": "Make two night logs of an invented survey launch and qualify both sensors.",
 }
 USAGE = 2
+NO_MEMORY = "stillbench: not enough memory for this log; cut it with --from and --to, or raise the limit on memory"
+UNMAPPED = ("failed to map segment", "cannot allocate memory", "seems to be broken")
+"""What libraries say that cannot be loaded for want of memory."""
 INTERRUPTED = 130
 
 
@@ -76,9 +79,12 @@ def _run(arguments: Sequence[str] | None) -> int:  # noqa: PLR0911  one return a
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return 0
     except MemoryError:
-        click.echo("stillbench: not enough memory for this log; cut it with --from and --to", err=True)
+        click.echo(NO_MEMORY, err=True)
         return 1
     except Exception as error:
+        if isinstance(error, ImportError) and any(sign in f"{error} {error.__cause__}" for sign in UNMAPPED):
+            click.echo(NO_MEMORY, err=True)
+            return 1
         if os.environ.get("STILLBENCH_TRACEBACK"):
             raise
         from stillbench.foundation.errors import StillbenchError  # noqa: PLC0415  not needed for --help

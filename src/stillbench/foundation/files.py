@@ -9,6 +9,7 @@ from pathlib import Path
 from stillbench.foundation.errors import OutputError
 
 FILE_MODE = 0o644
+PART = ".part"
 
 
 def _blame(path: Path, error: OSError) -> OutputError:
@@ -22,7 +23,7 @@ def _blame(path: Path, error: OSError) -> OutputError:
 
 def _stage(path: Path, content: bytes) -> Path:
     """Write ``content`` under a temporary name beside ``path`` and sync it; return the temporary name."""
-    handle, name = tempfile.mkstemp(prefix=f".{path.name}.", suffix=".part", dir=path.parent)
+    handle, name = tempfile.mkstemp(prefix=f".{path.name}.{os.getpid()}.", suffix=PART, dir=path.parent)
     staged = Path(name)
     try:
         with os.fdopen(handle, "wb") as stream:
@@ -35,6 +36,25 @@ def _stage(path: Path, content: bytes) -> Path:
             staged.unlink()
         raise
     return staged
+
+
+def _sweep(path: Path) -> None:
+    """Remove what runs that were killed while they wrote this file have left beside it."""
+    for left in path.parent.glob(f".{path.name}.*{PART}"):
+        writer = left.name.removeprefix(f".{path.name}.").split(".")[0]
+        if writer.isdecimal() and not _is_alive(int(writer)):
+            with contextlib.suppress(OSError):
+                left.unlink()
+
+
+def _is_alive(process: int) -> bool:
+    try:
+        os.kill(process, 0)
+    except ProcessLookupError:
+        return False
+    except OSError:
+        return True
+    return True
 
 
 def _sync_folder(folder: Path) -> None:
@@ -73,6 +93,7 @@ def write_whole(files: Mapping[Path, bytes]) -> None:
                     "remove the link or choose another name",
                 )
             current.parent.mkdir(parents=True, exist_ok=True)
+            _sweep(current)
             staged[current] = _stage(current, content)
         for current, temporary in staged.items():
             temporary.replace(current)

@@ -31,6 +31,11 @@ LONG_STEP = 1_000.0
 """Stamps come in bursts when more than this share of the steps are multiples and their mean exceeds two usual steps."""
 MISMATCH = 0.005
 BEND = 0.01
+BEND_ROWS = 256
+FEWEST_BEND_BLOCKS = 24
+SHORTEST_BEND_BLOCK = 8
+BEND_WINDOW = 5
+BEND_SPREADS = 6.0
 SHIFT_UNIT = 1800.0
 LARGEST_SHIFT = 14 * 3600.0
 LISTED_STEPS = 20
@@ -193,6 +198,7 @@ def _audit_stamps(stamps: Stamps, rate: float | None) -> Grid:
         findings += _take_out_shifts(seconds, stamps.origin or 0.0)
     segment = np.zeros(seconds.size, dtype=np.int64)
     findings += _split_backward(seconds, segment)
+    _refuse_bend(seconds, stamps.column)
     steps = np.diff(seconds)
     kept = np.ones(seconds.size, dtype=bool)
     repeated = np.append(False, steps == 0)
@@ -218,8 +224,48 @@ def _audit_stamps(stamps: Stamps, rate: float | None) -> Grid:
     jitter = _jitter(seconds, index, segment, kept, interval)
     if not even:
         findings.append(_uneven(stamps, interval, jitter, coarse=coarse, steps=steps))
-    findings += _rate_findings(seconds, index, segment, kept, interval, rate)
+    findings += _mismatch(interval, rate)
     return Grid(interval, Placed(kept, index, segment, seconds), seconds.size, "stamps", jitter, tuple(findings))
+
+
+def _refuse_bend(seconds: FloatArray, column: str) -> None:
+    """Refuse stamps whose mean step changes by more than a hundredth along the log: two rates, or a clock that drifts.
+
+    Means of the steps over blocks, those over gaps left out, smoothed by a running median so that a burst or a late row is no
+    change; the two levels parted best must differ by more than a hundredth and by more than they scatter. So must the medians:
+    lost rows change the means only, coarse stamps the medians only.
+    """
+    steps = np.diff(seconds)
+    rows = min(BEND_ROWS, steps.size // FEWEST_BEND_BLOCKS)
+    if rows < SHORTEST_BEND_BLOCK:
+        return
+    count = steps.size // rows
+    blocks = steps[: count * rows].reshape(count, rows)
+    usual = np.median(blocks, axis=1, keepdims=True)
+    single = blocks <= GAP_INTERVALS * np.maximum(usual, float(np.median(steps)))
+    level = (blocks * single).sum(axis=1) / np.maximum(single.sum(axis=1), 1)
+    window = np.lib.stride_tricks.sliding_window_view(level, BEND_WINDOW)
+    smooth = np.median(window, axis=1)
+    places = np.arange(1, smooth.size)
+    total = np.cumsum(smooth)
+    before, after = total[:-1] / places, (total[-1] - total[:-1]) / (smooth.size - places)
+    at = int(np.argmax(places * (smooth.size - places) * (after - before) ** 2))
+    first, second = float(before[at]), float(after[at])
+    spread = max(
+        float(np.median(np.abs(smooth[: at + 1] - first))), float(np.median(np.abs(smooth[at + 1 :] - second)))
+    )
+    middle = [float(np.median(usual[: at + 1])), float(np.median(usual[at + BEND_WINDOW :]))]
+    if not first > 0 or abs(second / first - 1.0) <= BEND or abs(second - first) <= BEND_SPREADS * spread:
+        return
+    if abs(middle[1] - middle[0]) <= BEND * middle[0]:
+        return
+    when = float(seconds[min(seconds.size - 1, (at + 1 + BEND_WINDOW // 2) * rows)])
+    raise ClockError(
+        f"the steps of the stamps in {column!r} change from {first:.6g} s to {second:.6g} s ({100 * (second / first - 1):+.3g} %)"
+        f" at about {when:.6g} s",
+        "one sampling rate",
+        f"take one part: --to {when:.6g} or --from {when:.6g}; or --time none --rate HZ if the rows are evenly spaced all the same",
+    )
 
 
 def _take_out_shifts(seconds: FloatArray, origin: float) -> list[Finding]:
@@ -465,28 +511,3 @@ def _mismatch(interval: float, rate: float | None) -> list[Finding]:
             disposition="the stamps are used",
         )
     ]
-
-
-def _rate_findings(
-    seconds: FloatArray, index: IntArray, segment: IntArray, kept: BoolArray, interval: float, rate: float | None
-) -> list[Finding]:
-    findings = _mismatch(interval, rate)
-    t, k, s = seconds[kept], index[kept], segment[kept]
-    half = t.size // 2
-    group = np.append(0, np.cumsum((np.diff(s) != 0) | (np.diff(k) > GAP_INTERVALS)))
-    if half > 100:  # noqa: PLR2004  fewer stamps cannot show a change of one percent
-        first, second = _slope(t[:half], k[:half], group[:half]), _slope(t[half:], k[half:], group[half:])
-        if first > 0 and abs(second / first - 1.0) > BEND:
-            findings.append(
-                Finding(
-                    "clock_jitter",
-                    None,
-                    None,
-                    100.0 * (second / first - 1.0),
-                    "%",
-                    excluded=False,
-                    because=f"the sampling interval changes from {first:.6g} s to {second:.6g} s between the halves",
-                    disposition="analysed at the mean interval; averaging times are wrong by up to half of that",
-                )
-            )
-    return findings

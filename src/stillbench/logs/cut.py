@@ -126,6 +126,32 @@ def cut_record(
     return replace(record, findings=tuple(findings))
 
 
+def clip_log(log: SensorLog, start: str | None, stop: str | None) -> SensorLog:
+    """Return the rows of a log from ``start`` to ``stop``, times still counted from its first stamp.
+
+    What lies outside has no say on the clock then; ``cut_record`` takes the same span again, sample by sample.
+    """
+    if log.stamps is None or (start is None and stop is None):
+        return log
+    seconds = log.stamps.seconds
+    instants = Instants(seconds, log.stamps)
+    first = instants.instant(start) if start is not None else None
+    last = instants.end(stop) if stop is not None else None
+    rows = np.flatnonzero(within(seconds, first, last))
+    if rows.size < SHORTEST_RUN:
+        return log  # cut_record says what is wrong
+    part = slice(int(rows[0]), int(rows[-1]) + 1)
+    channels = tuple(
+        replace(
+            channel,
+            values=channel.values[part],
+            reference=None if channel.reference is None else channel.reference[part],
+        )
+        for channel in log.channels
+    )
+    return replace(log, channels=channels, stamps=replace(log.stamps, seconds=seconds[part]))
+
+
 def _usable(channel: Channel, wanted: BoolArray, grid: Grid, findings: list[Finding]) -> BoolArray:
     """Return which rows hold a finite reading; say how many of those wanted do not."""
     label, finite = channel.label, np.isfinite(channel.values)

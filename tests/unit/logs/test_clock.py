@@ -1,6 +1,7 @@
 """The clock audit on made stamps: each oddity is found, sized, and does not move the grid."""
 
 from dataclasses import replace
+from pathlib import Path
 
 import numpy as np
 import pytest
@@ -10,6 +11,7 @@ from stillbench.foundation.errors import ClockError
 from stillbench.foundation.units import parse_unit
 from stillbench.logs.clock import Grid, audit_clock
 from stillbench.logs.cut import cut_record
+from stillbench.pipeline import characterize
 from stillbench.vocabulary.sensor_log import Channel, SensorLog, Source, StampKind, Stamps
 
 INTERVAL = 0.01
@@ -181,7 +183,42 @@ def test_an_hour_missing_at_another_minute_is_a_gap() -> None:
     assert grid.index[-1] == seconds.size - 1 + 3_600
 
 
-def test_a_rate_that_changes_between_the_halves() -> None:
-    steps = np.where(np.arange(6_000) < 3_000, INTERVAL, 1.03 * INTERVAL)
-    _, kinds = audit(np.cumsum(steps))
-    assert "clock_jitter" in kinds
+@pytest.mark.parametrize(("share", "ratio"), [(0.5, 1.03), (0.15, 2.0), (0.8, 0.5), (0.3, 1.015)])
+def test_a_rate_that_changes_is_refused_with_the_place(share: float, ratio: float) -> None:
+    """Two rates in one log: whole multiples too, which would pass for lost rows."""
+    n_rows = 12_000
+    jitter = np.random.default_rng(4).normal(0.0, 0.02 * INTERVAL, n_rows)
+    seconds = np.cumsum(np.where(np.arange(n_rows) < share * n_rows, INTERVAL, ratio * INTERVAL)) + jitter
+    with pytest.raises(ClockError, match="one sampling rate") as caught:
+        audit(seconds)
+    when = float(caught.value.message.split("--to ")[1].split()[0])
+    assert when == pytest.approx(seconds[int(share * n_rows)], abs=0.06 * n_rows * INTERVAL)
+
+
+def test_lost_rows_are_no_change_of_rate() -> None:
+    """A tenth of the rows lost in the second half only; and bursts; and coarse stamps."""
+    generator = np.random.default_rng(5)
+    seconds = np.arange(20_000) * INTERVAL
+    kept = (generator.random(seconds.size) > 0.1) | (seconds < seconds[10_000])
+    grid, found = audit(seconds[kept])
+    assert not found
+    assert grid.index[-1] == seconds.size - 1
+    bursts = np.repeat(np.arange(2_000) * 8 * INTERVAL, 8) + np.tile(np.arange(8) * 0.1 * INTERVAL, 2_000)
+    assert "clock_jitter" in audit(bursts)[1]
+    audit(np.floor(np.arange(20_000) * 5.47))
+
+
+def test_one_part_of_a_log_of_two_rates(tmp_path: Path) -> None:
+    steps = np.where(np.arange(8_000) < 4_000, 0.01, 0.02)
+    seconds = np.cumsum(steps)
+    values = np.random.default_rng(6).normal(0.0, 1.0, seconds.size)
+    (tmp_path / "log.csv").write_text(
+        "time [s],x\n" + "\n".join(f"{t:.2f},{v:.5f}" for t, v in zip(seconds, values, strict=True))
+    )
+    with pytest.raises(ClockError, match="--from"):
+        characterize(tmp_path / "log.csv", unit="V")
+    (first,) = characterize(tmp_path / "log.csv", unit="V", stop="39.5").channels
+    (second,) = characterize(tmp_path / "log.csv", unit="V", start="40.5").channels
+    assert first.sample_interval == pytest.approx(0.01)
+    assert second.sample_interval == pytest.approx(0.02)
+    assert second.clock.runs[0][0] == pytest.approx(40.5, abs=0.03)
