@@ -8,7 +8,7 @@ WORKERS ?= 2
 export OMP_NUM_THREADS ?= 1
 export OPENBLAS_NUM_THREADS ?= 1
 
-.PHONY: help demo test check format calibrate bench bench-large lock clean
+.PHONY: help demo test check format calibrate bench bench-large fuzz lock clean
 
 help: ## list the words
 	@grep -hE '^[a-z-]+:.*##' $(MAKEFILE_LIST) | sed 's/:[^#]*## /\t/' | expand -t 12
@@ -51,6 +51,12 @@ bench: $(VENV)/dev.done ## speed and memory as ratios, minutes; writes bench/res
 
 bench-large: $(VENV)/dev.done ## time and memory up to a thousand million samples, half an hour and 30 GB of disk; writes bench/large.md
 	$(BIN)/python bench/bench_large.py
+
+FUZZ_SECONDS ?= 60
+fuzz: $(VENV)/dev.done ## odd inputs for each reader, guided by coverage (FUZZ_SECONDS for each); the corpus stays in tests/fuzz/corpus
+	$(PIP) install --quiet 'atheris>=2.3'
+	for target in text npy columnar wav mat packed sheet units; do \
+	  $(BIN)/python tests/fuzz/fuzz_readers.py $$target $(FUZZ_SECONDS) || exit 1; done
 
 lock: ## pin the requirements again (needs uv)
 	for set in "run:--group pyproject.toml:build" "dev:--group pyproject.toml:build --group pyproject.toml:dev"; do \

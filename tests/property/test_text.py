@@ -1,6 +1,8 @@
 """Delimited text of any common layout gives the numbers that were written."""
 
+import itertools
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pytest
@@ -66,6 +68,54 @@ def test_layouts(
         assert np.array_equal(log.channels[i].values, numbers[:, i])
     assert log.stamps is not None
     assert np.allclose(log.stamps.seconds, time, atol=1e-12)
+
+
+STAMPS: dict[str, tuple[Any, dict[str, Any]]] = {
+    "seconds": (lambda i: f"{i * 0.5:.1f}", {"time_unit": "s"}),
+    "milliseconds that roll over": (lambda i: str((64_000 + 500 * i) % 65_536), {"time_unit": "ms"}),
+    "iso": (lambda i: f"2025-03-01 23:59:{i // 2:02d}.{5 * (i % 2)}", {}),
+    "day first": (lambda i: f"01.03.2025 23:59:{i // 2:02d}.{5 * (i % 2)}", {"time_unit": "day-first"}),
+    "month first, am and pm": (lambda i: f"3/1/2025 11:59:{i // 2:02d}.{5 * (i % 2)} PM", {"time_unit": "month-first"}),
+    "time of day": (lambda i: f"23:59:{i // 2:02d}.{5 * (i % 2)}", {}),
+    "none": (None, {"rate": 2.0, "time": "none"}),
+}
+ENDS = ("\n", "\r\n", "\r", "\r\r\n")
+HEADS = ("none", "names", "names and units", "prose and names")
+
+
+@pytest.mark.parametrize("encoding", ["utf-8", "utf-8-sig", "utf-16", "latin-1"])
+@pytest.mark.parametrize("stamp", STAMPS)
+def test_matrix_of_layouts(folder: Path, encoding: str, stamp: str) -> None:
+    """Delimiter x decimal mark x line end x encoding x head x form of the stamps: the numbers that were written, or asked about."""
+    written, declared = STAMPS[stamp]
+    numbers = np.round(np.random.default_rng(3).normal(2.5, 0.1, (40, 2)), 6)
+    path = folder / f"{encoding}.txt"
+    read = 0
+    for delimiter, decimal, end, head in itertools.product((",", ";", "\t"), ".,", ENDS, HEADS):
+        if delimiter == "," and decimal == ",":
+            continue
+        names = ["time"] * (written is not None) + ["a", "b"]
+        units = ["s"] * (written is not None) + ["deg/s", "deg/s"]
+        lines = ["Logger of the launch, switched on by hand", "all is well"] if head == "prose and names" else []
+        lines += [delimiter.join(names)] if head != "none" else []
+        lines += [delimiter.join(units)] if head == "names and units" else []
+        for i, row in enumerate(numbers.tolist()):
+            cells = [f"{value:.6f}".replace(".", decimal) for value in row]
+            stamped = written(i) if written is not None else ""
+            plain = stamped.replace(".", decimal) if stamp == "seconds" else stamped
+            lines.append(delimiter.join([plain] * (written is not None) + cells))
+        path.write_bytes((end.join(lines) + end).encode(encoding))
+        first = 2 if written is not None else 1
+        given = {"time": "1"} | declared if written is not None and "time" not in declared else declared
+        log = read_log(path, channels=[str(first), str(first + 1)], units={"": "deg/s"}, **given)
+        where = (delimiter, decimal, end, head)
+        assert log.source.rows == 40, where
+        for i in range(2):
+            assert np.array_equal(log.channels[i].values, numbers[:, i]), where
+        if log.stamps is not None:
+            assert np.allclose(log.stamps.seconds, np.arange(40) * 0.5, atol=1e-9), where
+        read += 1
+    assert read == 5 * len(ENDS) * len(HEADS)
 
 
 @settings(max_examples=150)
