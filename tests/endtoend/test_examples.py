@@ -7,7 +7,17 @@ from pathlib import Path
 import pytest
 from tests.conftest import ROOT
 
+from stillbench.pipeline import load_log_sheet
 from stillbench.simulation import launch
+from stillbench.vocabulary.log_sheet import (
+    ClockSection,
+    ConditionsSection,
+    FrontEnd,
+    LogSection,
+    ReportSection,
+    SensorSection,
+    SideSection,
+)
 
 EXAMPLES = ROOT / "examples"
 
@@ -30,3 +40,12 @@ def test_from_python(tmp_path: Path) -> None:
     )
     assert "angle_random_walk" in done.stdout
     assert (tmp_path / "made-hour.html").stat().st_size > 50_000
+
+
+def test_the_full_sheet_is_a_sheet_and_has_every_key() -> None:
+    text = (EXAMPLES / "full-sheet.toml").read_text()
+    sheet = load_log_sheet(EXAMPLES / "full-sheet.toml")
+    assert sheet.channel["rate_out"].front_end is not None
+    for section in (LogSection, ClockSection, FrontEnd, SideSection, SensorSection, ConditionsSection, ReportSection):
+        for key in section.model_fields:
+            assert key in text or (section, key) == (ClockSection, "rate"), key

@@ -51,6 +51,7 @@ def test_no_latitude(text: str) -> None:
 def test_attitudes() -> None:
     assert parse_attitude("axis up") == (0.0, 0.0)
     assert parse_attitude("input axis down") == (math.pi, 0.0)
+    assert parse_attitude("input axis up, within 0.5 deg") == (0.0, 0.0)
     assert parse_attitude("East") == (math.pi / 2, math.pi / 2)
     tilt, azimuth = parse_attitude("tilt 30 deg, azimuth 0.5 rad") or (0.0, 0.0)
     assert tilt == pytest.approx(math.pi / 6)

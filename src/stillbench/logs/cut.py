@@ -197,6 +197,25 @@ def _known_input(sheet: LogSheet, section: ChannelSection | None, quantity: str,
     """Return what the sensor feels at rest by latitude and attitude, SI, and say so as a finding."""
     where, conditions = section.attitude if section else None, sheet.conditions
     attitude = parse_attitude(where or conditions.attitude or "")
+    inertial = quantity in (ANGULAR_RATE.name, ACCELERATION.name)
+    if conditions.latitude is not None and attitude is None and inertial:
+        said = (
+            f"the attitude {where or conditions.attitude!r} is not one that is understood"
+            if where or conditions.attitude
+            else "no attitude is declared"
+        )
+        findings.append(
+            Finding(
+                "earth_rate",
+                None,
+                None,
+                None,
+                "",
+                excluded=False,
+                because=f"{said}: what of the Earth the input axis feels is not known",
+                disposition='the bias contains it; write attitude = "axis up", down, north, ... or a tilt and an azimuth',
+            )
+        )
     if conditions.latitude is None or attitude is None:
         return 0.0
     latitude = parse_latitude(conditions.latitude)
@@ -219,7 +238,7 @@ def _known_input(sheet: LogSheet, section: ChannelSection | None, quantity: str,
             value,
             "rad/s" if quantity == ANGULAR_RATE.name else "m/s^2",
             excluded=False,
-            because=f"{source} along the input axis ({spoken}, latitude {conditions.latitude}) is {shown}",
+            because=f"{source} along the input axis ({spoken}; latitude {conditions.latitude}) is {shown}",
             disposition=f"taken off the bias; a degree of attitude is worth up to {slope}",
         )
     )

@@ -59,8 +59,9 @@ def parse_attitude(text: str) -> tuple[float, float] | None:
         When tilt or azimuth is no angle.
     """
     plain = re.sub(r"^(?:input |sensitive )?axis\s+", "", text.strip().lower())
-    if plain in _WORDS:
-        tilt, azimuth = _WORDS[plain]
+    word = plain.split(",")[0].strip()  # what follows, such as "within 0.5 deg", is for the reader
+    if word in _WORDS:
+        tilt, azimuth = _WORDS[word]
         return math.radians(tilt), math.radians(azimuth)
     match = _TILTED.fullmatch(plain)
     if match is None:

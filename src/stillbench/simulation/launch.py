@@ -4,6 +4,7 @@ Everything here is invented: the harbour survey launch Tern's sonar mount carrie
 voltage through a demodulator and a converter, and a MEMS part is tried beside it on the same pier.
 """
 
+import math
 from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
@@ -12,6 +13,7 @@ import numpy as np
 
 from stillbench.foundation.arrays import FloatArray
 from stillbench.foundation.files import write_whole
+from stillbench.logs.site import earth_rate_along, parse_latitude
 from stillbench.simulation.night import Night, make_night
 
 HOURS = 8.0
@@ -21,6 +23,8 @@ MADE_AT = "2026-03-02T06:30:00+00:00"
 
 SCALE_FACTOR = 0.0482
 ZERO = 2.5012
+EARTH = math.degrees(earth_rate_along(parse_latitude("54 deg"), 0.0, 0.0))
+"""deg/s about an axis that points up on the pier; no part of the sensor's null."""
 STEP = 5.0 / 65_536
 FEW_DEGREES_PER_HOUR = 1.0 / 3_600.0
 
@@ -29,7 +33,7 @@ WHEEL = Night(
     RATE,
     # deg/s: N 0.15 deg/sqrt(h), B 4 deg/h, K 9 deg/h/sqrt(h).
     {"white": 0.15 / 60.0, "flicker": 4.0 / 3_600.0, "walk": 9.0 / 216_000.0},
-    null=0.021,
+    null=0.021 + EARTH,
     seed=1_701,
     spikes=((5_431.27, 0.9), (17_805.6, -0.7)),
     lost=((9_000.0, 9_000.05), (12_345.6, 12_345.61), (20_700.0, 20_742.0)),
@@ -39,7 +43,7 @@ MEMS = Night(
     RATE,
     # deg/s: N 0.31 deg/sqrt(h), B 14 deg/h.
     {"white": 0.31 / 60.0, "flicker": 14.0 / 3_600.0},
-    null=-0.36,
+    null=-0.36 + EARTH,
     seed=1_702,
 )
 

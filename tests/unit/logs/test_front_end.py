@@ -97,6 +97,15 @@ def test_earth_rate_is_no_bias() -> None:
     assert channel.noise.terms["angle_random_walk"] == other.noise.terms["angle_random_walk"]
 
 
+def test_an_attitude_that_is_not_understood_is_said() -> None:
+    log_sheet = sheet(VOLTS, conditions={"latitude": "30 N", "attitude": "as last time"})
+    (channel,) = characterize(
+        {"out": VOLTS_OF_RATE}, log_sheet=log_sheet, rate=10.0, time="none", made_at="2026-01-01"
+    ).channels
+    (finding,) = [finding for finding in channel.findings if finding.kind == "earth_rate"]
+    assert "'as last time' is not one that is understood" in finding.because
+
+
 def test_gravity_is_no_bias() -> None:
     values = 9.819176953 + np.random.default_rng(3).normal(0.0, 1e-4, N)
     log_sheet = LogSheet.model_validate(
