@@ -19,6 +19,7 @@ from stillbench.deviation.intervals import bound_deviation, mixture_of
 from stillbench.deviation.overlapping import estimate_deviation
 from stillbench.foundation.errors import ClockError, NothingToMeasureError, RecordTooShortError, UsageError
 from stillbench.foundation.progress import SILENT, Progress
+from stillbench.foundation.rounding import significant
 from stillbench.foundation.scratch import blocks
 from stillbench.foundation.toml_source import load_toml
 from stillbench.foundation.units import parse_unit
@@ -402,7 +403,8 @@ def _with_converter(
         where = ""
         if span is not None:
             open_end = span[1] >= 0.99 * found.curve.tau[-1]
-            where = f"above {span[0]:.3g} s" if open_end else f"from {span[0]:.3g} s to {span[1]:.3g} s"
+            first, last = (f"{significant(end, 2)} s" for end in span)
+            where = f"above {first}" if open_end else f"from {first} to {last}"
         words = [f"converter-limited {where}"] if where else []
         words += [f"half or more of {' and '.join(limited)} is the converter's"] if limited else []
         findings = (
