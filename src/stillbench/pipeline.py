@@ -26,7 +26,7 @@ from stillbench.foundation.units import parse_unit
 from stillbench.identification.identify import Identification, identify_noise
 from stillbench.identification.remarks import POOR_FIT
 from stillbench.logs.clock import Grid, audit_clock
-from stillbench.logs.cut import clip_log, cut_record
+from stillbench.logs.cut import clip_log, cut_record, own_rows
 from stillbench.logs.front_end import convert
 from stillbench.logs.read import read_log
 from stillbench.logs.side import aligned
@@ -198,16 +198,19 @@ def characterize(
     waiting = list(sensor_log.channels)
     sensor_log = replace(sensor_log, channels=())
     for label in labels:
+        own, words = own_rows(replace(sensor_log, channels=(waiting.pop(0),)))
+        skipped += [words] if words else []
         try:
             record = cut_record(
-                replace(sensor_log, channels=(waiting.pop(0),)),
+                own,
                 label,
                 sheet=sheet,
                 start=first,
                 stop=last,
                 exclude=exclude,
-                grid=grid,
+                grid=audit_clock(own) if words else grid,
             )
+            del own
             screened = screen(record, exclusions=exclusions, keep=keep, progress=progress)
         except (NothingToMeasureError, RecordTooShortError) as error:
             # Asked for by name a dead channel is an error; among all of them it is a remark.

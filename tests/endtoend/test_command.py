@@ -292,3 +292,15 @@ def test_scale_factor_from_turns(stillbench: Command, tmp_path: Path) -> None:
     (channel,) = json.loads(done.stdout)["channels"]
     assert channel["quantity"] == "angular rate"
     assert "6 turns, 2026-03-01" in channel["front_end"]
+
+
+def test_two_files_of_one_night(stillbench: Command, tmp_path: Path) -> None:
+    values = np.random.default_rng(5).normal(0.1, 0.02, 800)
+    rows = [f"{i / 10:.1f},{value:.6f}" for i, value in enumerate(values)]
+    for name, part in (("whole", rows), ("a", rows[:300]), ("b", rows[300:])):
+        (tmp_path / f"{name}.csv").write_text("time [s],rate\n" + "\n".join(part) + "\n")
+    flags = ["--unit", "deg/s", "--json", "-"]
+    whole = json.loads(stillbench("characterize", "whole.csv", *flags, check=0).stdout)["channels"]
+    joined = json.loads(stillbench("characterize", "a.csv", "b.csv", "--joined", *flags, check=0).stdout)
+    assert joined["channels"] == whole
+    assert joined["source"]["name"] == "a.csv, b.csv"

@@ -31,6 +31,9 @@ from stillbench.vocabulary.sensor_log import Channel, SensorLog
 
 LISTED_GAPS = 20
 NARROW = "; with so many lost, intervals are somewhat too narrow"
+SLOWER_SHARE = 0.6
+"""Of the rows with a value below which a channel may be slower than the log."""
+REGULAR_SHARE = 0.8
 LARGEST_READING = 1e100
 """Squares of larger ones do not fit a number of the machine."""
 
@@ -150,6 +153,34 @@ def clip_log(log: SensorLog, start: str | None, stop: str | None) -> SensorLog:
         for channel in log.channels
     )
     return replace(log, channels=channels, stamps=replace(log.stamps, seconds=seconds[part]))
+
+
+def own_rows(log: SensorLog) -> tuple[SensorLog, str]:
+    """Return a log of one channel at the rate of that channel, where it has a value in some rows only; and a sentence on it.
+
+    A slower sensor beside a faster one leaves its cells empty in the rows between. Where the rows with a value stand at
+    regular distances the others are no rows of it; where they do not, the log is returned as it is.
+    """
+    (channel,) = log.channels
+    count = sum(int(np.isfinite(channel.values[part]).sum()) for part in blocks(channel.values.size))
+    if count < SHORTEST_RUN or count > SLOWER_SHARE * channel.values.size:
+        return log, ""
+    rows = np.flatnonzero(np.isfinite(channel.values))
+    apart = np.diff(rows)
+    usual = int(np.median(apart))
+    if usual < 2 or np.mean(apart == usual) < REGULAR_SHARE:  # noqa: PLR2004  every second row
+        return log, ""
+    reference = None if channel.reference is None else channel.reference[rows]
+    stamps = log.stamps and replace(log.stamps, seconds=log.stamps.seconds[rows])
+    slower = replace(
+        log,
+        channels=(replace(channel, values=channel.values[rows], reference=reference),),
+        stamps=stamps,
+        rate=None if log.rate is None else log.rate / usual,
+        restarts=tuple(int(row) for row in np.searchsorted(rows, log.restarts)),
+        source=replace(log.source, rows=rows.size),
+    )
+    return slower, f"channel {channel.label!r} has a value in one row of {usual}: analysed at its own rate"
 
 
 def _usable(channel: Channel, wanted: BoolArray, grid: Grid, findings: list[Finding]) -> BoolArray:

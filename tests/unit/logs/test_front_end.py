@@ -160,3 +160,20 @@ def test_side_channel_without_a_common_clock(tmp_path: Path) -> None:
     log_sheet = LogSheet.model_validate({"channel": {"out": {"unit": "deg/s"}}, "side": side})
     with pytest.raises(UsageError, match="two clocks with a common origin"):
         characterize(tmp_path / "night.csv", log_sheet=log_sheet)
+
+
+@pytest.mark.parametrize("stamped", [True, False])
+def test_a_slower_sensor_beside_a_faster_one(stamped: bool) -> None:  # noqa: FBT001  a case of the test
+    """Its cells are empty in nine rows of ten, and one of its own is lost."""
+    rows = 10 * N
+    slow = np.full(rows, np.nan)
+    slow[::10] = RATE
+    slow[500] = np.nan
+    columns = {"time": np.arange(rows) / 100.0, "fast": np.resize(RATE, rows), "slow": slow}
+    given: dict[str, Any] = {"time_unit": "s"} if stamped else {"time": "none", "rate": 100.0}
+    result = characterize(columns, channels=["fast", "slow"], unit="V", made_at="2026-01-01", **given)
+    fast, other = result.channels
+    assert fast.sample_interval == pytest.approx(0.01)
+    assert other.sample_interval == pytest.approx(0.1)
+    assert other.n_used == N - 1
+    assert any("one row of 10" in str(sentence) for sentence in result.provenance.settings["understood"])  # type: ignore[union-attr]
