@@ -71,9 +71,11 @@ def test_little_memory(command: list[str], tmp_path: Path) -> None:
             assert len(outputs(tmp_path / "out")) == 3
         else:
             assert not outputs(tmp_path / "out"), (gibibytes, done)
-            # A library that cannot start a thread ends the process itself; otherwise one line says what is wrong.
+            # Below what the libraries themselves need, one of them may end the process in words of its own.
             said = done.stderr.startswith(b"stillbench: not enough memory")
-            assert said or done.returncode < 0, (gibibytes, done)
+            own = done.returncode < 0 or b"OpenBLAS error" in done.stderr
+            assert said or own, (gibibytes, done)
+            assert b"Traceback" not in done.stderr
     assert 0 in codes
 
 

@@ -18,8 +18,15 @@ COMMANDS = {
 }
 USAGE = 2
 NO_MEMORY = "stillbench: not enough memory for this log; cut it with --from and --to, or raise the limit on memory"
-UNMAPPED = ("failed to map segment", "cannot allocate memory", "seems to be broken")
-"""What libraries say that cannot be loaded for want of memory."""
+NO_ROOM = (
+    "failed to map segment",
+    "Cannot allocate memory",
+    "cannot allocate memory",
+    "`scipy` install you are using seems to be broken",
+    "can't start new thread",
+    "Resource temporarily unavailable",
+)
+"""What system and libraries say that get no memory or no thread."""
 INTERRUPTED = 130
 
 
@@ -82,7 +89,7 @@ def _run(arguments: Sequence[str] | None) -> int:  # noqa: PLR0911  one return a
         click.echo(NO_MEMORY, err=True)
         return 1
     except Exception as error:
-        if isinstance(error, ImportError) and any(sign in f"{error} {error.__cause__}" for sign in UNMAPPED):
+        if any(sign in f"{error} {error.__cause__}" for sign in NO_ROOM):
             click.echo(NO_MEMORY, err=True)
             return 1
         if os.environ.get("STILLBENCH_TRACEBACK"):

@@ -6,6 +6,13 @@ that a caller need not read the text.
 
 from collections.abc import Sequence
 
+LONGEST_PART = 600
+"""Characters of each part of a message."""
+
+
+def _clipped(text: str) -> str:
+    return text if len(text) <= LONGEST_PART else f"{text[: LONGEST_PART - 40]} ... ({len(text)} characters)"
+
 
 class StillbenchError(Exception):
     """Base of all errors of this package.
@@ -29,12 +36,12 @@ class StillbenchError(Exception):
     @property
     def message(self) -> str:
         """The whole message, one line, control characters made visible."""
-        text = self.found
+        text = _clipped(self.found)
         if self.wanted:
-            text += f"; wanted {self.wanted}"
+            text += f"; wanted {_clipped(self.wanted)}"
         text += "."
         if self.way_out:
-            text += f" {self.way_out[0].upper()}{self.way_out[1:]}"
+            text += f" {self.way_out[0].upper()}{_clipped(self.way_out[1:])}"
             if not text.endswith((".", "?")):
                 text += "."
         return "".join(c if c.isprintable() else repr(c)[1:-1] for c in text)

@@ -408,4 +408,7 @@ def parse_quantity(text: str, purpose: str) -> tuple[float, Unit]:
     number, unit = match.groups()
     if not unit:
         raise UnitError(text, f"{purpose} {text!r} has no unit", "a number and its unit", "write it like '0.01 deg/s'")
-    return float(number), parse_unit(unit)
+    value = float(number)
+    if not math.isfinite(value):
+        raise UnitError(text, f"{purpose} is {text[:40]!r}", "a number that fits the machine")
+    return value, parse_unit(unit)

@@ -139,6 +139,8 @@ def _view(contents: Contents) -> np.ndarray:
             "plain numeric arrays",
             "save it again with numpy.save",
         )
+    if any(length < 0 for length in shape):
+        raise LogError(f"{contents.name!r} declares the shape {shape}", "a shape of whole numbers", "save it again")
     declared = int(np.prod(shape, dtype=object)) * dtype.itemsize
     if declared + stream.tell() > len(contents.data):
         raise LogError(

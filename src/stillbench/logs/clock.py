@@ -344,6 +344,8 @@ def _slope(seconds: FloatArray, index: IntArray, group: IntArray) -> float:
     use = np.ones(seconds.size, dtype=bool)
     slope = 0.0
     for _ in range(3):
+        if not use.any():
+            break
         x, y, g = index[use].astype(float), seconds[use], group[use]
         starts = np.flatnonzero(np.append(True, np.diff(g) != 0))
         counts = np.diff(np.append(starts, g.size))

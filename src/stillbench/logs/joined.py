@@ -33,6 +33,7 @@ class JoinedTable(Table):
             raise LogError(
                 "the files differ in their sampling rate", "files of one rate", "give those of one logger only"
             )
+        self.words = first.words
         self.empty = frozenset.intersection(*(table.empty for table in tables))
         for table, name in zip(tables, names, strict=True):
             self.remarks += [f"{name}: {remark}" for remark in table.remarks]

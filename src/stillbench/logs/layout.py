@@ -28,6 +28,8 @@ CONTROL_SHARE = 0.01
 FITTING_SHARE = 0.9
 MOST_TORN = 3
 """Rows between the head and the first whole row that are taken as torn ones."""
+WORDS_SHARE = 0.5
+"""Of the cells of a column that are no values, from which it is one of words."""
 TAIL_SHARES = (2.0 / 3.0, 1.0 / 3.0, 1.0 / 6.0)
 FEWEST_TAIL = 12
 
@@ -49,6 +51,8 @@ class Layout:
         Columns of a row of data.
     units : list of str or None
         Of a row of units below the head.
+    words : frozenset of int
+        Columns that hold words.
     """
 
     encoding: str
@@ -58,9 +62,10 @@ class Layout:
     body_line: int
     columns: int
     units: list[str] | None = None
+    words: frozenset[int] = frozenset()
 
     @property
-    def words(self) -> str:
+    def spoken(self) -> str:
         """The layout in words."""
         mark = "decimal comma" if self.decimal == "," else "decimal point"
         head = "with head" if self.heads else "no head"
@@ -124,8 +129,25 @@ def is_number(cell: str, decimal: str) -> bool:
     return bool(cell) and _NUMBER[decimal].fullmatch(cell) is not None
 
 
-def _is_row(cells: Sequence[str], decimal: str) -> bool:
-    return all(_is_value(cell, decimal) for cell in cells) and any(is_number(cell, decimal) for cell in cells)
+def _is_row(cells: Sequence[str], decimal: str, words: frozenset[int] = frozenset()) -> bool:
+    """Whether all cells are values, those in columns of words left out, and one at least is a number."""
+    plain = [cell for index, cell in enumerate(cells) if index not in words]
+    return all(_is_value(cell, decimal) for cell in plain) and any(is_number(cell, decimal) for cell in plain)
+
+
+def _columns_of_words(lines: Sequence[str], delimiter: str, decimal: str) -> frozenset[int]:
+    """Return the columns that hold words from row to row, as a state beside the readings does; empty when there are none."""
+    rows = [split_cells(line, delimiter) for line in lines]
+    widths = Counter(map(len, rows))
+    width, count = widths.most_common(1)[0] if widths else (0, 0)
+    if delimiter == " " or width < 2 or count < FITTING_SHARE * len(rows):  # noqa: PLR2004  words in prose are no columns
+        return frozenset()
+    rows = [row for row in rows if len(row) == width]
+    return frozenset(
+        index
+        for index in range(width)
+        if sum(not _is_value(row[index], decimal) for row in rows) > WORDS_SHARE * len(rows)
+    )
 
 
 def is_comment(line: str) -> bool:
@@ -134,12 +156,12 @@ def is_comment(line: str) -> bool:
     return not stripped or stripped.startswith(COMMENTS)
 
 
-def _score(lines: Sequence[str], delimiter: str, decimal: str) -> tuple[float, int]:
+def _score(lines: Sequence[str], delimiter: str, decimal: str, words: frozenset[int]) -> tuple[float, int]:
     """Share of lines that are rows of numbers of the commonest width, and that width."""
     widths: Counter[int] = Counter()
     for line in lines:
         cells = split_cells(line, delimiter)
-        if _is_row(cells, decimal):
+        if _is_row(cells, decimal, words):
             widths[len(cells)] += 1
     if not widths:
         return 0.0, 0
@@ -187,9 +209,15 @@ def find_layout(lines: Sequence[str], encoding: str, section: LogSection, name: 
     if section.head_lines is not None:
         body = [line for line in lines[section.head_lines :] if not is_comment(line)]
     # The last part of the sample is past any head; the longer the head beside the rows, the shorter that part.
-    for share in TAIL_SHARES:
+    words: dict[str, frozenset[int]] = {}
+    for share, worded in [(share, worded) for worded in (False, True) for share in TAIL_SHARES]:
         tail = body[len(body) - max(min(len(body), FEWEST_TAIL), round(share * len(body))) :]
-        scored = [(*_score(tail, delimiter, mark), delimiter, mark) for delimiter, mark in _candidates(section)]
+        if worded:
+            words = {delimiter: _columns_of_words(tail, delimiter, ".") for delimiter in DELIMITERS}
+        scored = [
+            (*_score(tail, delimiter, mark, words.get(delimiter, frozenset())), delimiter, mark)
+            for delimiter, mark in _candidates(section)
+        ]
         best = max((share for share, *_ in scored), default=0.0)
         if best >= FITTING_SHARE:
             break
@@ -202,12 +230,13 @@ def find_layout(lines: Sequence[str], encoding: str, section: LogSection, name: 
     delimiter, decimal, width = _choose(fitting, nearly, body, lines, name)
     if delimiter == "," and section.delimiter is None:
         _refuse_parted_stamps(tail, name)
-    heads, units, body_line = _find_head(lines, delimiter, decimal, width, section.head_lines)
+    columns = words.get(delimiter, frozenset())
+    heads, units, body_line = _find_head(lines, delimiter, decimal, width, section.head_lines, columns)
     if decimal == "," and section.decimal is None:
         _refuse_thousands(tail, delimiter, name)
     if delimiter == "," and heads is None and section.delimiter is None:
         _refuse_decimal_commas(lines, body_line, width, name)
-    return Layout(encoding, delimiter, decimal, heads, body_line, width, units)
+    return Layout(encoding, delimiter, decimal, heads, body_line, width, units, columns)
 
 
 def _refuse_thousands(rows: Sequence[str], delimiter: str, name: str) -> None:
@@ -282,7 +311,12 @@ def _choose(
 
 
 def _find_head(
-    lines: Sequence[str], delimiter: str, decimal: str, width: int, head_lines: int | None
+    lines: Sequence[str],
+    delimiter: str,
+    decimal: str,
+    width: int,
+    head_lines: int | None,
+    words: frozenset[int] = frozenset(),
 ) -> tuple[list[str] | None, list[str] | None, int]:
     """Heads, units below them, and the line of the first row of data."""
     first = head_lines or 0
@@ -290,7 +324,7 @@ def _find_head(
         line = lines[first]
         if not is_comment(line):
             cells = split_cells(line, delimiter)
-            if len(cells) == width and _is_row(cells, decimal):
+            if len(cells) == width and _is_row(cells, decimal, words):
                 break
         first += 1
     units_row: list[str] | None = None

@@ -28,6 +28,8 @@ CLOCKS = (60.0, 3_600.0, 86_400.0, 604_800.0)
 ROLL_STEPS = 20.0
 """Usual steps that may be missing where a counter rolls over."""
 LONGEST_HEAD = 200
+LONGEST_LOG = 1e11
+"""Seconds (three thousand years)."""
 RESOLUTION_SAMPLE = 10_000
 FEW_ABSENT = 3
 ABSENT_SHARE = 1e-3
@@ -135,6 +137,8 @@ def read_stamps(table: Table, index: int, declared: str | None) -> tuple[Stamps,
     seconds = numbers - numbers[0]
     del numbers
     seconds *= scale
+    if not max(float(seconds.max()), -float(seconds.min())) < LONGEST_LOG:
+        raise ClockError(f"the stamps of {head!r} reach over more than {LONGEST_LOG:g} s", "time stamps")
     kind = "absolute" if unit == "unix" else "counter"
     stamps = Stamps(seconds, head, unit, kind, origin, resolution)  # type: ignore[arg-type]
     return (

@@ -25,6 +25,8 @@ class Table(ABC):
         What the file itself says of each column's unit; it is offered, never taken without being confirmed.
     empty : frozenset of int
         Columns without a value.
+    words : frozenset of int
+        Columns that hold words, not numbers.
     restarts : list of int
         Rows (from 0) before which the logger was started again; complete once the numbers were read.
     rate : float or None
@@ -38,6 +40,7 @@ class Table(ABC):
         self.remarks: list[str] = []
         self.units: list[str | None] = [None] * len(self.heads)
         self.empty: frozenset[int] = frozenset()
+        self.words: frozenset[int] = frozenset()
         self.restarts: list[int] = []
         self.rate: float | None = None
 

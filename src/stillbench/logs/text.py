@@ -72,6 +72,8 @@ class TextTable(Table):
             self._bytes, self._path = self._bytes[3:], None
         if b"\r" in self._bytes[:SAMPLE_BYTES] and b"\n" not in self._bytes[:SAMPLE_BYTES]:
             self._bytes = self._bytes[:].replace(b"\r", b"\n")  # lines ended in the old way
+        if b"\r\r\n" in self._bytes[:SAMPLE_BYTES]:
+            self._bytes, self._path = self._bytes[:].replace(b"\r\r\n", b"\n"), None
         remarks = []
         if section.line_pattern is not None:
             whole = self._bytes[:].decode("utf-8", "replace")
@@ -86,14 +88,19 @@ class TextTable(Table):
         self.layout: Layout = find_layout(lines[:SAMPLE_LINES], encoding, section, contents.name)
         heads = self.layout.heads or [str(i + 1) for i in range(self.layout.columns)]
         wrapping = f", {contents.wrapping}" if contents.wrapping else ""
-        super().__init__(heads, self.layout.words + wrapping, has_heads=self.layout.heads is not None)
+        super().__init__(heads, self.layout.spoken + wrapping, has_heads=self.layout.heads is not None)
         self.remarks += remarks
         self.units = [cell.strip("[]() ") or None for cell in self.layout.units or [""] * self.layout.columns]
         self._missing = (*NULLS, *section.missing)
         self._marks = [number for text in section.missing if np.isfinite(number := _float(text, self.layout.decimal))]
         self._sample = lines[self.layout.body_line : SAMPLE_LINES]
-        self._quoted = any('"' in line for line in self._sample)
+        # Quotes count only where they stand in pairs: a stray one would swallow all lines up to the next.
+        self._quoted = any('"' in line for line in self._sample) and not any(
+            line.count('"') % 2 for line in self._sample
+        )
+        self._say_what_is_passed_over(lines[section.head_lines or 0 : self.layout.body_line])
         self._first_row: list[str] | None = None
+        self.words = self.layout.words
         self.empty = self._empty_columns()
         self._head = [line.strip().encode() for line in lines[: self.layout.body_line] if not is_comment(line)]
         self._body = self._find_body()
@@ -101,6 +108,16 @@ class TextTable(Table):
         self._waiting: dict[int, object] = {}
         self._clean = False
         self._numbered = False
+
+    def _say_what_is_passed_over(self, lines: Sequence[str]) -> None:
+        """Say which lines above the first whole row hold numbers, where no head tells what they are."""
+        above = [line for line in lines if not is_comment(line)]
+        if self.layout.heads is None and any(
+            is_number(cell, self.layout.decimal) for line in above for cell in split_cells(line, self.layout.delimiter)
+        ):
+            self.remarks.append(
+                f"{plural(len(above), 'line')} above the first whole row passed over: {above[-1][:40]!r}"
+            )
 
     @staticmethod
     def _transcode(raw: bytes, encoding: str, name: str) -> bytes:
@@ -164,7 +181,7 @@ class TextTable(Table):
             )
         return memoryview(b"".join(parts))
 
-    def _convert(self, indices: Sequence[int], *, as_text: bool) -> list[object]:
+    def _convert(self, indices: Sequence[int], *, as_text: bool) -> list[object]:  # noqa: PLR0911  one a thing that is mended first
         """Convert columns by the library reader; rows that do not fit are refused, but for a torn last line."""
         import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
         from pyarrow import csv  # noqa: PLC0415
@@ -194,6 +211,9 @@ class TextTable(Table):
             self._numbered = True  # once more, so that the place of each is known
             return self._convert(indices, as_text=as_text)
         columns = [table.column(str(i)) for i in indices]
+        if self._quoted and len(columns[0]) + len(misfits) < self._row_lines():
+            self._quoted = False  # a quote spans lines: none of them is taken for one then
+            return self._convert(indices, as_text=as_text)
         return self._with_holes(columns, true_misfits) if true_misfits else columns
 
     def _options(
@@ -235,6 +255,8 @@ class TextTable(Table):
         import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
         from pyarrow import csv  # noqa: PLC0415
 
+        if 0 not in indices and _COMMENT_LINES.search(self._body):
+            return None
         room = self._rows_at_most()
         arrays, rows = [large_array(room) for _ in indices], 0
         misfits: list[tuple[int, str]] = []
@@ -344,6 +366,10 @@ class TextTable(Table):
             if number > self.layout.body_line:
                 yield number, line.decode("utf-8", "replace")
 
+    def _row_lines(self) -> int:
+        """Return how many lines of the body hold something."""
+        return len(_ROWS.findall(self._body))
+
     def _explain(self, indices: Sequence[int], error: Exception) -> None:
         """Find the first cell that is no number and raise CellError; otherwise say what the reader said."""
         for number, line in self._lines():
@@ -360,7 +386,7 @@ class TextTable(Table):
         raise LogError(f"{self.name!r} cannot be read as a table ({error})", "rows of numbers") from error
 
     def expect(self, indices: Sequence[int]) -> None:
-        self._expected = list(indices)
+        self._expected = list(dict.fromkeys(indices))
 
     def numbers(self, indices: Sequence[int]) -> list[FloatArray]:
         import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read

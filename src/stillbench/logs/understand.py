@@ -131,6 +131,7 @@ def _columns(
     columns = []
     for index, head in enumerate(table.heads):
         role = "time" if index == time_index else "empty" if index in table.empty else "data"
+        role = "words" if index in table.words and role == "data" else role
         offered = split_head(head)[1] or table.units[index]
         declared = by_flag.get(index) or by_sheet.get(index) or (units.get("") if role == "data" else None)
         columns.append(ColumnUnderstanding(index + 1, head, role, offered, declared))

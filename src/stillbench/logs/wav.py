@@ -49,7 +49,7 @@ def read_wav(contents: Contents, section: LogSection) -> ArrayTable:  # noqa: AR
         struct.error,
     ) as error:
         raise LogError(
-            f"{contents.name!r} cannot be read as WAV: {str(error)[:80]}",
+            f"{contents.name!r} cannot be read as WAV: {_reason(error)}",
             "uncompressed samples",
             "record it again as PCM",
         ) from error
@@ -66,6 +66,14 @@ def read_wav(contents: Contents, section: LogSection) -> ArrayTable:  # noqa: AR
     if declared + 8 > len(contents.data):
         table.remarks.append(f"the file declares {declared + 8} bytes and holds {len(contents.data)}: it is cut short")
     return table
+
+
+def _reason(error: Exception) -> str:
+    return (
+        "it has no samples in it, or a recorder that was cut off"
+        if isinstance(error, UnboundLocalError)
+        else str(error)[:80]
+    )
 
 
 FORMAT = Format(("wav",), _recognizes, read_wav)

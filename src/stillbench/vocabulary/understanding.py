@@ -15,7 +15,7 @@ class ColumnUnderstanding:
         From 1.
     head : str
     role : str
-        ``time``, ``data`` or ``empty``.
+        ``time``, ``data``, ``words`` or ``empty``.
     unit : str or None
         As the file says; it counts only once it is declared.
     declared : str or None

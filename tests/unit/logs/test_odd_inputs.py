@@ -14,7 +14,7 @@ from stillbench.foundation.errors import LogError, StillbenchError, UsageError
 from stillbench.foundation.units import parse_unit
 from stillbench.logs.read import read_log
 from stillbench.logs.understand import understand_log
-from stillbench.pipeline import load_log_sheet
+from stillbench.pipeline import characterize, load_log_sheet
 from stillbench.vocabulary.log_sheet import LogSheet
 
 N = 60
@@ -38,6 +38,43 @@ def test_a_stray_quote_swallows_no_lines(tmp_path: Path) -> None:
     assert column(log, "1").size == 2_500
     with pytest.raises(LogError, match="in column '2'"):
         column(log, "2")
+
+
+@pytest.mark.parametrize("places", [(20,), (20, 60), (2, 2_900)])
+def test_a_stray_quote_near_the_start(tmp_path: Path, places: tuple[int, ...]) -> None:
+    rows = [f'{i}.5,{i}.25,"word"' for i in range(3_000)]
+    for place in places:
+        rows[place] = f'{place}.5,{place}.25,"word'
+    assert column(text(tmp_path / "log.csv", rows), "2").tolist() == [i + 0.25 for i in range(3_000)]
+
+
+def test_a_column_of_words_beside_the_readings(tmp_path: Path) -> None:
+    """A state, as many loggers write it; it is no channel, and asking for it says why."""
+    rows = [f"{i / 10:.1f};{'OK' if i % 7 else 'WARM UP'};{i}.5;on" for i in range(N)]
+    log = text(tmp_path / "log.csv", ["time [s];state;rate;light", *rows])
+    assert read_log(log, units={"": "V"}).channels[0].values.tolist() == [i + 0.5 for i in range(N)]
+    with pytest.raises(LogError, match="'WARM UP' in column 'state'"):
+        column(log, "state")
+    assert [part.role for part in understand_log(log).columns] == ["time", "words", "data", "words"]
+
+
+def test_lines_that_end_twice_in_a_single_column(tmp_path: Path) -> None:
+    assert column(text(tmp_path / "log.csv", ["g", *(f"{i}.5" for i in range(N))], "\r\r\n"), "g").size == N
+
+
+def test_a_torn_first_row_without_a_head_is_said(tmp_path: Path) -> None:
+    log = text(tmp_path / "log.csv", ["1.5,2.5", *(f"{i},{i}.5,{i}.25" for i in range(N))])
+    made = read_log(log, channels=["2"], units={"": "V"}, rate=1.0, time="none")
+    assert any("above the first whole row" in sentence for sentence in made.understood)
+
+
+def test_stamps_from_end_to_end_of_the_numbers(tmp_path: Path) -> None:
+    rows = [f"{i}.0,{i}.5" for i in range(N)]
+    rows[20], rows[30] = "-1e308,20.5", "1e308,30.5"
+    log = text(tmp_path / "log.csv", ["time,x", *rows])
+    with pytest.raises(StillbenchError, match="reach over more"):
+        characterize(log, unit="V", time_unit="s")
+    assert "reach over more" in understand_log(log, time_unit="s").clock
 
 
 def test_blanks_within_stamps_between_tabs(tmp_path: Path) -> None:
