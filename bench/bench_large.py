@@ -98,6 +98,7 @@ def main() -> None:
     parser = argparse.ArgumentParser()
     parser.add_argument("--sizes", type=float, nargs="+", default=[1e7, 1e8, 1e9])
     parser.add_argument("--out", type=Path, default=RESULTS)
+    parser.add_argument("--most-memory", type=float, help="MiB; exit with an error when more was needed")
     chosen = parser.parse_args()
     lines = []
     with tempfile.TemporaryDirectory() as name:
@@ -122,6 +123,8 @@ def main() -> None:
         " times | ns a sample | peak memory, MiB |\n|---|---|---|---|---|---|---|\n" + "\n".join(rows) + "\n"
     )
     print(chosen.out.read_text())
+    if chosen.most_memory is not None and max(peak for *_, peak, _ in lines) > chosen.most_memory:
+        sys.exit(f"more than {chosen.most_memory:g} MiB were needed")
 
 
 if __name__ == "__main__":

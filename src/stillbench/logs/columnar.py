@@ -7,6 +7,7 @@ import numpy as np
 
 from stillbench.foundation.arrays import FloatArray, IntArray
 from stillbench.foundation.errors import LogError
+from stillbench.foundation.scratch import LARGE, large_array
 from stillbench.logs.contents import Contents, check_expansion
 from stillbench.logs.formats import Format
 from stillbench.logs.layout import distinct
@@ -62,7 +63,7 @@ class ColumnarTable(Table):
         name = self.heads[index]
         try:
             if hasattr(self._file, "schema_arrow"):
-                plain = self._names.count(name) == 1 and not any(pa.types.is_nested(kind) for kind in self._types)
+                plain = self._is_plain(index)
                 found = self._file.read(columns=[name]).column(0) if plain else self._file.read().column(index)
             else:
                 batches = [self._file.get_batch(i).column(index) for i in range(self._file.num_record_batches)]
@@ -74,6 +75,32 @@ class ColumnarTable(Table):
             raise self._damaged(ValueError(f"column {name!r} has {len(found)} of {self._rows} rows"))
         return found
 
+    def _is_plain(self, index: int) -> bool:
+        """Whether the column may be asked for by its name."""
+        import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
+
+        return self._names.count(self._names[index]) == 1 and not any(pa.types.is_nested(kind) for kind in self._types)
+
+    def _streamed(self, index: int) -> FloatArray:
+        """Read a long column batch by batch into a scratch file."""
+        import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
+
+        check_expansion(8 * self._rows, self._buffer.size, self._name)
+        values, done = large_array(self._rows), 0
+        if hasattr(self._file, "iter_batches"):
+            batches = self._file.iter_batches(columns=[self._names[index]])
+        else:
+            batches = (self._file.get_batch(i).select([index]) for i in range(self._file.num_record_batches))
+        for batch in batches:
+            column = batch.column(0)
+            column.validate(full=True)
+            part = column.cast(pa.float64(), safe=False).to_numpy(zero_copy_only=False)
+            values[done : done + part.size] = part
+            done += part.size
+        if done != self._rows:
+            raise self._damaged(ValueError(f"{done} of {self._rows} rows"))
+        return values
+
     def numbers(self, indices: Sequence[int]) -> list[FloatArray]:
         import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
 
@@ -82,6 +109,9 @@ class ColumnarTable(Table):
             kind = self._types[index]
             if not (pa.types.is_integer(kind) or pa.types.is_floating(kind) or pa.types.is_boolean(kind)):
                 raise LogError(f"column {self.heads[index]!r} holds {kind}, not real numbers", "integers or floats")
+            if self._rows >= LARGE and self._is_plain(index):
+                arrays.append(self._streamed(index))
+                continue
             column = self._column(index)
             arrays.append(np.asarray(column.cast(pa.float64(), safe=False).to_numpy(), dtype=np.float64))
         return arrays

@@ -13,6 +13,7 @@ import numpy as np
 
 from stillbench.foundation.arrays import FloatArray
 from stillbench.foundation.errors import LogError
+from stillbench.foundation.scratch import large_array
 from stillbench.foundation.suggestions import listed
 from stillbench.logs.arrays import MOST_CHANNELS
 from stillbench.logs.contents import Contents
@@ -92,16 +93,19 @@ class _Child:
         timer = threading.Timer(self.seconds + 1.0, self._process.kill)
         timer.start()
         try:
-            data = bytearray(int(line))
-            view, stream = memoryview(data), self._pipe(self._process.stdout)
+            size = int(line)
+            if 8 * int(np.prod(shape)) != size:
+                raise self._gave_up()
+            samples = large_array(size // 8)
+            view, stream = samples.view(np.uint8).data, self._pipe(self._process.stdout)
             done = 0
-            while done < len(data) and (count := stream.readinto(view[done:])):  # type: ignore[attr-defined]
+            while done < size and (count := stream.readinto(view[done:])):  # type: ignore[attr-defined]
                 done += count
         finally:
             timer.cancel()
-        if done < len(data) or 8 * int(np.prod(shape)) != len(data):
+        if done < size:
             raise self._gave_up()
-        return np.frombuffer(data, dtype="<f8").reshape(shape)
+        return samples.reshape(shape)
 
     def close(self) -> None:
         """End the process."""

@@ -290,3 +290,19 @@ def test_files_that_make_one_night(tmp_path: Path) -> None:
     (tmp_path / "b.csv").write_text("time,pace\n" + "1,2\n" * 20)
     with pytest.raises(LogError, match="'pace', 'rate'"):
         read_log(paths, units={"": "rad/s"}, time_unit="s")
+
+
+@pytest.mark.parametrize("write", [write_parquet, write_feather, write_hdf5, write_npy])
+def test_long_columns_go_into_scratch_files(
+    tmp_path: Path, write: Callable[[Path], None], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """The same numbers, whichever way they are read."""
+    path = tmp_path / "log.npy"
+    write(path)
+    for module in ("foundation.scratch", "logs.columnar", "logs.arrays"):
+        monkeypatch.setattr(f"stillbench.{module}.LARGE", 100)
+    name, time = (
+        ("2", "1") if write is write_npy else ("sensor/rate", "time") if write is write_hdf5 else ("rate", "time")
+    )
+    log = read_log(path, channels=[name], units={"": "rad/s"}, time=time, time_unit="s")
+    assert np.array_equal(log.channels[0].values, RATE)
