@@ -106,6 +106,7 @@ class TextTable(Table):
         self._body = self._find_body()
         self._expected: list[int] = []
         self._waiting: dict[int, object] = {}
+        self._streams: dict[int, FloatArray] = {}
         self._clean = False
         self._numbered = False
 
@@ -189,7 +190,7 @@ class TextTable(Table):
         misfits: list[tuple[int, str]] = []
         if as_text:
             self._take_heads_out()
-        if 0 not in indices and not self._clean and _COMMENT_LINES.search(self._body):
+        if 0 not in indices and not self._clean and self._may_hold_comments():
             return self._without_comments(
                 indices, as_text=as_text
             )  # no other cell would tell a row behind a comment mark
@@ -255,7 +256,7 @@ class TextTable(Table):
         import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
         from pyarrow import csv  # noqa: PLC0415
 
-        if 0 not in indices and _COMMENT_LINES.search(self._body):
+        if 0 not in indices and self._may_hold_comments():
             return None
         room = self._rows_at_most()
         arrays, rows = [large_array(room) for _ in indices], 0
@@ -290,6 +291,14 @@ class TextTable(Table):
         file = pa.OSFile(str(self._path))
         file.seek(len(self._bytes) - len(self._body))
         return file
+
+    def _may_hold_comments(self) -> bool:
+        """Whether a row stands behind a comment mark; a log of numbers has none of these signs at all."""
+        offset = len(self._bytes) - len(self._body) if self._body.obj is self._bytes else 0
+        whole = self._bytes if self._body.obj is self._bytes else bytes(self._body)
+        if all(whole.find(mark, offset) < 0 for mark in (b"#", b"%", b"!", b"//")):
+            return False
+        return _COMMENT_LINES.search(self._body) is not None
 
     def _without_comments(self, indices: Sequence[int], *, as_text: bool) -> list[object]:
         self._body = memoryview(_COMMENT_LINES.sub(b"", bytes(self._body)))
@@ -391,10 +400,16 @@ class TextTable(Table):
     def numbers(self, indices: Sequence[int]) -> list[FloatArray]:
         import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
 
-        if self._is_large() and (found := self._streamed(indices)) is not None:
-            for array in found:
-                self._take_marks_out(array)
+        if indices and all(index in self._streams for index in indices):
+            found = [self._streams[index] for index in indices]
+            self._streams = {index: array for index, array in self._streams.items() if index not in indices}
             return found
+        together = list(dict.fromkeys([*indices, *self._expected]))
+        if self._is_large() and (streamed := self._streamed(together)) is not None:
+            for array in streamed:
+                self._take_marks_out(array)
+            self._streams = dict(zip(together, streamed, strict=True))
+            return self.numbers(indices)
         wanted, indices = indices, list(dict.fromkeys(indices))
         early = [index for index in self._expected if index not in indices]
         fresh = [index for index in indices if index not in self._waiting]
