@@ -247,7 +247,7 @@ def _read_dates(table: Table, index: int, declared: str | None) -> tuple[Stamps,
     stamps = Stamps(seconds, head, "iso", kind, float(nanoseconds[0]) * 1e-9, _resolution(seconds), offset)  # type: ignore[arg-type]
     zone = f"with zone, the first {offset / 3600.0:+g} h of UTC" if zoned else "local time, no zone given"
     where = f"columns {head!r}" if beside is not None else f"column {head!r}"
-    return stamps, present, f"time from {where}, {words} {zone}; override with --time and --time-unit"
+    return stamps, present, f"time from {where}, {words}, {zone}; override with --time and --time-unit"
 
 
 def _offset(text: str) -> float:

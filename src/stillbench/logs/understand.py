@@ -10,6 +10,7 @@ from stillbench.foundation.progress import SILENT, Progress
 from stillbench.foundation.suggestions import listed
 from stillbench.foundation.units import parse_unit
 from stillbench.logs.clock import audit_clock
+from stillbench.logs.dates import is_stamp
 from stillbench.logs.layout import DELIMITER_WORDS
 from stillbench.logs.read import check_rate, open_log, time_column
 from stillbench.logs.stamps import read_stamps, split_head
@@ -131,6 +132,7 @@ def _columns(
     columns = []
     for index, head in enumerate(table.heads):
         role = "time" if index == time_index else "empty" if index in table.empty else "data"
+        role = "time" if role == "data" and is_stamp(table.first_text(index)) else role
         role = "words" if index in table.words and role == "data" else role
         offered = split_head(head)[1] or table.units[index]
         declared = by_flag.get(index) or by_sheet.get(index) or (units.get("") if role == "data" else None)
