@@ -123,9 +123,9 @@ def _chosen(
 ) -> list[tuple[str, int]]:
     """Labels and columns of the channels that are wanted."""
     declared = {name: table.index_of(section.column or name) for name, section in sheet.channel.items()}
-    data = [
-        index for index in range(len(table.heads)) if index != time_index and index not in table.empty | table.words
-    ]
+    idle = table.empty | table.words
+    data = [index for index in range(len(table.heads)) if index != time_index and index not in idle]
+    data = [index for index in data if not is_stamp(table.first_text(index))]
     if "all" in channels:
         named = {table.index_of(name): name for name in units if name}
         by_sheet = {index: name for name, index in declared.items() if sheet.channel[name].unit}
