@@ -14,6 +14,7 @@ from stillbench.foundation.suggestions import did_you_mean, listed, plural
 from stillbench.foundation.units import Unit, parse_unit
 from stillbench.logs.arrays import ArrayTable, columns_of
 from stillbench.logs.contents import open_contents
+from stillbench.logs.dates import is_stamp
 from stillbench.logs.formats import damage_said, read_table
 from stillbench.logs.joined import JoinedTable
 from stillbench.logs.side import side_file, side_series
