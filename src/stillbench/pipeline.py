@@ -10,7 +10,7 @@ from typing import Any
 
 import numpy as np
 
-from stillbench.assessment.converter_part import corrected_terms, limited_span
+from stillbench.assessment.converter_part import converter_finding, corrected_terms, limited_span
 from stillbench.assessment.evidence import Evidence
 from stillbench.assessment.judge import judge, load_specification, require_applicable, spoken_unit
 from stillbench.assessment.uncertainty import normal_quantile, with_common_factor
@@ -19,7 +19,6 @@ from stillbench.deviation.intervals import bound_deviation, mixture_of
 from stillbench.deviation.overlapping import estimate_deviation
 from stillbench.foundation.errors import ClockError, NothingToMeasureError, RecordTooShortError, UsageError
 from stillbench.foundation.progress import SILENT, Progress
-from stillbench.foundation.rounding import significant
 from stillbench.foundation.scratch import blocks
 from stillbench.foundation.toml_source import load_toml
 from stillbench.foundation.units import parse_unit
@@ -29,7 +28,7 @@ from stillbench.logs.clock import Grid, audit_clock
 from stillbench.logs.cut import clip_log, cut_record, own_rows
 from stillbench.logs.front_end import convert
 from stillbench.logs.read import read_log
-from stillbench.logs.side import aligned
+from stillbench.logs.side import side_summary
 from stillbench.scale.calibrate import calibrate_scale
 from stillbench.scale.plan import read_plan, relative_of
 from stillbench.screening.converter import REFUSED
@@ -41,24 +40,21 @@ from stillbench.vocabulary.characterization import (
     Characterization,
     Provenance,
     Setting,
-    SideSummary,
     Timeline,
 )
 from stillbench.vocabulary.converter_share import ConverterShare
-from stillbench.vocabulary.finding import Finding
 from stillbench.vocabulary.log_sheet import LogSheet
 from stillbench.vocabulary.noise_model import NoiseModel, NoiseTerm
 from stillbench.vocabulary.quantity import QUANTITIES, Quantity
 from stillbench.vocabulary.record import Record
 from stillbench.vocabulary.scale_factor import ScaleFactor
 from stillbench.vocabulary.screened_record import ScreenedRecord
-from stillbench.vocabulary.sensor_log import SensorLog, SideSeries, Source
+from stillbench.vocabulary.sensor_log import SensorLog, Source
 from stillbench.vocabulary.specification import Specification
 
 LIBRARIES = ("numpy", "scipy", "pandas", "pyarrow")
 """Those whose version can move a number."""
 TIMELINE_SPANS = 900
-SIDE_PROBES = 10_000
 COVERAGES = (0.5, 0.999)
 READINGS = ("voltage", "count")
 CLIPPED_PERCENT = 0.1
@@ -378,7 +374,7 @@ def _characterize_record(
         relative,
         record.front_end.text if record.front_end else "",
         unscreened,
-        {series.name: _side_summary(series, record) for series in record.side},
+        {series.name: side_summary(series, record) for series in record.side},
     )
 
 
@@ -398,61 +394,10 @@ def _with_converter(
     alone = identify_noise(record, curve, coverage=coverage, progress=progress).model
     span = limited_span(found.curve, curve)
     sensor = corrected_terms(found.noise, alone)
-    findings = found.findings
-    limited = [
-        name.replace("_", " ") for name, term in sensor.items() if term.limited and found.noise.terms[name].lower
-    ]
-    if span is not None or limited:
-        where = ""
-        if span is not None:
-            open_end = span[1] >= 0.99 * found.curve.tau[-1]
-            first, last = (f"{significant(end, 2)} s" for end in span)
-            where = f"above {first}" if open_end else f"from {first} to {last}"
-        words = [f"converter-limited {where}"] if where else []
-        words += [f"half or more of {' and '.join(limited)} is the converter's"] if limited else []
-        findings = (
-            *findings,
-            Finding(
-                "converter_limited",
-                None,
-                None,
-                span[0] if span else None,
-                "s",
-                excluded=False,
-                because=f"{'; '.join(words)} (log of the converter alone: {log.source.name})",
-                disposition="the terms are those of sensor and converter together; what is left for the sensor stands beside them",
-            ),
-        )
+    finding = converter_finding(found, sensor, span, log.source.name)
     share = ConverterShare(log.source, curve, alone, sensor, span[0] if span else None, span[1] if span else None)
+    findings = found.findings if finding is None else (*found.findings, finding)
     return replace(found, findings=findings, converter=share)
-
-
-def _side_summary(series: SideSeries, record: Record) -> SideSummary:
-    """Course of a side channel over the record, and the share of the record that it supports."""
-    times = np.concatenate(
-        [run.start + np.array([0, run.n_samples - 1]) * record.sample_interval for run in record.runs]
-    )
-    probes = np.concatenate(
-        [
-            np.linspace(first, last, max(2, round(SIDE_PROBES * (last - first) / max(record.duration, 1e-9))))
-            for first, last in times.reshape(-1, 2)
-        ]
-    )
-    covered = float(np.isfinite(aligned(series, probes)).mean())
-    inside = (series.seconds >= times[0]) & (series.seconds <= times[-1]) & np.isfinite(series.values)
-    seconds, values = series.seconds[inside], series.values[inside]
-    empty = np.empty(0)
-    if not values.size:
-        return SideSummary(series.unit.si_text, series.unit.text, covered, Timeline(empty, empty, empty, empty))
-    starts = np.unique(np.linspace(0, values.size, min(TIMELINE_SPANS, values.size), endpoint=False).astype(np.int64))
-    counts = np.diff(np.append(starts, values.size))
-    course = Timeline(
-        np.add.reduceat(seconds, starts) / counts,
-        np.minimum.reduceat(values, starts),
-        np.add.reduceat(values, starts) / counts,
-        np.maximum.reduceat(values, starts),
-    )
-    return SideSummary(series.unit.si_text, series.unit.text, covered, course)
 
 
 def _poor(found: Identification) -> bool:

@@ -114,6 +114,19 @@ def test_positions_under_gravity() -> None:
     assert found.relative < 1e-3
 
 
+def test_no_plateau_is_left_out_in_silence() -> None:
+    """Ten plateaus, two declared: taken five times over; with three declared they do not fit."""
+    inputs = [sign * 10 * DEG for sign in (1, -1) * 5]
+    record = record_of(plateaus(inputs, FACTOR, np.random.default_rng(8)))
+    found = calibrate_scale(record, "rates", inputs[:2], quantity_unit="deg/s")
+    assert [step.applied for step in found.steps] == inputs
+    # With rates of one size the asymmetry cannot be told from the null.
+    assert found.asymmetry is None
+    assert found.lower <= FACTOR <= found.upper
+    with pytest.raises(LogError, match="10 plateaus are seen and 3 declared"):
+        calibrate_scale(record, "rates", inputs[:3], quantity_unit="deg/s")
+
+
 def test_a_list_that_does_not_fit_the_log() -> None:
     readings = turned([90 * DEG, -90 * DEG] * 2, np.random.default_rng(5))
     with pytest.raises(LogError, match="4 turns are seen and 3 declared"):

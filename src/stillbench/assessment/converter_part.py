@@ -11,13 +11,18 @@ from collections.abc import Mapping
 
 import numpy as np
 
+from stillbench.foundation.rounding import significant
+from stillbench.vocabulary.characterization import ChannelResult
 from stillbench.vocabulary.converter_share import CorrectedTerm
 from stillbench.vocabulary.deviation_curve import DeviationCurve
+from stillbench.vocabulary.finding import Finding
 from stillbench.vocabulary.noise_model import NoiseModel, NoiseTerm
 from stillbench.vocabulary.quantity import role_of
 
 DOMINATES = 0.5
 """Share of the variance from which the converter limits what is seen."""
+OPEN_END = 0.99
+"""Share of the last averaging time from which a stretch counts as reaching to the end of the curve."""
 LASTING = 2
 """Points of the curve, one behind the other, that make a stretch."""
 
@@ -73,3 +78,42 @@ def limited_span(together: DeviationCurve, alone: DeviationCurve) -> tuple[float
     first = max(0, int(np.argmax(lasting)) - 1)
     last = int(lasting.size - 1 - np.argmax(lasting[::-1]))
     return float(tau[first]), float(tau[last])
+
+
+def converter_finding(
+    found: ChannelResult, sensor: Mapping[str, CorrectedTerm], span: tuple[float, float] | None, source: str
+) -> Finding | None:
+    """Return what must be said where the converter rules; None where it nowhere does.
+
+    Parameters
+    ----------
+    found : ChannelResult
+        Of sensor and converter together.
+    sensor : mapping of term name to CorrectedTerm
+    span : (float, float) or None
+        Averaging times, s, from ``limited_span``.
+    source : str
+        Name of the converter's log.
+    """
+    limited = [
+        name.replace("_", " ") for name, term in sensor.items() if term.limited and found.noise.terms[name].lower
+    ]
+    if span is None and not limited:
+        return None
+    words = []
+    if span is not None:
+        first, last = (f"{significant(end, 2)} s" for end in span)
+        open_end = span[1] >= OPEN_END * found.curve.tau[-1]
+        words.append(f"converter-limited above {first}" if open_end else f"converter-limited from {first} to {last}")
+    if limited:
+        words.append(f"half or more of {' and '.join(limited)} is the converter's")
+    return Finding(
+        "converter_limited",
+        None,
+        None,
+        span[0] if span else None,
+        "s",
+        excluded=False,
+        because=f"{'; '.join(words)} (log of the converter alone: {source})",
+        disposition="the terms are those of sensor and converter together; what is left for the sensor stands beside them",
+    )

@@ -1,7 +1,6 @@
 """Sums of squared second differences, in blocks that stay in the cache: here, and in a helper process on the same memory.
 
-Two threads gain little in this loop: each of its operations lasts some twenty microseconds, and the interpreter lock that
-changes hands between them costs as much (bench/results.md). So on a long run a helper process takes every other chunk. It is
+Two threads gain little in this loop of short operations: the interpreter lock changes hands between each. So on a long run a helper process takes every other chunk. It is
 this file run as a program; it needs numpy only, and reads the angle where the caller keeps it, without a copy.
 """
 

@@ -23,7 +23,7 @@ CORRELATED_RATIO = 11.0
 FILTER_RATIO = 15.0
 FULL_SCORE = 4.0
 FULL_MISFIT = 4.5
-"""Droop and misfit up to which the whole band is kept: clean logs pass all but once in ten thousand, and a filter that costs
+"""Droop and misfit up to which the whole band is kept: no clean log of reference/calibration.md is cut, and a filter that costs
 the white noise more than its error goes far beyond. A band cut by chance costs the white noise most of what is known of it."""
 PASSED = 0.2
 """Squared magnitude of a filter above which its band is used when the whole band does not fit."""

@@ -61,6 +61,10 @@ class ArrayTable(Table):
     def texts(self, index: int) -> Sequence[str]:
         return [str(value) for value in self._columns[index]]
 
+    def edge_cells(self, index: int, count: int) -> tuple[Sequence[str], Sequence[str]]:
+        column = self._columns[index]
+        return [str(value) for value in column[:count]], [str(value) for value in column[-count:]]
+
     def first_text(self, index: int) -> str:
         return str(self._columns[index][0])
 

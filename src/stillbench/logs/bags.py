@@ -1,11 +1,12 @@
 """ROS 1 bags, and ROS 2 bags that are folders."""
 
+from functools import partial
+
 from stillbench.foundation.errors import LogError
-from stillbench.foundation.suggestions import plural
 from stillbench.logs.arrays import ArrayTable
 from stillbench.logs.contents import Contents
 from stillbench.logs.formats import Format, missing_library
-from stillbench.logs.messages import chosen_topic, flat_numbers, table_of_messages
+from stillbench.logs.messages import chosen_topic, read_messages
 from stillbench.vocabulary.log_sheet import LogSection
 
 MAGIC = b"#ROSBAG V2.0"
@@ -26,7 +27,6 @@ def read_bag(contents: Contents, section: LogSection) -> ArrayTable:
         raise missing_library(f"{contents.name!r} is a ROS bag: reading it", "bags") from error
     if contents.path is None:
         raise LogError(f"{contents.name!r} is a compressed bag", "a plain bag", "expand it first")
-    rows, received, broken = [], [], 0
     try:
         store = None if bytes(contents.data[: len(MAGIC)]) == MAGIC else get_typestore(Stores.LATEST)
         with AnyReader([contents.path], default_typestore=store) as bag:
@@ -36,14 +36,14 @@ def read_bag(contents: Contents, section: LogSection) -> ArrayTable:
                 counts[connection.topic] = counts.get(connection.topic, 0) + connection.msgcount
             topic = chosen_topic(topics, counts, section.dataset, contents.name)
             chosen = [connection for connection in bag.connections if connection.topic == topic]
-            for connection, instant, body in bag.messages(connections=chosen):
-                try:
-                    row = flat_numbers(bag.deserialize(body, connection.msgtype))
-                except Exception:  # noqa: BLE001  a message that cannot be read is counted
-                    broken += 1
-                    continue
-                rows.append(row)
-                received.append(instant)
+            return read_messages(
+                (
+                    (instant, partial(bag.deserialize, body, connection.msgtype))
+                    for connection, instant, body in bag.messages(connections=chosen)
+                ),
+                f"ROS bag, topic {topic}, {topics[topic]}",
+                contents.name,
+            )
     except LogError:
         raise
     except Exception as error:  # the library's own tree of errors, and those of the database
@@ -51,10 +51,6 @@ def read_bag(contents: Contents, section: LogSection) -> ArrayTable:
         raise LogError(
             f"{contents.name!r} cannot be read as a bag ({reason})", "a whole bag", "fetch it again"
         ) from error
-    table = table_of_messages(rows, received, f"ROS bag, topic {topic}, {topics[topic]}", contents.name)
-    if broken:
-        table.remarks.append(f"{plural(broken, 'message')} could not be read and are left out")
-    return table
 
 
 def _recognizes(contents: Contents) -> bool:

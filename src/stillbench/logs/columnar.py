@@ -136,6 +136,12 @@ class ColumnarTable(Table):
     def texts(self, index: int) -> Sequence[str]:
         return [str(value) for value in self._column(index).to_pylist()]
 
+    def edge_cells(self, index: int, count: int) -> tuple[Sequence[str], Sequence[str]]:
+        column = self._column(index)
+        edges = (column.slice(0, count), column.slice(max(0, len(column) - count)))
+        first, last = ([str(value) for value in edge.to_pylist()] for edge in edges)
+        return first, last
+
     def first_text(self, index: int) -> str:
         import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
 

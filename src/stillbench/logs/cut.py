@@ -1,7 +1,6 @@
 """cut_record: one channel of a log on its even grid, in SI, between the instants that are wanted."""
 
 import itertools
-import math
 from collections.abc import Sequence
 from dataclasses import replace
 
@@ -14,18 +13,10 @@ from stillbench.foundation.suggestions import plural
 from stillbench.logs.clock import Grid, audit_clock
 from stillbench.logs.front_end import convert
 from stillbench.logs.runs import CARRIED_SHARE, SHORTEST_RUN, build_runs, hole_limit, whole_run
-from stillbench.logs.site import (
-    EARTH_RATE,
-    earth_rate_along,
-    gravity_along,
-    normal_gravity,
-    parse_attitude,
-    parse_latitude,
-)
+from stillbench.logs.site import known_input
 from stillbench.logs.spans import Instants, within
 from stillbench.vocabulary.finding import Finding
-from stillbench.vocabulary.log_sheet import ChannelSection, LogSheet
-from stillbench.vocabulary.quantity import ACCELERATION, ANGULAR_RATE
+from stillbench.vocabulary.log_sheet import LogSheet
 from stillbench.vocabulary.record import Clock, Record
 from stillbench.vocabulary.sensor_log import Channel, SensorLog
 
@@ -122,7 +113,7 @@ def cut_record(
         (),
         conversion.limits,
         log.source.rows,
-        _known_input(sheet, section, conversion.quantity.name, findings),
+        known_input(sheet, section, conversion.quantity.name, findings),
         conversion.step,
         log.side,
     )
@@ -222,58 +213,6 @@ def _require_readings(label: str, largest: float) -> None:
             f"readings below {LARGEST_READING:g}",
             'if it marks missing data, list it as missing = ["..."] under [log] in a log sheet',
         )
-
-
-def _known_input(sheet: LogSheet, section: ChannelSection | None, quantity: str, findings: list[Finding]) -> float:
-    """Return what the sensor feels at rest by latitude and attitude, SI, and say so as a finding."""
-    where, conditions = section.attitude if section else None, sheet.conditions
-    attitude = parse_attitude(where or conditions.attitude or "")
-    inertial = quantity in (ANGULAR_RATE.name, ACCELERATION.name)
-    if conditions.latitude is not None and attitude is None and inertial:
-        said = (
-            f"the attitude {where or conditions.attitude!r} is not one that is understood"
-            if where or conditions.attitude
-            else "no attitude is declared"
-        )
-        findings.append(
-            Finding(
-                "earth_rate",
-                None,
-                None,
-                None,
-                "",
-                excluded=False,
-                because=f"{said}: what of the Earth the input axis feels is not known",
-                disposition='the bias contains it; write attitude = "axis up", down, north, ... or a tilt and an azimuth',
-            )
-        )
-    if conditions.latitude is None or attitude is None:
-        return 0.0
-    latitude = parse_latitude(conditions.latitude)
-    spoken = where or conditions.attitude
-    if quantity == ANGULAR_RATE.name:
-        value = earth_rate_along(latitude, *attitude)
-        shown, source, degree = f"{math.degrees(value) * 3600.0:+.4f} deg/h", "Earth rate", EARTH_RATE
-        slope = f"{math.degrees(degree) * 3600.0 * math.radians(1.0):.2f} deg/h"
-    elif quantity == ACCELERATION.name:
-        value = gravity_along(latitude, attitude[0])
-        shown, source = f"{value:+.6f} m/s^2", "normal gravity (WGS 84)"
-        slope = f"{normal_gravity(latitude) * math.radians(1.0):.3f} m/s^2"
-    else:
-        return 0.0
-    findings.append(
-        Finding(
-            "earth_rate",
-            None,
-            None,
-            value,
-            "rad/s" if quantity == ANGULAR_RATE.name else "m/s^2",
-            excluded=False,
-            because=f"{source} along the input axis ({spoken}; latitude {conditions.latitude}) is {shown}",
-            disposition=f"taken off the bias; a degree of attitude is worth up to {slope}",
-        )
-    )
-    return value
 
 
 def _chosen(

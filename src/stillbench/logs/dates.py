@@ -17,6 +17,7 @@ DAY = 86_400 * 10**9
 FIRST_YEAR, LAST_YEAR = 1700, 2250
 """Nanoseconds of 64 bits reach a little further to both sides."""
 MONTHS = ("jan", "feb", "mar", "apr", "may", "jun", "jul", "aug", "sep", "oct", "nov", "dec")
+EITHER = "either"
 CLEARLY_SHORTER = 5.0
 """Times by which one order of day and month must make the log shorter than the other to be taken without asking."""
 
@@ -55,7 +56,7 @@ def is_time_of_day(cell: str) -> bool:
     return _IS_CLOCK.fullmatch(cell.strip()) is not None
 
 
-def read_stamps_text(texts: Sequence[str], order: str | None, head: str) -> tuple[IntArray, str]:
+def read_stamps_text(texts: Sequence[str], order: str | None, head: str) -> tuple[IntArray, str, str]:
     """Read dates and times of day.
 
     Parameters
@@ -73,6 +74,8 @@ def read_stamps_text(texts: Sequence[str], order: str | None, head: str) -> tupl
         From 1970 on the clock of the log; from the first midnight where there are no dates.
     words : str
         How they were understood.
+    order : str
+        ``day-first`` or ``month-first`` where that was told or declared; empty where nothing needs to be declared.
 
     Raises
     ------
@@ -96,7 +99,7 @@ def read_stamps_text(texts: Sequence[str], order: str | None, head: str) -> tupl
     if timed[0]:
         clock = _time_of_day(parts, texts, head)
     if not dated[0]:
-        return clock + DAY * np.cumsum(np.diff(clock, prepend=clock[0]) < -DAY // 2), "times of day"
+        return clock + DAY * np.cumsum(np.diff(clock, prepend=clock[0]) < -DAY // 2), "times of day", ""
     return _with_dates(parts, clock, order, texts, head)
 
 
@@ -127,7 +130,7 @@ def _refuse(bad: BoolArray, texts: Sequence[str], head: str, wanted: str) -> Non
 
 def _with_dates(
     parts: "pd.DataFrame", clock: IntArray, order: str | None, texts: Sequence[str], head: str
-) -> tuple[IntArray, str]:
+) -> tuple[IntArray, str, str]:
     first, third = _whole(parts["first"]), _whole(parts["third"])
     lettered = not parts["second"].str.isdecimal().any()
     if lettered:
@@ -137,15 +140,16 @@ def _with_dates(
         _refuse(~parts["second"].str.isdecimal().to_numpy(dtype=bool), texts, head, "stamps of one form")
         second = _whole(parts["second"])
     if (first > 31).all():  # noqa: PLR2004  the year stands first
-        return _days(first, second, third, texts, head) * DAY + clock, "date-times, year first"
+        return _days(first, second, third, texts, head) * DAY + clock, "date-times, year first", ""
     _refuse(third < 1000, texts, head, "years of four digits")  # noqa: PLR2004
     if lettered:
-        return _days(third, second, first, texts, head) * DAY + clock, "date-times with the month in letters"
+        return _days(third, second, first, texts, head) * DAY + clock, "date-times with the month in letters", ""
     if order is None:
         order = _order(first, second, third, clock, texts[0], head)
     day, month = (second, first) if order == "month-first" else (first, second)
-    words = {"month-first": "month first", "day-first": "day first"}.get(order, "day and month as may be")
-    return _days(third, month, day, texts, head) * DAY + clock, f"date-times, {words}"
+    told = order if order != EITHER else ""
+    words = told.replace("-", " ") or "day and month as may be"
+    return _days(third, month, day, texts, head) * DAY + clock, f"date-times, {words}", told
 
 
 def _order(first: IntArray, second: IntArray, year: IntArray, clock: IntArray, example: str, head: str) -> str:
@@ -155,7 +159,7 @@ def _order(first: IntArray, second: IntArray, year: IntArray, clock: IntArray, e
     if second.max() > 12:  # noqa: PLR2004
         return "month-first"
     if (first == first[0]).all() and (second == second[0]).all():
-        return "either"  # one date: the time that passes is the same
+        return EITHER  # one date: the time that passes is the same
     lengths = {}
     for order, day, month in (("day-first", first, second), ("month-first", second, first)):
         instants = _days(year, month, day, [example] * first.size, head) * DAY + clock

@@ -211,6 +211,10 @@ class IsolatedTable(Table):
     def texts(self, index: int) -> Sequence[str]:
         return [str(value) for value in self._array(index)]
 
+    def edge_cells(self, index: int, count: int) -> tuple[Sequence[str], Sequence[str]]:
+        column = self._array(index)
+        return [str(value) for value in column[:count]], [str(value) for value in column[-count:]]
+
     def first_text(self, index: int) -> str:  # noqa: ARG002  all are numbers
         return "0"
 

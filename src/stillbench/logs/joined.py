@@ -59,6 +59,9 @@ class JoinedTable(Table):
     def texts(self, index: int) -> Sequence[str]:
         return [text for table in self._tables for text in table.texts(index)]
 
+    def edge_cells(self, index: int, count: int) -> tuple[Sequence[str], Sequence[str]]:
+        return self._tables[0].edge_cells(index, count)[0], self._tables[-1].edge_cells(index, count)[1]
+
     def first_text(self, index: int) -> str:
         return self._tables[0].first_text(index)
 

@@ -9,18 +9,17 @@ from memory, checked by files that another library writes.
 import re
 import struct
 from collections.abc import Iterator
+from functools import partial
 from typing import Any
 
 from stillbench.foundation.errors import LogError
-from stillbench.foundation.suggestions import plural
 from stillbench.logs.arrays import ArrayTable
 from stillbench.logs.contents import LARGEST_EXPANDED, Contents, check_expansion
 from stillbench.logs.formats import Format, missing_library
-from stillbench.logs.messages import chosen_topic, flat_numbers, table_of_messages
+from stillbench.logs.messages import chosen_topic, read_messages
 from stillbench.vocabulary.log_sheet import LogSection
 
 MAGIC = b"\x89MCAP0\r\n"
-LARGEST_NUMBER, LARGEST_INSTANT = 1e300, 1 << 62
 SCHEMA, CHANNEL, MESSAGE, CHUNK, DATA_END = 0x03, 0x04, 0x05, 0x06, 0x0F
 HEAD = 9
 PIECE = 1 << 16
@@ -141,24 +140,17 @@ def read_mcap(contents: Contents, section: LogSection) -> ArrayTable:
     for each in numbers:
         schema, _, encoding = scan.channels[each]
         decoders[each] = decoder(scan.schemas.get(schema, ("", "", "")), encoding, contents.name)
-    rows, received, broken = [], [], 0
-    arrived = [(instant, each, body) for each in numbers for instant, body in scan.messages.get(each, [])]
-    for instant, each, body in sorted(arrived, key=lambda message: message[0]):
-        try:
-            row = flat_numbers(decoders[each](bytes(body)))
-        except Exception:  # noqa: BLE001  a message that cannot be read is counted, whatever the library says of it
-            broken += 1
-            continue
-        if instant >= LARGEST_INSTANT or not all(abs(value) < LARGEST_NUMBER for value in row.values()):
-            broken += 1
-            continue
-        rows.append(row)
-        received.append(instant)
-    table = table_of_messages(rows, received, f"MCAP, topic {topic}, {names[number]}", contents.name)
+    arrived = sorted(
+        ((instant, each, body) for each in numbers for instant, body in scan.messages.get(each, [])),
+        key=lambda message: message[0],
+    )
+    table = read_messages(
+        ((instant, partial(decoders[each], bytes(body))) for instant, each, body in arrived),
+        f"MCAP, topic {topic}, {names[number]}",
+        contents.name,
+    )
     if scan.cut or not scan.ended:
-        table.remarks.append(f"the file is cut short or damaged: {plural(len(rows), 'message')} before that are read")
-    if broken:
-        table.remarks.append(f"{plural(broken, 'message')} could not be read and are left out")
+        table.remarks.append("the file is cut short or damaged: the messages before that are read")
     return table
 
 

@@ -1,17 +1,18 @@
 """From messages of a bag to columns: the numbers in them, by the path of their field."""
 
-from collections.abc import Sequence
+from collections.abc import Callable, Iterable, Sequence
 from dataclasses import fields, is_dataclass
 from typing import Any
 
 import numpy as np
 
 from stillbench.foundation.errors import LogError
-from stillbench.foundation.suggestions import listed
+from stillbench.foundation.suggestions import listed, plural
 from stillbench.logs.arrays import ArrayTable
 
 INERTIAL = ("Imu", "AccelStamped", "TwistStamped", "Vector3Stamped", "MagneticField")
 NANOSECONDS = 10**9
+LARGEST_NUMBER, LARGEST_INSTANT = 1e300, 1 << 62
 STAMP = "\0stamp"
 """Of the stamp within a message: no field has this name."""
 DEEPEST = 4
@@ -77,6 +78,39 @@ def chosen_topic(topics: dict[str, str], counts: dict[str, int], wanted: str | N
         "one topic",
         'name it: dataset = "/topic" under [log] in a log sheet' if filled else "",
     )
+
+
+def read_messages(arrived: Iterable[tuple[int, Callable[[], Any]]], format_: str, name: str) -> ArrayTable:
+    """Decode messages and return them as columns; those that cannot be read are counted and left out.
+
+    Parameters
+    ----------
+    arrived : iterable of (nanoseconds, function that decodes)
+        In the order of their receipt.
+    format_, name : str
+        Of the file, for messages to the user.
+
+    Raises
+    ------
+    LogError
+        When none can be read.
+    """
+    rows, received, broken = [], [], 0
+    for instant, decode in arrived:
+        try:
+            row = flat_numbers(decode())
+            fits = instant < LARGEST_INSTANT and all(abs(value) < LARGEST_NUMBER for value in row.values())
+        except Exception:  # noqa: BLE001  whatever the library says of a damaged message
+            fits = False
+        if not fits:
+            broken += 1
+            continue
+        rows.append(row)
+        received.append(instant)
+    table = table_of_messages(rows, received, format_, name)
+    if broken:
+        table.remarks.append(f"{plural(broken, 'message')} could not be read and are left out")
+    return table
 
 
 def table_of_messages(

@@ -86,6 +86,10 @@ class RawTable(Table):
     def texts(self, index: int) -> Sequence[str]:
         return [str(value) for value in self.numbers([index])[0]]
 
+    def edge_cells(self, index: int, count: int) -> tuple[Sequence[str], Sequence[str]]:
+        first, last = (self._converted(self._frames[part, index]) for part in (slice(count), slice(-count, None)))
+        return [str(value) for value in first], [str(value) for value in last]
+
     def first_text(self, index: int) -> str:
         return str(self._converted(self._frames[:1, index])[0])
 

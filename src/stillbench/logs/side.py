@@ -9,9 +9,13 @@ from stillbench.foundation.errors import UnitError, UsageError
 from stillbench.foundation.units import parse_unit
 from stillbench.logs.stamps import find_time_column, read_stamps, split_head
 from stillbench.logs.table import Table
+from stillbench.vocabulary.characterization import SideSummary, Timeline
 from stillbench.vocabulary.log_sheet import LogSheet, SideSection
+from stillbench.vocabulary.record import Record
 from stillbench.vocabulary.sensor_log import SideSeries, Stamps
 
+PROBES = 10_000
+COURSE_SPANS = 900
 SUPPORT = 3.0
 """Usual steps of the side channel over which it is taken to run straight; over longer ones it is not known."""
 
@@ -129,3 +133,42 @@ def side_file(section: SideSection, folder: Path | None) -> Path | None:
     if not path.is_absolute() and not path.exists() and folder is not None:
         return folder / path
     return path
+
+
+def side_summary(series: SideSeries, record: Record) -> SideSummary:
+    """Return the course of a side channel over a record, and the share of the record that it supports.
+
+    Parameters
+    ----------
+    series : SideSeries
+    record : Record
+
+    Returns
+    -------
+    SideSummary
+        Its course in at most 900 spans, SI; empty where no sample of it lies within the record.
+    """
+    times = np.concatenate(
+        [run.start + np.array([0, run.n_samples - 1]) * record.sample_interval for run in record.runs]
+    )
+    probes = np.concatenate(
+        [
+            np.linspace(first, last, max(2, round(PROBES * (last - first) / max(record.duration, 1e-9))))
+            for first, last in times.reshape(-1, 2)
+        ]
+    )
+    covered = float(np.isfinite(aligned(series, probes)).mean())
+    inside = (series.seconds >= times[0]) & (series.seconds <= times[-1]) & np.isfinite(series.values)
+    seconds, values = series.seconds[inside], series.values[inside]
+    empty = np.empty(0)
+    if not values.size:
+        return SideSummary(series.unit.si_text, series.unit.text, covered, Timeline(empty, empty, empty, empty))
+    starts = np.unique(np.linspace(0, values.size, min(COURSE_SPANS, values.size), endpoint=False).astype(np.int64))
+    counts = np.diff(np.append(starts, values.size))
+    course = Timeline(
+        np.add.reduceat(seconds, starts) / counts,
+        np.minimum.reduceat(values, starts),
+        np.add.reduceat(values, starts) / counts,
+        np.maximum.reduceat(values, starts),
+    )
+    return SideSummary(series.unit.si_text, series.unit.text, covered, course)

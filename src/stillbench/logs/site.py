@@ -11,6 +11,9 @@ import re
 
 from stillbench.foundation.errors import UnitError, UsageError
 from stillbench.foundation.units import ANGLE, parse_quantity
+from stillbench.vocabulary.finding import Finding
+from stillbench.vocabulary.log_sheet import ChannelSection, LogSheet
+from stillbench.vocabulary.quantity import ACCELERATION, ANGULAR_RATE
 
 EARTH_RATE = 7.292115e-5
 """rad/s."""
@@ -93,3 +96,72 @@ def normal_gravity(latitude: float) -> float:
 def gravity_along(latitude: float, tilt: float) -> float:
     """Return what an accelerometer at rest reads along an axis, m/s^2: the reaction to gravity, upwards positive."""
     return normal_gravity(latitude) * math.cos(tilt)
+
+
+def known_input(sheet: LogSheet, section: ChannelSection | None, quantity: str, findings: list[Finding]) -> float:
+    """Return what the sensor feels at rest by latitude and attitude, SI, and say so in ``findings``.
+
+    Parameters
+    ----------
+    sheet : LogSheet
+        Its conditions.
+    section : ChannelSection or None
+        Whose attitude overrides that of the conditions.
+    quantity : str
+        Name of a Quantity; 0 for all but angular rate and acceleration.
+    findings : list of Finding
+        Grows by one where latitude is declared.
+
+    Raises
+    ------
+    UsageError
+        When latitude, tilt or azimuth cannot be read.
+    """
+    where, conditions = section.attitude if section else None, sheet.conditions
+    attitude = parse_attitude(where or conditions.attitude or "")
+    inertial = quantity in (ANGULAR_RATE.name, ACCELERATION.name)
+    if conditions.latitude is not None and attitude is None and inertial:
+        said = (
+            f"the attitude {where or conditions.attitude!r} is not one that is understood"
+            if where or conditions.attitude
+            else "no attitude is declared"
+        )
+        findings.append(
+            Finding(
+                "earth_rate",
+                None,
+                None,
+                None,
+                "",
+                excluded=False,
+                because=f"{said}: what of the Earth the input axis feels is not known",
+                disposition='the bias contains it; write attitude = "axis up", down, north, ... or a tilt and an azimuth',
+            )
+        )
+    if conditions.latitude is None or attitude is None:
+        return 0.0
+    latitude = parse_latitude(conditions.latitude)
+    spoken = where or conditions.attitude
+    if quantity == ANGULAR_RATE.name:
+        value = earth_rate_along(latitude, *attitude)
+        shown, source, degree = f"{math.degrees(value) * 3600.0:+.4f} deg/h", "Earth rate", EARTH_RATE
+        slope = f"{math.degrees(degree) * 3600.0 * math.radians(1.0):.2f} deg/h"
+    elif quantity == ACCELERATION.name:
+        value = gravity_along(latitude, attitude[0])
+        shown, source = f"{value:+.6f} m/s^2", "normal gravity (WGS 84)"
+        slope = f"{normal_gravity(latitude) * math.radians(1.0):.3f} m/s^2"
+    else:
+        return 0.0
+    findings.append(
+        Finding(
+            "earth_rate",
+            None,
+            None,
+            value,
+            "rad/s" if quantity == ANGULAR_RATE.name else "m/s^2",
+            excluded=False,
+            because=f"{source} along the input axis ({spoken}; latitude {conditions.latitude}) is {shown}",
+            disposition=f"taken off the bias; a degree of attitude is worth up to {slope}",
+        )
+    )
+    return value

@@ -102,7 +102,7 @@ def read_stamps(table: Table, index: int, declared: str | None) -> tuple[Stamps,
         When the stamps do not parse, or their unit is not known and cannot be told.
     """
     head = table.heads[index]
-    typed = table.instants(index) if declared is None else None
+    typed = table.instants(index) if declared in (None, "iso") else None
     if typed is not None:
         nanoseconds, absolute = typed
         seconds = (nanoseconds - nanoseconds[0]) / 1e9
@@ -238,13 +238,13 @@ def _read_dates(table: Table, index: int, declared: str | None) -> tuple[Stamps,
     texts = [cell for cell, there in zip(cells, present, strict=True) if there]
     zoned = bool(_ZONED.search(texts[0].strip())) and ":" in texts[0]
     if declared == "iso" or (declared is None and is_iso(texts[0])):
-        nanoseconds, words = _iso_nanoseconds(texts, head), "date-times"
+        nanoseconds, words, unit = _iso_nanoseconds(texts, head), "date-times", "iso"
     else:
-        nanoseconds, words = read_stamps_text(texts, declared, head)
+        nanoseconds, words, unit = read_stamps_text(texts, declared, head)
     seconds = (nanoseconds - nanoseconds[0]) / 1e9
     kind = "absolute" if zoned else "local"
     offset = _offset(texts[0].strip()) if zoned else 0.0
-    stamps = Stamps(seconds, head, "iso", kind, float(nanoseconds[0]) * 1e-9, _resolution(seconds), offset)  # type: ignore[arg-type]
+    stamps = Stamps(seconds, head, unit, kind, float(nanoseconds[0]) * 1e-9, _resolution(seconds), offset)  # type: ignore[arg-type]
     zone = f"with zone, the first {offset / 3600.0:+g} h of UTC" if zoned else "local time, no zone given"
     where = f"columns {head!r}" if beside is not None else f"column {head!r}"
     return stamps, present, f"time from {where}, {words}, {zone}; override with --time and --time-unit"

@@ -53,12 +53,14 @@ class Table(ABC):
 
     def edge_rows(self, count: int) -> tuple[list[list[str]], list[list[str]]]:
         """Return the first and the last rows as text, for the eye."""
-        columns = []
-        for index in range(len(self.heads)):
-            texts = self.texts(index)
-            columns.append([*texts[:count], *texts[-count:]])
-        rows = [list(row) for row in zip(*columns, strict=True)]
-        return rows[:count], rows[len(rows) - min(count, len(rows)) :]
+        columns = [self.edge_cells(index, count) for index in range(len(self.heads))]
+        rows = [[list(row) for row in zip(*edges, strict=True)] for edges in zip(*columns, strict=True)]
+        return rows[0], rows[1]
+
+    def edge_cells(self, index: int, count: int) -> tuple[Sequence[str], Sequence[str]]:
+        """Return the first and the last cells of a column as text; readers of large files do it without all between."""
+        texts = self.texts(index)
+        return texts[:count], texts[-count:]
 
     def instants(self, index: int) -> tuple[IntArray, bool] | None:  # noqa: ARG002  for those that have a type for it
         """Return a column of date-times as nanoseconds from 1970 and whether they are UTC; None for any other column."""

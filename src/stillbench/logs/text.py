@@ -106,7 +106,6 @@ class TextTable(Table):
         self._body = self._find_body()
         self._expected: list[int] = []
         self._waiting: dict[int, object] = {}
-        self._streams: dict[int, FloatArray] = {}
         self._clean = False
         self._numbered = False
 
@@ -251,7 +250,7 @@ class TextTable(Table):
             ),
         }
 
-    def _streamed(self, indices: Sequence[int]) -> list[FloatArray] | None:
+    def _streamed(self, indices: Sequence[int]) -> list[object] | None:
         """Read columns block by block into scratch files; None where a row does not fit, which wants the whole table."""
         import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
         from pyarrow import csv  # noqa: PLC0415
@@ -400,33 +399,21 @@ class TextTable(Table):
     def numbers(self, indices: Sequence[int]) -> list[FloatArray]:
         import pyarrow as pa  # noqa: PLC0415  heavy, wanted only when a file is read
 
-        if indices and all(index in self._streams for index in indices):
-            found = [self._streams[index] for index in indices]
-            self._streams = {index: array for index, array in self._streams.items() if index not in indices}
-            return found
-        together = list(dict.fromkeys([*indices, *self._expected]))
-        if self._is_large() and (streamed := self._streamed(together)) is not None:
-            for array in streamed:
-                self._take_marks_out(array)
-            self._streams = dict(zip(together, streamed, strict=True))
-            return self.numbers(indices)
         wanted, indices = indices, list(dict.fromkeys(indices))
-        early = [index for index in self._expected if index not in indices]
-        fresh = [index for index in indices if index not in self._waiting]
-        if fresh:
-            self._waiting |= dict(zip([*fresh, *early], self._convert([*fresh, *early], as_text=False), strict=True))
+        together = list(dict.fromkeys([*(index for index in indices if index not in self._waiting), *self._expected]))
         self._expected = []
-        columns = [self._waiting[index] for index in indices]
-        for index in set(indices):
-            del self._waiting[index]
+        if any(index not in self._waiting for index in indices):
+            found = self._streamed(together) if self._is_large() else None
+            self._waiting |= dict(
+                zip(together, found if found is not None else self._convert(together, as_text=False), strict=True)
+            )
+        columns = [self._waiting.pop(index) for index in indices]
         if isinstance(self._bytes, mmap.mmap) and hasattr(mmap, "MADV_DONTNEED"):
             self._bytes.madvise(mmap.MADV_DONTNEED)  # its pages have been read; the system may have them back
-        arrays = []
+        arrays: list[FloatArray] = []
         while columns:  # each is let go before the next is copied
             column = columns.pop(0)
-            if not isinstance(column, pa.ChunkedArray):
-                raise TypeError(type(column))
-            array = np.asarray(column.to_numpy(), dtype=np.float64)
+            array = np.asarray(column.to_numpy() if isinstance(column, pa.ChunkedArray) else column, dtype=np.float64)
             del column
             if self._marks and not array.flags.writeable:
                 array = array.copy()

@@ -78,9 +78,10 @@ def understand_log(
             hint = _rising(table)
             sentence = f"no clock: no column is known for time; give --time COLUMN with --time-unit, or --rate HZ{hint}"
         rows = stamps.seconds.size if stamps else None
-        if rows is None and rate:
-            rows = table.numbers([next(i for i in range(len(table.heads)) if i not in table.empty)])[0].size
         columns = _columns(table, index, sheet, units)
+        data = [column.number - 1 for column in columns if column.role == "data"]
+        if rows is None and rate and data:
+            rows = table.numbers(data[:1])[0].size
         first, last = table.edge_rows(SHOWN)
         findings, interval, jitter, duration = None, None, None, None
         if rows and (stamps or rate):
@@ -202,7 +203,8 @@ def _sheet(
     lines += [*_layout_lines(table, sheet), "", "[clock]"]
     named = next((column for column in columns if column.role == "time"), None)
     if stamps is not None and named is not None:
-        lines += [f"column = {_quoted(named.head)}", f"unit = {_quoted(stamps.unit)}"]
+        lines += [f"column = {_quoted(named.head)}"]
+        lines += [f"unit = {_quoted(stamps.unit)}"] if stamps.unit else []
     elif rate:
         lines += ['column = "none"', f"rate = {rate!r}  # Hz"]
     else:

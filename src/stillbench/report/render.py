@@ -3,7 +3,6 @@
 import json
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
-from importlib import resources
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -17,6 +16,7 @@ from stillbench.foundation.rounding import significant
 from stillbench.foundation.units import Unit, parse_unit
 from stillbench.report import notes as margin
 from stillbench.report.notes import POOR
+from stillbench.report.page import markup, render_page
 from stillbench.report.strip import strip
 from stillbench.report.words import (
     bias_text,
@@ -76,12 +76,6 @@ class _Figure:
     notes: list[margin.Note]
 
 
-def _markup(text: str) -> Any:  # noqa: ANN401  a markupsafe string
-    from markupsafe import Markup  # noqa: PLC0415  only our own SVG goes through here
-
-    return Markup(text)  # noqa: S704  made by our own code, texts escaped
-
-
 def _shrink(figure: "Figure") -> None:
     """Keep a figure small in the file: short decimals suffice at this size."""
     figure.set_dpi(72)
@@ -91,7 +85,7 @@ def _drawn(name: str, title: str, height: float, draw: "Callable[[Axes], None]")
     with sheet(height) as (figure, axes):
         draw(axes)
         _shrink(figure)
-        return str(_markup(to_svg(figure, name, title)))
+        return str(markup(to_svg(figure, name, title)))
 
 
 def specification_marks(verdicts: tuple[Verdict, ...], channel: ChannelResult) -> tuple[tuple[float, float, str], ...]:
@@ -405,7 +399,7 @@ def _verdict_content(channel: ChannelResult) -> list[dict[str, Any]]:
     for verdict in channel.verdicts:
         row = verdict_row(verdict)
         mark = {CONFORMS: "full", FAILS: "empty"}.get(row.decision, "half")
-        content.append({"row": row, "mark": mark, "strip": _markup(strip(row)), "channel": channel.label})
+        content.append({"row": row, "mark": mark, "strip": markup(strip(row)), "channel": channel.label})
     return content
 
 
@@ -417,19 +411,12 @@ def render_report(result: Characterization) -> bytes:
     result : Characterization
         From ``characterize``, or decoded from result.json: nothing else is needed.
     """
-    import jinja2  # noqa: PLC0415  wanted only where a page is made
-
-    assets = resources.files("stillbench.report")
-    loader = jinja2.FunctionLoader(lambda name: (assets / "templates" / name).read_text("utf-8"))
-    environment = jinja2.Environment(
-        loader=loader, autoescape=True, trim_blocks=True, lstrip_blocks=True, undefined=jinja2.StrictUndefined
-    )
-    environment.filters["figure"] = _markup
     per_channel = 4
     channels = [
         _channel_content(channel, f"c{i + 1}", 1 + per_channel * i) for i, channel in enumerate(result.channels)
     ]
-    page = environment.get_template("report.html").render(
+    return render_page(
+        "report.html",
         title=_title(result),
         subtitle=_subtitle(result),
         facts=_strip_facts(result),
@@ -447,9 +434,7 @@ def render_report(result: Characterization) -> bytes:
         cautions=_caution(result),
         blind_spots=BLIND_SPOTS,
         made_at=result.made_at,
-        style=_markup((assets / "assets" / "report.css").read_text("utf-8")),
     )
-    return (page.rstrip() + "\n").encode("utf-8")
 
 
 def _setting_text(value: object) -> str:

@@ -1,13 +1,13 @@
 """A scale factor as a page, as text and as the front end of a log sheet."""
 
 import math
-from importlib import resources
 
 from stillbench.figures.scale import draw_residuals, draw_steps
 from stillbench.figures.style import sheet
 from stillbench.figures.svg import to_svg
 from stillbench.foundation.rounding import decimals_for, fixed, significant
 from stillbench.foundation.units import parse_unit
+from stillbench.report.page import render_page
 from stillbench.vocabulary.scale_factor import ScaleFactor
 
 TURNING = (
@@ -81,7 +81,7 @@ def result_rows(result: ScaleFactor) -> list[tuple[str, str, str]]:
         asymmetry, spread = _with_error(100 * result.asymmetry, 100 * result.asymmetry_uncertainty)
         rows.append(("asymmetry (positive over negative, less one)", f"{asymmetry} %", f"{spread} %, standard"))
     else:
-        rows.append(("asymmetry", "not seen", "needs both directions"))
+        rows.append(("asymmetry", "not seen", "needs both directions, and more than one rate or position"))
     rows.append(
         (
             "largest departure from the line",
@@ -126,13 +126,6 @@ def render_scale_page(result: ScaleFactor, *, source: str, made_at: str, version
         File and digest, in words.
     made_at, version : str
     """
-    import jinja2  # noqa: PLC0415  wanted only where a page is made
-    from markupsafe import Markup  # noqa: PLC0415
-
-    assets = resources.files("stillbench.report")
-    loader = jinja2.FunctionLoader(lambda name: (assets / "templates" / name).read_text("utf-8"))
-    environment = jinja2.Environment(loader=loader, autoescape=True, trim_blocks=True, undefined=jinja2.StrictUndefined)
-    environment.filters["figure"] = Markup
     drawn = {}
     for name, title, height, draw in (
         ("residuals", "What the line leaves of each step", 62, draw_residuals),
@@ -142,7 +135,8 @@ def render_scale_page(result: ScaleFactor, *, source: str, made_at: str, version
             draw(axes, result)
             figure.set_dpi(72)
             drawn[name] = to_svg(figure, f"scale-{name}", title)
-    page = environment.get_template("scale.html").render(
+    return render_page(
+        "scale.html",
         title=f"Scale factor of {result.label}",
         subtitle=f"From {len(result.steps)} {result.method}.",
         rows=result_rows(result),
@@ -164,7 +158,5 @@ def render_scale_page(result: ScaleFactor, *, source: str, made_at: str, version
         source=source,
         made_at=made_at,
         version=version,
-        style=Markup((assets / "assets" / "report.css").read_text("utf-8")),  # noqa: S704  our own file
         **drawn,
     )
-    return (page.rstrip() + "\n").encode("utf-8")

@@ -23,6 +23,8 @@ from stillbench.vocabulary.scale_factor import Contribution, KnownStep, ScaleFac
 
 FEWEST_STEPS = 4
 COURSE = 1_200
+LEAST_APART = 0.01
+"""Of the largest input: sizes closer to each other count as one."""
 
 
 def calibrate_scale(
@@ -71,7 +73,7 @@ def calibrate_scale(
     if len(record.runs) > 1 or record.missing.any():
         raise LogError("the log has gaps or missing samples", "one unbroken run", "choose a part with --from and --to")
     values, interval = record.values, record.sample_interval
-    spans = find_turns(values, interval) if method == "turns" else find_plateaus(values, interval, _wanted(applied))
+    spans = find_turns(values, interval) if method == "turns" else find_plateaus(values, interval)
     inputs = _applied(applied, len(spans), method)
     if method == "turns":
         observed, null, null_error = _integrals(values, spans, interval)
@@ -80,7 +82,7 @@ def calibrate_scale(
         observed = np.array([_mean(values[first:last]) for first, last in spans])
         null = null_error = 0.0
         columns = [inputs, np.ones(inputs.size)]
-    both = bool((inputs > 0).any() and (inputs < 0).any()) and inputs.size > len(columns) + 1
+    both = _shows_asymmetry(inputs, method) and inputs.size > len(columns) + 1
     fit = fit_line(columns, observed)
     factor = float(fit.values[0])
     asymmetry, asymmetry_error = _asymmetry(columns, inputs, observed, factor) if both else (None, None)
@@ -128,10 +130,6 @@ def calibrate_scale(
     )
 
 
-def _wanted(applied: Sequence[float]) -> int:
-    return max(len(applied), FEWEST_STEPS) if len(applied) < FEWEST_STEPS else len(applied)
-
-
 def _applied(applied: Sequence[float], seen: int, method: str) -> FloatArray:
     word = {"turns": "turn", "rates": "plateau"}.get(method, "position")
     if not applied or seen % len(applied):
@@ -176,6 +174,13 @@ def _single(observed: FloatArray, inputs: FloatArray, level: float) -> FloatArra
     return np.asarray((observed[some] - level) / inputs[some])
 
 
+def _shows_asymmetry(inputs: FloatArray, method: str) -> bool:
+    """Whether both directions are there and, where the null is fitted too, inputs of more than one size to part the two."""
+    sizes = np.abs(inputs)
+    apart = method == "turns" or float(np.ptp(sizes)) > LEAST_APART * float(sizes.max())
+    return bool((inputs > 0).any() and (inputs < 0).any() and apart)
+
+
 def _asymmetry(
     columns: Sequence[FloatArray], inputs: FloatArray, observed: FloatArray, factor: float
 ) -> tuple[float, float]:
@@ -187,7 +192,7 @@ def _asymmetry(
 def _remarks(inputs: FloatArray, method: str, *, both: bool, shared: bool) -> tuple[str, ...]:
     remarks = []
     if not both:
-        remarks.append("all in one direction, or too few of both: asymmetry is not seen")
+        remarks.append("all in one direction, of one size, or too few: asymmetry is not seen")
     if not shared:
         remarks.append(
             "no uncertainty of what was applied is declared: the interval holds the scatter only"

@@ -68,7 +68,7 @@ def find_turns(values: FloatArray, interval: float) -> list[tuple[int, int]]:
     return [(max(0, first - EDGE) * length, min(mean.size, last + EDGE) * length) for first, last in turns]
 
 
-def find_plateaus(values: FloatArray, interval: float, count: int) -> list[tuple[int, int]]:
+def find_plateaus(values: FloatArray, interval: float) -> list[tuple[int, int]]:
     """Return first and past-the-last sample of the plateaus at which the reading stands still, edges cut.
 
     Parameters
@@ -76,8 +76,11 @@ def find_plateaus(values: FloatArray, interval: float, count: int) -> list[tuple
     values : (n,) float array
     interval : float
         s.
-    count : int
-        Plateaus expected; where more are seen the longest are taken.
+
+    Raises
+    ------
+    LogError
+        When the log is too short for plateaus.
     """
     mean, spread, length = _blocks(values, interval)
     still = float(np.quantile(spread, STILL_QUANTILE))
@@ -85,5 +88,4 @@ def find_plateaus(values: FloatArray, interval: float, count: int) -> list[tuple
     jump = np.concatenate([[False], np.abs(np.diff(mean)) > 2.0 * step]) | (spread > MOVING * still)
     jump[:-1] |= jump[1:]
     found = [(first, last) for first, last in _stretches(~jump) if last - first >= SHORTEST_STOP + 2]
-    found = sorted(sorted(found, key=lambda part: part[0] - part[1])[:count])
     return [((first + 1) * length, (last - 1) * length) for first, last in found]

@@ -44,7 +44,7 @@ class Stamps:
     column : str
         Which column they come from.
     unit : str
-        One of s, ms, us, ns, iso, unix.
+        One of s, ms, us, ns, iso, unix, day-first, month-first; empty for written stamps of which nothing need be declared.
     kind : str
         ``local`` for date-times without a zone (they may jump with daylight saving), ``absolute``, or ``counter``.
     origin : float or None

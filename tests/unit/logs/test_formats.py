@@ -26,6 +26,7 @@ from stillbench.foundation.errors import LogError, UsageError
 from stillbench.logs.arrays import ArrayTable
 from stillbench.logs.formats import GROUP, Format
 from stillbench.logs.read import read_log
+from stillbench.logs.understand import understand_log
 from stillbench.vocabulary.log_sheet import LogSection, LogSheet
 
 N = 500
@@ -146,6 +147,17 @@ def test_raw_samples(tmp_path: Path, kind: str, order: str, *, offset: bool) -> 
     assert log.channels[0].values.tolist() == samples[0::2]
     assert log.channels[1].values.tolist() == samples[1::2]
     assert (kind == "int8") or any("no whole frame" in sentence for sentence in log.understood)
+
+
+@pytest.mark.parametrize("write", [write_npy, write_npz, write_mat, write_hdf5, write_parquet, write_feather])
+def test_check_shows_the_first_and_the_last_rows(tmp_path: Path, write: Callable[[Path], None]) -> None:
+    path = tmp_path / ("log.npy" if write is write_npy else "log.npz")
+    write(path)
+    found = understand_log(path, rate=100.0, time="none")
+    column = next(i for i, cell in enumerate(found.first[1]) if float(cell) == RATE[1])
+    assert [float(row[column]) for row in found.first] == RATE[:3].tolist()
+    assert [float(row[column]) for row in found.last] == RATE[-3:].tolist()
+    assert found.rows == N
 
 
 def test_raw_samples_that_stand_to_the_left(tmp_path: Path) -> None:

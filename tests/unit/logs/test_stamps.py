@@ -9,6 +9,8 @@ import pytest
 from stillbench.foundation.errors import ClockError, LogError, UsageError
 from stillbench.logs.clock import audit_clock
 from stillbench.logs.read import read_log
+from stillbench.logs.understand import understand_log
+from stillbench.pipeline import load_log_sheet
 from stillbench.vocabulary.log_sheet import LogSection, LogSheet
 from stillbench.vocabulary.sensor_log import SensorLog
 
@@ -25,7 +27,7 @@ def written(path: Path, stamps: list[str], head: str = "time,rate") -> Path:
     return path
 
 
-def read(path: Path, **declared: str) -> SensorLog:
+def read(path: Path, **declared: object) -> SensorLog:
     return read_log(path, channels=["rate"], units={"": "V"}, **declared)  # type: ignore[arg-type]
 
 
@@ -50,6 +52,15 @@ def test_written_stamps_over_midnight(tmp_path: Path, form: str) -> None:
     assert any(words in sentence for sentence in log.understood)
     if "time of day" not in form:
         assert log.stamps.origin == pytest.approx((BEGIN - datetime(1970, 1, 1)).total_seconds(), abs=1e-6)  # noqa: DTZ001
+
+
+@pytest.mark.parametrize("form", FORMS)
+def test_the_sheet_that_check_writes_reads_the_stamps_the_same(tmp_path: Path, form: str) -> None:
+    path = written(tmp_path / "log.csv", [moment.strftime(FORMS[form][0]) for moment in MOMENTS])
+    (tmp_path / "sheet.toml").write_text(understand_log(path).sheet)
+    log = read(path, sheet=load_log_sheet(tmp_path / "sheet.toml"))
+    assert log.stamps is not None
+    assert np.array_equal(log.stamps.seconds, np.arange(N) / 10.0)
 
 
 def test_am_and_pm(tmp_path: Path) -> None:
