@@ -4,6 +4,7 @@ import json
 from pathlib import Path
 
 import numpy as np
+import pytest
 from scipy.stats import binom
 from tests.conftest import Command
 
@@ -21,18 +22,24 @@ def term(estimate: float, error: float) -> NoiseTerm:
     return NoiseTerm(estimate, max(0.0, estimate - 1.96 * error), estimate + 1.96 * error, "V", RESOLVED, "")
 
 
-def test_interval_of_what_is_left_covers() -> None:
-    """Sensor 0.8, converter 0.6 (together 1.0), each estimated to 2 %; then a converter that is all there is."""
+@pytest.mark.parametrize(("error", "other_error"), [(0.02, 0.012), (0.003, 0.03)])
+def test_interval_of_what_is_left_covers(error: float, other_error: float) -> None:
+    """Sensor 0.8, converter 0.6 (together 1.0); either of the two the less certain one."""
     generator = np.random.default_rng(4)
     low, high = binom.interval(0.999, TRIALS, 0.95)
     covered = 0
     for _ in range(TRIALS):
         left = corrected_term(
-            term(1.0 + 0.02 * generator.standard_normal(), 0.02), term(0.6 + 0.012 * generator.standard_normal(), 0.012)
+            term(1.0 + error * generator.standard_normal(), error),
+            term(0.6 + other_error * generator.standard_normal(), other_error),
         )
         assert left is not None
         covered += left.lower <= 0.8 <= left.upper
     assert low <= covered <= high, covered
+
+
+def test_a_converter_that_is_all_there_is() -> None:
+    generator = np.random.default_rng(5)
     zeros = sum(
         left.lower == 0
         for left in (

@@ -11,6 +11,7 @@ from hypothesis.extra import numpy as hnp
 from stillbench.deviation.overlapping import HELPED_FROM, pooled_deviation
 from stillbench.deviation.plain import exact_overlapping_variance, plain_overlapping_deviation
 from stillbench.foundation.arrays import FloatArray
+from stillbench.foundation.scratch import BLOCK
 
 finite = st.floats(-1e3, 1e3, allow_nan=False, width=32)
 logs = hnp.arrays(np.float64, st.integers(8, 120), elements=finite)
@@ -88,6 +89,16 @@ def test_exact_arithmetic_agrees_to_nine_digits(log: FloatArray, factor: int, of
     exact = exact_overlapping_variance(given_log, factor)
     assume(exact > 1e-6)
     assert deviation([given_log], factor) ** 2 == pytest.approx(float(exact), rel=2e-9)
+
+
+def test_a_log_of_more_than_one_block_of_the_running_sum() -> None:
+    """Against the formula of NIST SP 1065 on one plain running sum (math as in plain.py, which is too slow for this length)."""
+    log = np.random.default_rng(6).standard_normal(BLOCK + 5_000) + 1e8
+    angle = np.concatenate([[0.0], np.cumsum(log - 1e8)])
+    for factor in (1, 7, 1_000, 300_000):
+        second = angle[2 * factor :] - 2.0 * angle[factor:-factor] + angle[: -2 * factor]
+        plain = np.sqrt(np.mean(second**2) / 2.0) / factor
+        assert deviation([log], factor) == pytest.approx(plain, rel=1e-7)
 
 
 def test_a_helper_process_does_not_change_a_bit() -> None:
