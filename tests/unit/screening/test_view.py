@@ -25,7 +25,7 @@ def test_medians_of_rows_are_those_of_numpy(length: int) -> None:
 @pytest.mark.parametrize("n_samples", [64 * 50, 64 * 50 + 31])
 def test_a_slow_course_is_taken_off(n_samples: int) -> None:
     """A straight course leaves nothing but the ends, which are held level for half a block."""
-    values = 3.0 + 0.25 * np.arange(n_samples)
+    values = np.asarray(3.0 + 0.25 * np.arange(n_samples), dtype=np.float64)
     residual = np.empty(n_samples)
     take_level_off(values, residual)
     assert np.abs(residual[40:-40]).max() < 1e-9
