@@ -24,7 +24,7 @@ def read_bag(contents: Contents, section: LogSection) -> ArrayTable:
         from rosbags.highlevel import AnyReader  # noqa: PLC0415  an extra
         from rosbags.typesys import Stores, get_typestore  # noqa: PLC0415
     except ImportError as error:
-        raise missing_library(f"{contents.name!r} is a ROS bag: reading it", "bags") from error
+        raise missing_library(f"{contents.name!r} is a ROS bag: reading it", "rosbags", "bags") from error
     if contents.path is None:
         raise LogError(f"{contents.name!r} is a compressed bag", "a plain bag", "expand it first")
     try:

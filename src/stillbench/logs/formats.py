@@ -93,10 +93,20 @@ def damage_said(name: str) -> Iterator[None]:
         ) from error
 
 
-def missing_library(what: str, extra: str) -> LogError:
-    """Return the error for a format whose library is not installed, with the line that installs it."""
+def missing_library(what: str, library: str, extra: str) -> LogError:
+    """Return the error for a format whose library is not installed, with the line that installs it.
+
+    Parameters
+    ----------
+    what : str
+        That needs it, in words.
+    library : str
+        By its name on the package index.
+    extra : str
+        Of this package, that brings it.
+    """
     return LogError(
-        f"{what} needs a library that is not installed",
-        f"the extra [{extra}]",
-        f"install it: python -m pip install 'stillbench[{extra}]'",
+        f"{what} needs the library {library}, which is not installed",
+        f"the extra [{extra}] of stillbench, or {library} itself",
+        f"install it: python -m pip install {library}",
     )

@@ -165,7 +165,7 @@ class IsolatedTable(Table):
 
     def _choose(self, contents: Contents, section: LogSection) -> None:
         if "missing" in self._child.answer:
-            raise missing_library(f"{contents.name!r} is an {self._kind} file: reading it", "hdf5")
+            raise missing_library(f"{contents.name!r} is an {self._kind} file: reading it", "h5py", "hdf5")
         all_sets = self._child.answer["datasets"]
         sets = _wanted(all_sets, section.dataset, contents.name)
         longest = max(max(entry["shape"]) for entry in sets)

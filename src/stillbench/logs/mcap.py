@@ -174,7 +174,7 @@ def decoder(schema: tuple[str, str, str], encoding: str, name: str) -> Any:  # n
     try:
         from rosbags.typesys import Stores, get_types_from_msg, get_typestore  # noqa: PLC0415  an extra
     except ImportError as error:
-        raise missing_library(f"{name!r} holds ROS messages: reading them", "bags") from error
+        raise missing_library(f"{name!r} holds ROS messages: reading them", "rosbags", "bags") from error
     if re.search(rf"\[<?=?\s*\d{{{LONGEST_FIXED},}}\s*\]", schema[2]):
         raise LogError(
             f"the message type {schema[0]!r} of {name!r} declares arrays beyond reason", "messages of a sensor"

@@ -5,6 +5,7 @@ The judges are the writers: numpy, scipy.io, h5py, pyarrow, rosbags, and the sta
 
 import gzip
 import struct
+import sys
 import wave
 import zipfile
 from collections.abc import Callable
@@ -318,3 +319,13 @@ def test_long_columns_go_into_scratch_files(
     )
     log = read_log(path, channels=[name], units={"": "rad/s"}, time=time, time_unit="s")
     assert np.array_equal(log.channels[0].values, RATE)
+
+
+def test_a_library_that_is_not_installed_is_named_with_its_install_line(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    write_bag(tmp_path / "night.bag", "ros1")
+    for module in ("rosbags", "rosbags.highlevel", "rosbags.typesys"):
+        monkeypatch.setitem(sys.modules, module, None)
+    with pytest.raises(LogError, match=r"the library rosbags, .* python -m pip install rosbags"):
+        read_log(tmp_path / "night.bag", units={"": "V"})
