@@ -82,19 +82,22 @@ def parse_attitude(text: str) -> tuple[float, float] | None:
 
 
 def earth_rate_along(latitude: float, tilt: float, azimuth: float) -> float:
-    """Return the rate of the Earth about an axis, rad/s: w (sin(lat) cos(tilt) + cos(lat) sin(tilt) cos(azimuth))."""
+    """Return the rate of the Earth about an axis, rad/s, from angles in rad (azimuth from north).
+
+    w (sin(lat) cos(tilt) + cos(lat) sin(tilt) cos(azimuth)): the two parts of w at a latitude, projected (derived here).
+    """
     vertical = math.sin(latitude) * math.cos(tilt)
     return EARTH_RATE * (vertical + math.cos(latitude) * math.sin(tilt) * math.cos(azimuth))
 
 
 def normal_gravity(latitude: float) -> float:
-    """Return normal gravity at the ellipsoid, m/s^2 (Somigliana)."""
+    """Return normal gravity at the ellipsoid, m/s^2, at a latitude in rad (Somigliana's formula, WGS 84)."""
     sine = math.sin(latitude) ** 2
     return EQUATOR_GRAVITY * (1.0 + SOMIGLIANA * sine) / math.sqrt(1.0 - ECCENTRICITY_SQUARED * sine)
 
 
 def gravity_along(latitude: float, tilt: float) -> float:
-    """Return what an accelerometer at rest reads along an axis, m/s^2: the reaction to gravity, upwards positive."""
+    """Return what an accelerometer at rest reads along an axis, m/s^2, from angles in rad: the reaction to gravity, upwards positive."""
     return normal_gravity(latitude) * math.cos(tilt)
 
 

@@ -58,14 +58,14 @@ def fit_line(columns: Sequence[FloatArray], observed: FloatArray) -> LineFit:
 
 
 def effective_dof(contributions: Sequence[tuple[float, float]]) -> float:
-    """Return the effective degrees of freedom of a sum of standard uncertainties, each with its own (GUM G.2b)."""
+    """Return the effective degrees of freedom of a root sum of squares of (standard uncertainty, degrees of freedom) (GUM G.2b)."""
     total = sum(u**2 for u, _ in contributions)
     parts = sum(u**4 / dof for u, dof in contributions if math.isfinite(dof) and dof > 0)
     return total**2 / parts if parts > 0 else math.inf
 
 
 def coverage_factor(dof: float, coverage: float) -> float:
-    """Return the factor of a two-sided interval (Student)."""
+    """Return the factor of a two-sided interval: Student's t at ``dof``, the normal one where that is endless (GUM G.3, table G.2)."""
     from scipy.special import ndtri, stdtrit  # noqa: PLC0415  heavy imports stay inside functions
 
     upper = 0.5 + coverage / 2.0

@@ -11,7 +11,7 @@ STRETCH = 4_096
 
 
 def row_medians(rows: FloatArray) -> FloatArray:
-    """Return the median of each row, NaN left out; NaN where a row holds nothing else."""
+    """Return the median of each row of ``rows``, shape (n, k) to (n,), NaN left out; NaN where a row holds nothing else."""
     ordered = np.sort(rows, axis=1)  # NaN last
     length = rows.shape[1]
     if not np.isnan(ordered[:, -1]).any():
@@ -33,7 +33,7 @@ def _medians(values: FloatArray, starts: IntArray, length: int) -> FloatArray:
 
 
 def take_level_off(values: FloatArray, residual: FloatArray) -> None:
-    """Put into ``residual`` the samples of one run less its slow course: medians of 64 samples, joined by straight lines."""
+    """Put into ``residual`` (n,) the samples of one run (n,) less its slow course: medians of 64 samples, joined by straight lines."""
     block = min(BLOCK, max(8, values.size // 8))
     count = max(1, values.size // block)
     edges = np.linspace(0, values.size, count + 1).astype(np.int64)
